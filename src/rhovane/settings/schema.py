@@ -1,0 +1,463 @@
+"""Every setting with its unit, range and default: the one source of defaults."""
+
+from __future__ import annotations
+
+import datetime as dt
+import hashlib
+import json
+import re
+from functools import cached_property
+from pathlib import Path
+from typing import Annotated, Any, Literal, Self
+
+from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+
+from rhovane.model import Flag, Pair, Series, Stage
+
+FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
+STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
+
+
+class Section(BaseModel):
+    """A frozen part of the settings; an unknown key is a mistake, never ignored."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, str_strip_whitespace=False)
+
+
+class NetworkSettings(Section):
+    """Whose data this is and which clocks people there use."""
+
+    name: str = Field(min_length=1, description="Name shown on every page and export.")
+    work_folder: str = Field(
+        ".", description="Folder for store, feed and reports; relative to the settings file."
+    )
+    standard_time: str = Field(
+        "+00:00", description="Fixed offset of the network's standard time; days begin at its midnight."
+    )
+    civil_zone: str = Field("UTC", description="IANA zone of the civil clock (working hours, holidays).")
+
+    @field_validator("standard_time")
+    @classmethod
+    def _offset(cls, value: str) -> str:
+        if not FIXED_OFFSET.match(value):
+            raise ValueError("write a fixed offset such as +01:00 or -05:30")
+        return value
+
+    @field_validator("civil_zone")
+    @classmethod
+    def _zone(cls, value: str) -> str:
+        return known_zone(value)
+
+    @property
+    def standard_offset(self) -> dt.timedelta:
+        """Standard time minus UTC."""
+        return parse_offset(self.standard_time)
+
+
+class StoreSettings(Section):
+    """The DuckDB file and what it may use."""
+
+    file: str = Field("rhovane.duckdb", description="Store file; relative to work_folder.")
+    memory_limit_mb: int = Field(1024, ge=128, le=1_048_576, description="MB; most memory DuckDB may take.")
+    threads: int = Field(2, ge=1, le=256, description="Threads DuckDB may use.")
+    lock_wait_s: float = Field(10.0, ge=0, le=600, description="Seconds to wait for another process.")
+
+
+class CalendarSettings(Section):
+    """Days on which people do not work as usual, besides Saturday and Sunday (civil clock)."""
+
+    other_days: tuple[str, ...] = Field(
+        (), description='Dates "2024-12-25" or spans "2024-12-23/2025-01-01" (both ends included).'
+    )
+
+    @field_validator("other_days")
+    @classmethod
+    def _spans(cls, value: tuple[str, ...]) -> tuple[str, ...]:
+        for text in value:
+            first, last = parse_span(text)
+            if last < first:
+                raise ValueError(f"the span {text!r} ends before it begins")
+        return value
+
+    def dates(self) -> frozenset[dt.date]:
+        """All other days as dates."""
+        days: set[dt.date] = set()
+        for text in self.other_days:
+            first, last = parse_span(text)
+            days.update(first + dt.timedelta(days=i) for i in range((last - first).days + 1))
+        return frozenset(days)
+
+
+class ColumnSettings(Section):
+    """Names of the columns of a source; empty means the file has no such column."""
+
+    time: str = Field(min_length=1, description="Column with the time label.")
+    station: str = Field("", description="Long form: column with the station code.")
+    quantity: str = Field("", description="Long form: column with the quantity code.")
+    value: str = Field("", description="Long form: column with the value.")
+    unit: str = Field("", description="Long form: column with the unit of the value.")
+    flag: str = Field("", description="Long form: column with the quality code.")
+    stage: str = Field("", description="Long form: column with the verification stage.")
+    issued: str = Field("", description="Long form: column with the time the value was issued.")
+
+
+class SourceSettings(Section):
+    """One feed: where its files are, how they are written, on which clock, and what is in them."""
+
+    name: str = Field(min_length=1)
+    form: Literal["long csv", "wide csv", "long parquet", "wide parquet"]
+    files: str = Field(min_length=1, description="Glob pattern relative to work_folder.")
+    clock: str = Field(description='"UTC", a fixed offset "+01:00", or "civil ZONE"; must be declared.')
+    label: Literal["start", "end"] = Field(description="Whether a label names the start or end of its interval.")
+    step: str = Field("1h", description="Interval of the readings.")
+    time_format: str = Field("%Y-%m-%d %H:%M", description="strptime pattern of the time column.")
+    delimiter: str = Field(",", min_length=1, max_length=1)
+    decimal: Literal[".", ","] = "."
+    encoding: Literal["utf-8", "utf-16", "latin-1"] = "utf-8"
+    missing: tuple[str, ...] = Field((), description="Texts in a value column that mean missing.")
+    columns: ColumnSettings
+    series: dict[str, str] = Field(
+        min_length=1,
+        description='Code in the feed → series key. Long: "STATION QUANTITY" codes joined by a space; wide: column.',
+    )
+    units: dict[str, str] = Field(
+        default_factory=dict,
+        description="Code in the feed → unit of its values, where the file does not say; default: the series' unit.",
+    )
+    unit_names: dict[str, str] = Field(
+        default_factory=dict, description="Spelling of a unit in the feed → spelling used here."
+    )
+    flags: dict[str, Literal["pass", "not evaluated", "suspect", "fail", "missing"]] = Field(
+        default_factory=dict, description="Quality code in the feed → meaning."
+    )
+    stages: dict[str, Literal["not verified", "preliminary", "verified"]] = Field(
+        default_factory=dict, description="Stage code in the feed → meaning."
+    )
+
+    @field_validator("clock")
+    @classmethod
+    def _clock(cls, value: str) -> str:
+        if value == "UTC" or FIXED_OFFSET.match(value):
+            return value
+        kind, _, zone = value.partition(" ")
+        if kind == "civil" and zone:
+            known_zone(zone)
+            return value
+        raise ValueError('write "UTC", a fixed offset such as "+01:00", or "civil ZONE" such as "civil CET"')
+
+    @field_validator("step")
+    @classmethod
+    def _step(cls, value: str) -> str:
+        if value not in STEP:
+            raise ValueError(f"known steps: {', '.join(STEP)}")
+        return value
+
+    @field_validator("time_format")
+    @classmethod
+    def _time_format(cls, value: str) -> str:
+        moment = dt.datetime(2004, 11, 23, 17, tzinfo=dt.UTC if "%z" in value else None)
+        try:
+            complete = dt.datetime.strptime(moment.strftime(value), value) == moment
+        except ValueError:
+            complete = False
+        if not complete:
+            raise ValueError("write a strptime pattern that holds year, month, day and hour: %Y-%m-%d %H:%M")
+        return value
+
+    @model_validator(mode="after")
+    def _columns_fit_form(self) -> Self:
+        if self.form.startswith("long"):
+            for name in ("quantity", "value"):
+                if not getattr(self.columns, name):
+                    raise ValueError(f"form {self.form!r} needs columns.{name}")
+        else:
+            for name in ("station", "quantity", "value", "unit"):
+                if getattr(self.columns, name):
+                    raise ValueError(f"columns.{name} is for long forms; form {self.form!r} names series by column")
+        for code in self.units:
+            if code not in self.series:
+                raise ValueError(f"units.{code}: not a code listed under series")
+        return self
+
+    @property
+    def step_minutes(self) -> int:
+        """Interval of the readings in minutes."""
+        return STEP[self.step]
+
+    def flag_of(self, code: str) -> Flag | None:
+        """The inner flag of a quality code; None when the code is not mapped."""
+        word = self.flags.get(code)
+        return None if word is None else Flag[word.upper().replace(" ", "_")]
+
+    def stage_of(self, code: str) -> Stage | None:
+        """The inner stage of a stage code; None when the code is not mapped."""
+        word = self.stages.get(code)
+        return None if word is None else Stage[word.upper().replace(" ", "_")]
+
+
+class SeriesSettings(Section):
+    """One series of the network."""
+
+    key: str = Field(pattern=r"^[A-Za-z0-9_-]+\.[A-Za-z0-9_.-]+$", description="STATION.quantity")
+    unit: str = Field(min_length=1, description="Unit in which values are kept.")
+    kind: Literal["linear", "circular", "accumulated"] = "linear"
+    label: str = ""
+
+    @property
+    def quantity(self) -> str:
+        """What is measured: the part of the key after the first dot."""
+        return self.key.partition(".")[2]
+
+
+
+class SectorMask(Section):
+    """Keep only hours with the wind from a sector (clockwise from ``from`` to ``to``)."""
+
+    direction: str = Field(description="Key of a wind direction series.")
+    from_deg: float = Field(ge=0, lt=360, description="Degrees; where the sector begins, clockwise.")
+    to_deg: float = Field(ge=0, le=360, description="Degrees; where the sector ends, clockwise.")
+
+
+class PairSettings(Section):
+    """Two series whose relationship is watched, and how."""
+
+    first: str
+    second: str
+    label: str = Field("", description="Shown beside the key; tells two recipes of the same series apart.")
+    lags: Annotated[tuple[int, ...], Field(min_length=2, max_length=2)] | None = Field(
+        None, description="Hours, first to last; positive: the first series leads. Default: correlation.lags."
+    )
+    adjusted_for: tuple[str, ...] = Field((), description="Control series of a partial rank correlation.")
+    sector: SectorMask | None = None
+    hours: Annotated[tuple[int, ...], Field(min_length=2, max_length=2)] | None = Field(
+        None, description="Keep only hours of the civil day from (included) to (excluded)."
+    )
+    working_days_only: bool = False
+    wet_only: bool = Field(False, description="Keep only hours in which at least one side is above zero.")
+    score: Literal["auto", "innovation", "day shape"] = Field(
+        "auto", description="Daily evidence: changes from hour to hour, the shape of the day, or chosen on the baseline."
+    )
+
+    @property
+    def variant(self) -> str:
+        """Short words for what sets this recipe apart; empty for the plain one."""
+        parts = []
+        if self.adjusted_for:
+            parts.append("adjusted")
+        if self.sector:
+            parts.append(f"{self.sector.from_deg:g}-{self.sector.to_deg:g}deg")
+        if self.hours:
+            parts.append(f"{self.hours[0]:02d}-{self.hours[1]:02d}h")
+        if self.working_days_only:
+            parts.append("workdays")
+        if self.wet_only:
+            parts.append("wet")
+        return ",".join(parts)
+
+    @property
+    def key(self) -> str:
+        """``FIRST~SECOND``, with the variant in brackets where there is one."""
+        plain = f"{self.first}~{self.second}"
+        return f"{plain}[{self.variant}]" if self.variant else plain
+
+
+class CorrelationSettings(Section):
+    """Rolling-window rank correlation."""
+
+    statistic: Literal["spearman", "kendall"] = "spearman"
+    window_hours: int = Field(672, ge=24, le=4096, description="Hours; length of the rolling window.")
+    lags: Annotated[tuple[int, ...], Field(min_length=2, max_length=2)] = Field(
+        (-3, 3), description="Hours, first to last lag examined."
+    )
+    min_coverage: float = Field(
+        0.75, gt=0, le=1, description="Share of the window's hours with both observations (data capture)."
+    )
+    accepted_flags: tuple[Literal["pass", "not evaluated", "suspect"], ...] = Field(
+        ("pass", "not evaluated"), min_length=1, description="Quality of readings that enter statistics."
+    )
+    min_effective: float = Field(10.0, ge=4, le=1000, description="Fewest effective pairs for a p-value.")
+    significance: float = Field(0.05, gt=0, lt=0.5, description="Level of the nightly significance screen.")
+
+
+class AlertSettings(Section):
+    """How many false alarms the analyst accepts, and what a change is compared with."""
+
+    false_alarms_per_year: float = Field(
+        4.0, gt=0, le=365, description="Expected false alarms a year over the whole network."
+    )
+    baseline_days: int = Field(90, ge=30, le=730, description="Days of the moving reference.")
+    guard_days: int = Field(14, ge=1, le=90, description="Days between the reference and the day judged.")
+    rebaseline_days: int = Field(
+        110, ge=14, le=1000, description="Days after which a lasting change becomes the new normal, visibly."
+    )
+
+
+class NightSettings(Section):
+    """When the night runs."""
+
+    at: str = Field("03:40", pattern=r"^([01]\d|2[0-3]):[0-5]\d$", description="Standard time, HH:MM.")
+
+
+class Settings(Section):
+    """All settings, as read from one TOML file; ``origin`` is that file."""
+
+    network: NetworkSettings
+    store: StoreSettings = Field(default_factory=lambda: StoreSettings())
+    night: NightSettings = Field(default_factory=lambda: NightSettings())
+    calendar: CalendarSettings = Field(default_factory=lambda: CalendarSettings())
+    correlation: CorrelationSettings = Field(default_factory=lambda: CorrelationSettings())
+    alerts: AlertSettings = Field(default_factory=lambda: AlertSettings())
+    source: tuple[SourceSettings, ...] = Field(min_length=1)
+    series: tuple[SeriesSettings, ...] = Field(min_length=1)
+    pair: tuple[PairSettings, ...] = Field(min_length=1)
+    origin: Path = Field(default=Path("settings.toml"), exclude=True)
+
+    @cached_property
+    def work_folder(self) -> Path:
+        """Folder that relative places are under."""
+        return (self.origin.parent / self.network.work_folder).resolve()
+
+    @property
+    def store_path(self) -> Path:
+        """The DuckDB file."""
+        return self.work_folder / self.store.file
+
+    @cached_property
+    def settings_hash(self) -> str:
+        """Changes when any setting does; recorded with every night."""
+        text = json.dumps(self.model_dump(mode="json"), sort_keys=True)
+        return hashlib.sha256(text.encode()).hexdigest()[:16]
+
+    def series_by_key(self) -> dict[str, SeriesSettings]:
+        """Series settings by key."""
+        return {s.key: s for s in self.series}
+
+    def domain_series(self) -> list[Series]:
+        """All series as words of the domain, with the step of the source that delivers them."""
+        step = {key: source.step_minutes for source in self.source for key in source.series.values()}
+        return [Series(s.key, s.unit, s.kind, step[s.key], s.label) for s in self.series]
+
+    def pair_of(self, pair: PairSettings) -> Pair:
+        """A pair as a word of the domain; its recipe hash covers every setting that its numbers rest on."""
+        parts = {
+            "pair": pair.model_dump(mode="json", exclude={"label"}),
+            "lags": list(self.lags_of(pair)),
+            "correlation": self.correlation.model_dump(mode="json", exclude={"significance"}),
+            "calendar": self.calendar.model_dump(mode="json"),
+            "clocks": [self.network.standard_time, self.network.civil_zone],
+        }
+        digest = hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
+        return Pair(pair.key, pair.first, pair.second, digest, pair.label)
+
+    def series_of(self, pair: PairSettings) -> tuple[str, ...]:
+        """Every series that a pair's numbers rest on: members, controls, wind direction."""
+        direction = (pair.sector.direction,) if pair.sector else ()
+        return (pair.first, pair.second, *pair.adjusted_for, *direction)
+
+    def lags_of(self, pair: PairSettings) -> range:
+        """Lags examined for a pair, in hours."""
+        first, last = pair.lags or self.correlation.lags
+        return range(first, last + 1)
+
+    def accepted_flags(self) -> frozenset[int]:
+        """Flags of the readings that count as observations."""
+        return frozenset(int(Flag[word.upper().replace(" ", "_")]) for word in self.correlation.accepted_flags)
+
+    def mistakes(self) -> list[tuple[str, str]]:
+        """Contradictions between sections, as (key, what is wrong and what to do)."""
+        found: list[tuple[str, str]] = []
+        known = self.series_by_key()
+        found += _repeated("series", [s.key for s in self.series])
+        found += _repeated("source", [s.name for s in self.source])
+        found += _repeated("pair", [p.key for p in self.pair])
+        delivered: dict[str, str] = {}  # series key → step
+        for i, source in enumerate(self.source):
+            for code, key in source.series.items():
+                where = f"source[{i}] ({source.name}).series.{code}"
+                if key not in known:
+                    found.append((where, f"series {key!r} is not defined; add a [[series]] with this key"))
+                if delivered.setdefault(key, source.step) != source.step:
+                    found.append((where, f"{key} comes with a step of {delivered[key]} elsewhere; one series has one step"))
+        for i, one in enumerate(self.series):
+            if one.key not in delivered:
+                found.append((f"series[{i}] ({one.key})", "no source delivers it; add it to a source's series table"))
+        for i, pair in enumerate(self.pair):
+            found += self._pair_mistakes(f"pair[{i}] ({pair.key})", pair, known)
+        return found
+
+    def _pair_mistakes(
+        self, where: str, pair: PairSettings, known: dict[str, SeriesSettings]
+    ) -> list[tuple[str, str]]:
+        found: list[tuple[str, str]] = []
+        for role, key in (("first", pair.first), ("second", pair.second)):
+            if key not in known:
+                found.append((f"{where}.{role}", f"series {key!r} is not defined"))
+            elif known[key].kind == "circular":
+                found.append(
+                    (
+                        f"{where}.{role}",
+                        f"{key} is circular and is never ranked; use a sector mask, or a component along a bearing",
+                    )
+                )
+        if pair.first == pair.second:
+            found.append((where, "a series cannot be paired with itself"))
+        for key in pair.adjusted_for:
+            if key in (pair.first, pair.second):
+                found.append((f"{where}.adjusted_for", f"{key} is a member of the pair and cannot be its control"))
+            elif key not in known:
+                found.append((f"{where}.adjusted_for", f"series {key!r} is not defined"))
+            elif known[key].kind == "circular":
+                found.append((f"{where}.adjusted_for", f"{key} is circular and is never ranked"))
+        if pair.sector is not None:
+            direction = known.get(pair.sector.direction)
+            if direction is None:
+                found.append((f"{where}.sector.direction", f"series {pair.sector.direction!r} is not defined"))
+            elif direction.kind != "circular":
+                found.append((f"{where}.sector.direction", f'{direction.key} is not of kind "circular"'))
+        lags = pair.lags or self.correlation.lags
+        if lags[0] > lags[1]:
+            found.append((f"{where}.lags", f"first lag {lags[0]} is after last lag {lags[1]}"))
+        if max(abs(lags[0]), abs(lags[1])) > self.correlation.window_hours // 4:
+            limit = self.correlation.window_hours // 4
+            found.append((f"{where}.lags", f"lags reach beyond a quarter of the window; stay within ±{limit} hours"))
+        return found
+
+
+def _repeated(section: str, names: list[str]) -> list[tuple[str, str]]:
+    return [
+        (section, f"{name!r} is defined {names.count(name)} times; keep one")
+        for name in sorted(set(names))
+        if names.count(name) > 1
+    ]
+
+
+def parse_offset(text: str) -> dt.timedelta:
+    """A fixed offset ``+HH:MM`` as a time span."""
+    sign = -1 if text[0] == "-" else 1
+    return sign * dt.timedelta(hours=int(text[1:3]), minutes=int(text[4:6]))
+
+
+def parse_span(text: str) -> tuple[dt.date, dt.date]:
+    """A date, or two dates joined by a slash (ISO 8601), as first and last day."""
+    first, _, last = text.partition("/")
+    try:
+        return dt.date.fromisoformat(first), dt.date.fromisoformat(last or first)
+    except ValueError:
+        raise ValueError(f"{text!r} is not a date 2024-12-25 or a span 2024-12-23/2025-01-01") from None
+
+
+def known_zone(name: str) -> str:
+    """The zone name itself, when the zone is known."""
+    from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
+
+    try:
+        ZoneInfo(name)
+    except (ZoneInfoNotFoundError, ValueError):
+        raise ValueError(f"{name!r} is not a known IANA time zone") from None
+    return name
+
+
+def describe(value: Any) -> str:
+    """A setting's value as it is shown in a message."""
+    text = repr(value)
+    return text if len(text) <= 60 else text[:57] + "..."
