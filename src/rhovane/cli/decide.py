@@ -1,0 +1,76 @@
+"""Commands that record a person's decision: acknowledge, shelve, outcome."""
+
+from __future__ import annotations
+
+import datetime as dt
+import getpass
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from rhovane.cli.entry import main, utc_now, writes_store
+from rhovane.cli.wording import short_state
+from rhovane.model import EventKind, Outcome
+
+if TYPE_CHECKING:
+    from rhovane.settings import Settings
+    from rhovane.store import Store
+
+
+def by_a_person(command: Callable[..., Any]) -> Callable[..., Any]:
+    """Give a command ID, ``--who`` and ``--note``."""
+    note = click.option("--note", default="", help="What you saw and why you decided so.")
+    who = click.option("--who", default=getpass.getuser, show_default="your login", help="Your name.")
+    return click.argument("alert_id", metavar="ID", type=int)(who(note(command)))
+
+
+def _record(
+    store: Store, alert_id: int, kind: EventKind, who: str, note: str, payload: dict[str, Any]
+) -> None:
+    from rhovane.review import record_decision
+
+    entry = record_decision(store, alert_id, kind, now=utc_now(), who=who, note=note, payload=payload)
+    click.echo(f"Alert {alert_id}: {short_state(entry)}")
+
+
+@main.command()
+@by_a_person
+@writes_store
+def acknowledge(settings: Settings, store: Store, alert_id: int, who: str, note: str) -> None:
+    """Record that you have seen an alert and are dealing with it."""
+    _record(store, alert_id, EventKind.ACKNOWLEDGED, who, note, {})
+
+
+@main.command()
+@by_a_person
+@click.option(
+    "--until", type=click.DateTime(formats=["%Y-%m-%d"]), required=True, help="When it comes back, YYYY-MM-DD."
+)
+@writes_store
+def shelve(
+    settings: Settings, store: Store, alert_id: int, who: str, note: str, until: dt.datetime
+) -> None:
+    """Put an alert aside until a date; it comes back by itself."""
+    _record(store, alert_id, EventKind.SHELVED, who, note, {"until": until.date().isoformat()})
+
+
+def _outcome(_ctx: click.Context, _param: click.Parameter, text: str) -> str:
+    """An outcome as it stands in the log; hyphens may stand for spaces on the command line."""
+    word = text.replace("-", " ").replace("_", " ").lower()
+    if word not in {o.value for o in Outcome}:
+        known = ", ".join(o.value.replace(" ", "-") for o in Outcome)
+        raise click.BadParameter(f"{text!r} is not an outcome; known: {known}")
+    return word
+
+
+@main.command()
+@by_a_person
+@click.argument("found", metavar="OUTCOME", callback=_outcome)
+@writes_store
+def outcome(settings: Settings, store: Store, alert_id: int, who: str, note: str, found: str) -> None:
+    """Record what was behind an alert.
+
+    OUTCOME is one of: instrument, data-handling, real-change, weather-or-season, false, undetermined.
+    """
+    _record(store, alert_id, EventKind.OUTCOME, who, note, {"outcome": found})

@@ -1,0 +1,190 @@
+"""The demo: an invented network walked night by night in a working folder of its own."""
+
+from __future__ import annotations
+
+import datetime as dt
+import shutil
+import time
+import tomllib
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from rhovane.cli.wording import alert_table, caution_lines
+from rhovane.model import RhovaneError
+from rhovane.pipeline import walk_nights
+from rhovane.review import AlertEntry, alert_entries
+from rhovane.settings import Settings, load_settings
+from rhovane.store import Store
+from rhovane_demo import settings_text
+from rhovane_demo.feed import deliveries, write_files
+from rhovane_demo.planted import BY_ID, TABLE, answers
+from rhovane_demo.world import make_world
+
+NIGHT_HOUR = dt.time(3, 40)
+
+
+@dataclass
+class Walked:
+    """What walking the nights did."""
+
+    nights: int = 0
+    incomplete: int = 0
+    seconds: float = 0.0
+    new: int = 0
+    revised: int = 0
+    rejected: int = 0
+
+
+class Demonstration:
+    """The demo's settings, world and working folder.
+
+    Raises
+    ------
+    RhovaneError
+        The settings file watches another network: the demo never writes into somebody's own folder.
+    """
+
+    def __init__(self, config: Path, *, seed: int, events: bool, fresh: bool) -> None:
+        if not config.exists():
+            config.parent.mkdir(parents=True, exist_ok=True)
+            config.write_text(settings_text(), encoding="utf-8")
+        self.config = config
+        self.settings: Settings = load_settings(config)
+        if self.settings.network.name != tomllib.loads(settings_text())["network"]["name"]:
+            raise RhovaneError(
+                f"{config} watches {self.settings.network.name!r}, not the demo's network. "
+                "Nothing was run. Give the demo a settings file of its own: "
+                "rhovane demo --config demo-config/monitor.toml"
+            )
+        self.seed, self.events = seed, events
+        self.folder = self.settings.work_folder
+        self._prepare_folder(fresh)
+
+    def _prepare_folder(self, fresh: bool) -> None:
+        """Make the working folder, or go on in the one that the same demo left."""
+        mark = self.folder / "demo-world.txt"
+        wanted = f"seed {self.seed}, {'with' if self.events else 'without'} planted changes\n"
+        if fresh and mark.exists():
+            shutil.rmtree(self.folder)
+        if self.folder.exists() and any(self.folder.iterdir()) and not mark.exists():
+            raise RhovaneError(
+                f"{self.folder} is not empty and was not made by the demo. Nothing was run. "
+                "Move it away, or change network.work_folder."
+            )
+        if mark.exists() and mark.read_text(encoding="utf-8") != wanted:
+            raise RhovaneError(
+                f"{self.folder} holds a demo with {mark.read_text(encoding='utf-8').strip()}; "
+                f"asked for {wanted.strip()}. Nothing was run. Add --fresh to begin again."
+            )
+        self.folder.mkdir(parents=True, exist_ok=True)
+        mark.write_text(wanted, encoding="utf-8")
+
+    def opening_line(self) -> str:
+        """What is about to happen."""
+        what = "with planted changes and decoys" if self.events else "with nothing planted"
+        return (
+            f"Demo: {self.settings.network.name}, seed {self.seed}, {what}.\n"
+            f"Working folder: {self.folder}\n"
+            "The first run compiles the statistics once (some seconds)."
+        )
+
+    def walk(
+        self,
+        store: Store,
+        *,
+        nights: int | None,
+        tell: Callable[[dt.date, int, int], None],
+        now: Callable[[], dt.datetime],
+    ) -> Walked:
+        """Deliver each day's files and run its night, oldest first; goes on where an earlier demo stopped."""
+        started = time.perf_counter()
+        arriving = {d.night: d.files for d in deliveries(make_world(seed=self.seed, events=self.events))}
+        first, last = min(arriving), max(arriving)
+        if nights is not None:
+            last = min(last, first + dt.timedelta(days=nights - 1))
+        total = (last - first).days + 1
+        zone = dt.timezone(self.settings.network.standard_offset)
+
+        def deliver(day: dt.date) -> None:
+            write_files(arriving[day], self.folder / "feed")
+
+        def moment(day: dt.date) -> dt.datetime:
+            run_at = dt.datetime.combine(day + dt.timedelta(days=1), NIGHT_HOUR, zone)
+            return run_at.astimezone(dt.UTC)
+
+        walked = Walked()
+        for report in walk_nights(
+            self.settings, store, first, last, moment_of=moment, before_each=deliver
+        ):
+            walked.nights += 1
+            walked.incomplete += report.outcome != "complete"
+            walked.new += report.counts.get("readings new", 0)
+            walked.revised += report.counts.get("readings revised", 0)
+            walked.rejected += report.counts.get("rows rejected", 0)
+            tell(report.as_of, (report.as_of - first).days + 1, total)
+        walked.seconds = time.perf_counter() - started
+        return walked
+
+    def closing_lines(self, store: Store, walked: Walked, now: dt.datetime) -> list[str]:
+        """The alert list, the planted changes it answers to, and what to run next."""
+        last = store.last_finished_night()
+        entries = list(reversed(alert_entries(store, now)))
+        lines = [
+            f"{walked.nights} nights walked in {walked.seconds:.0f} s"
+            + (f", up to {last.as_of}" if last else "")
+            + f": {walked.new} readings new, {walked.revised} revised, {walked.rejected} rows in quarantine"
+            + (f"; {walked.incomplete} nights incomplete" if walked.incomplete else ""),
+            "",
+            f"Alert list ({len(entries)}; {self.settings.alerts.false_alarms_per_year:g} false alarms "
+            "a year accepted over the network):",
+        ]
+        if self.events:
+            answered = {e.alert.id: answer_of(e) for e in entries}
+            lines += alert_table(entries, {k: ", ".join(v) or "nothing planted" for k, v in answered.items()})
+            lines += ["", "Planted changes and what answers to them:"]
+            lines += planted_lines(entries, answered, last.as_of if last else None)
+        else:
+            lines += alert_table(entries)
+        first = entries[0].alert.id if entries else None
+        config = "" if self.config == Path("config/monitor.toml") else f" --config {self.config}"
+        lines += ["", "Next:"]
+        if first is not None:
+            lines += [
+                f"  rhovane alert {first}{config}",
+                f'  rhovane acknowledge {first} --note "checked the site log"{config}',
+                f"  rhovane outcome {first} real-change{config}",
+            ]
+        lines += [
+            f"  rhovane status --as-of {last.as_of if last else 'DATE'}{config}",
+            f"  rhovane export windows windows.parquet{config}",
+            "",
+            *caution_lines(),
+            "Demo data are invented.",
+        ]
+        return lines
+
+
+def answer_of(entry: AlertEntry) -> list[str]:
+    """Ids of the planted changes and decoys that an alert may answer to."""
+    alert = entry.alert
+    return answers(alert.pair_key, alert.onset_day, alert.alarm_day)
+
+
+def planted_lines(
+    entries: list[AlertEntry], answered: dict[int, list[str]], last_day: dt.date | None
+) -> list[str]:
+    """One line for each planted change, decoy and blind spot: the first alert that answers to it."""
+    lines = []
+    for event in TABLE:
+        mine = [e for e in entries if event.id in answered[e.alert.id]]
+        if last_day is not None and event.first > last_day:
+            told = "not reached"
+        elif mine:
+            first = min(mine, key=lambda e: e.alert.alarm_day)
+            after = (first.alert.alarm_day - event.first).days + 1
+            told = f"alert {first.alert.id} on day {after}" + (f", {len(mine)} alerts" if len(mine) > 1 else "")
+        else:
+            told = "no alert" + (" (as it should be)" if event.kind != "change" else "")
+        lines.append(f"  {event.id:<4} {event.kind:<10} {event.first}  {told:<26} {event.what}"[:118])
+    return lines

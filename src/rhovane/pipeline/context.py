@@ -1,0 +1,89 @@
+"""What the steps of one night share: settings, the open store, the moment, and what they found so far."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from typing import Any
+
+from rhovane.model import IngestOutcome, Pair
+from rhovane.prepare import Days, days_of
+from rhovane.settings import PairSettings, Settings
+from rhovane.store import Store
+
+HOUR_S = 3600
+
+
+@dataclass(frozen=True)
+class WatchedPair:
+    """A pair with its recipe and the first day whose results are not up to date (None: all are)."""
+
+    recipe: PairSettings
+    pair: Pair
+    stale_from: dt.date | None = None
+
+
+@dataclass(frozen=True)
+class Trouble:
+    """A part of a step that failed while the rest went on."""
+
+    step: str
+    part: str
+    reason: str
+
+
+@dataclass(frozen=True)
+class StepOutcome:
+    """What one step of a night did."""
+
+    name: str
+    seconds: float
+    summary: str
+    troubles: tuple[Trouble, ...] = ()
+
+    def as_json(self) -> dict[str, Any]:
+        """For the night ledger."""
+        return {
+            "step": self.name,
+            "seconds": round(self.seconds, 4),
+            "summary": self.summary,
+            "failed": [{"part": t.part, "reason": t.reason} for t in self.troubles],
+        }
+
+
+@dataclass
+class Night:
+    """One execution of the steps. Steps read what earlier steps left here and add their own.
+
+    ``as_of`` is the last day the night covers (standard time): nothing later is used. ``now`` is the
+    moment it runs (aware, UTC); only entry points read the clock.
+    """
+
+    settings: Settings
+    store: Store
+    as_of: dt.date
+    now: dt.datetime
+    id: int = 0
+    progress: Callable[[str], None] = lambda _text: None
+    recompute_from: dt.date | None = None
+    troubles: list[Trouble] = field(default_factory=list)
+    ingested: list[IngestOutcome] = field(default_factory=list)
+    rejections: list[str] = field(default_factory=list)
+    watched: list[WatchedPair] = field(default_factory=list)
+    counts: dict[str, Any] = field(default_factory=dict)
+
+    @property
+    def days(self) -> Days:
+        """The network's days."""
+        return days_of(self.settings.network.standard_offset)
+
+    def failed(self, step: str, part: str, reason: str) -> None:
+        """Record that one part of a step failed; the rest goes on."""
+        self.troubles.append(Trouble(step, part, reason))
+
+    def pair_failed(self, step: str, watched: WatchedPair, reason: str) -> None:
+        """Record that a pair failed; the next night takes it up where it was left."""
+        self.failed(step, f"pair {watched.pair.key}", reason)
+        if watched.stale_from is not None:
+            self.counts.setdefault("left", {})[watched.pair.key] = watched.stale_from.isoformat()

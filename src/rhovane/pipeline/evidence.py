@@ -1,0 +1,92 @@
+"""Step "evidence": one number a day for every pair that is not up to date, from that day's readings on."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Mapping
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rhovane.pipeline.arrays import load_grid, pair_arrays
+from rhovane.pipeline.context import Night, WatchedPair
+from rhovane.prepare import Grid
+from rhovane.stats.daily_scores import HISTORY_DAYS, DailyScores, lookback_days, pair_scores
+from rhovane.stats.hourly_scores import SeriesScores, series_scores
+from rhovane.store import LATER_COLUMNS
+
+STEP = "evidence"
+DAY = dt.timedelta(days=1)
+
+
+def judge_days(night: Night) -> str:
+    """Daily scores of every stale pair and day; written as evidence."""
+    settings = night.settings
+    stale = [w for w in night.watched if w.stale_from is not None]
+    if not stale:
+        return "nothing to judge"
+    first = min(w.stale_from for w in stale if w.stale_from) - HISTORY_DAYS * DAY
+    keys = {k for w in stale for k in settings.series_of(w.recipe)}
+    grid = load_grid(settings, night.store, keys, first, night.as_of)
+    last = (night.as_of - first).days
+    shared = _series_scores(stale, grid, first, last)
+    columns: dict[str, list[NDArray[np.generic]]] = {}
+    n_days = n_scored = 0
+    for watched in stale:
+        assert watched.stale_from is not None
+        days = range((watched.stale_from - first).days, last + 1)
+        try:
+            scores = _pair_days(night, watched, grid, shared, days)
+        except ValueError as error:
+            night.pair_failed(STEP, watched, str(error))
+            continue
+        n_days += len(days)
+        n_scored += int(np.count_nonzero(scores.innovation_hours + scores.shape_hours))
+        for name, values in _columns(watched, scores, first).items():
+            columns.setdefault(name, []).append(values)
+    if n_days:
+        night.store.write_evidence(night.id, {name: np.concatenate(parts) for name, parts in columns.items()})
+    return f"{n_days} days of {len(stale)} pairs, {n_days - n_scored} without enough joint hours"
+
+
+def _series_scores(
+    stale: list[WatchedPair], grid: Grid, first: dt.date, last: int
+) -> Mapping[str, SeriesScores]:
+    """Hourly scores once a series, all from the earliest day that any pair needs."""
+    begin = last
+    keys: set[str] = set()
+    for watched in stale:
+        assert watched.stale_from is not None
+        recipe = watched.recipe
+        before = lookback_days(0, controls=bool(recipe.adjusted_for))
+        begin = min(begin, max(0, (watched.stale_from - first).days - before))
+        keys.update((recipe.first, recipe.second, *recipe.adjusted_for))
+    return {key: series_scores(grid.column(key), range(begin, last + 1)) for key in sorted(keys)}
+
+
+def _pair_days(
+    night: Night, watched: WatchedPair, grid: Grid, shared: Mapping[str, SeriesScores], days: range
+) -> DailyScores:
+    recipe = watched.recipe
+    mask = pair_arrays(night.settings, recipe, grid).mask
+    return pair_scores(
+        shared[recipe.first],
+        shared[recipe.second],
+        days=days,
+        controls=[shared[k] for k in recipe.adjusted_for],
+        keep=None if mask.everything else mask.kept,
+    )
+
+
+def _columns(watched: WatchedPair, scores: DailyScores, first: dt.date) -> dict[str, NDArray[np.generic]]:
+    n = len(scores.day)
+    return {
+        "pair_key": np.full(n, watched.pair.key, dtype=object),
+        "recipe_hash": np.full(n, watched.pair.recipe_hash, dtype=object),
+        "day": np.datetime64(first, "D") + scores.day,
+        "innovation": scores.innovation,
+        "innovation_hours": scores.innovation_hours,
+        "shape": scores.shape,
+        "shape_hours": scores.shape_hours,
+        **{name: scores.lagged[:, i] for i, name in enumerate(LATER_COLUMNS)},
+    }

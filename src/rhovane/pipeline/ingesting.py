@@ -1,0 +1,75 @@
+"""Step "ingest": new and changed feed files into the store, file by file, with what was wrong in them."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from pathlib import Path
+
+from rhovane.ingest import describe_rejections, list_files, parse_file
+from rhovane.model import FeedError, ParsedFile
+from rhovane.pipeline.context import Night
+from rhovane.settings import Settings, SourceSettings
+from rhovane.store import read_parquet
+
+STEP = "ingest"
+
+
+def read_feed(night: Night) -> str:
+    """Read what arrived since the last look and append it to the store."""
+    parsed: list[ParsedFile] = []
+    known = night.store.known_files()
+    for source in night.settings.source:
+        try:
+            listed = list_files(source, night.settings.work_folder)
+        except FeedError as error:
+            night.failed(STEP, f"source {source.name}", str(error))
+            continue
+        for file in listed:
+            if known.get(file.place) == (file.size_bytes, file.modified_ns):
+                continue
+            one = parse_or_note(night, night.settings.work_folder / file.place, source, file.place)
+            if one is not None:
+                parsed.append(one)
+    append(night, parsed)
+    new, revised, rejected = (night.counts[k] for k in ("readings new", "readings revised", "rows rejected"))
+    return f"{len(parsed)} files: {new} readings new, {revised} revised, {rejected} rows rejected"
+
+
+def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) -> ParsedFile | None:
+    """One feed file as readings and rejected rows; None, with the reason noted, when it cannot be opened."""
+    try:
+        one = parse_feed_file(path, source, night.settings, shown)
+    except FeedError as error:
+        night.failed(STEP, shown, str(error))
+        return None
+    if not one.sha256:  # not even its bytes could be read: it is tried again, not remembered
+        night.failed(STEP, shown, " ".join(r.reason for r in one.rejected))
+        return None
+    return one
+
+
+def append(night: Night, parsed: Iterable[ParsedFile]) -> None:
+    """Append parsed files and add what they did to the night's counts."""
+    files = list(parsed)
+    night.ingested = night.store.append_files(files, now=night.now) if files else []
+    fresh = [o for o in night.ingested if not o.already_known]
+    night.counts.update(
+        {
+            "files": len(fresh),
+            "readings new": sum(o.new for o in fresh),
+            "readings revised": sum(o.revised for o in fresh),
+            "rows rejected": sum(o.rejected for o in fresh),
+        }
+    )
+    night.rejections = [line for file in files if file.rejected for line in describe_rejections(file)]
+
+
+def parse_feed_file(path: Path, source: SourceSettings, settings: Settings, shown: str) -> ParsedFile:
+    """One feed file as readings and rejected rows, known to the ledger by the place ``shown``."""
+    return parse_file(path, source, settings.series_by_key(), read_parquet=read_parquet, shown_as=shown)
+
+
+def shown_path(path: Path, settings: Settings) -> str:
+    """A feed file's place as the ledger and people see it: relative to the work folder where it is inside."""
+    folder = settings.work_folder
+    return path.relative_to(folder).as_posix() if path.is_relative_to(folder) else str(path)

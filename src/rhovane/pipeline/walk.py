@@ -1,0 +1,44 @@
+"""A history walked night by night, each night seeing only what had arrived by then."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Callable, Iterator
+
+from rhovane.pipeline.nightly import NightReport, run_night
+from rhovane.settings import Settings
+from rhovane.store import Store
+
+DAY = dt.timedelta(days=1)
+
+
+def nights_between(first: dt.date, last: dt.date) -> Iterator[dt.date]:
+    """Every date from the first to the last, both included."""
+    for i in range((last - first).days + 1):
+        yield first + i * DAY
+
+
+def walk_nights(
+    settings: Settings,
+    store: Store,
+    first: dt.date,
+    last: dt.date,
+    *,
+    moment_of: Callable[[dt.date], dt.datetime],
+    before_each: Callable[[dt.date], None] = lambda _day: None,
+) -> Iterator[NightReport]:
+    """Run every night from the first to the last date that the ledger does not hold yet.
+
+    Parameters
+    ----------
+    moment_of : callable
+        The moment (aware) at which the night of a date is taken to run.
+    before_each : callable
+        Called with the date before its night, to deliver what arrived that day.
+    """
+    done = store.last_finished_night()
+    for day in nights_between(first, last):
+        if done is not None and day <= done.as_of:
+            continue
+        before_each(day)
+        yield run_night(settings, store, as_of=day, now=moment_of(day))

@@ -1,0 +1,113 @@
+"""Alerts as the analyst reads them: the facts of the raising, where it stands now, what was decided."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from rhovane.alerts import Standing, refusal, standing_of
+from rhovane.model import Alert, AlertEvent, AlertState, EventKind, NotFound, RhovaneError
+from rhovane.review.log import log_events, logged_alerts, logged_events
+from rhovane.store import Store
+
+
+@dataclass(frozen=True)
+class AlertEntry:
+    """One alert with its events and where it stands."""
+
+    alert: Alert
+    events: tuple[AlertEvent, ...]
+    standing: Standing
+
+    @property
+    def needs_review(self) -> bool:
+        """Whether nobody has acknowledged it yet."""
+        return self.standing.state in (AlertState.UNACKNOWLEDGED, AlertState.RETURNED_UNACKNOWLEDGED)
+
+    def as_json(self) -> dict[str, Any]:
+        """Plain values for ``--json``."""
+        standing = self.standing
+        return {
+            **self.alert.as_json(),
+            "state": standing.state.value,
+            "changed": standing.changed,
+            "outcome": None if standing.outcome is None else standing.outcome.value,
+            "superseded": standing.superseded,
+            "ended": None
+            if standing.ended is None
+            else {"how": standing.ended.kind.value, "day": standing.ended.payload.get("day")},
+            "events": [
+                {
+                    "kind": e.kind.value,
+                    "at": e.at.isoformat(),
+                    "who": e.who,
+                    "note": e.note,
+                    **({"payload": dict(e.payload)} if e.payload else {}),
+                }
+                for e in self.events
+            ],
+        }
+
+
+def alert_entries(store: Store, now: dt.datetime) -> list[AlertEntry]:
+    """All alerts, newest alarm day first."""
+    events = logged_events(store)
+    entries = [
+        AlertEntry(alert, tuple(events[alert.id]), standing_of(events[alert.id], now))
+        for alert in logged_alerts(store)
+    ]
+    return sorted(entries, key=lambda e: (e.alert.alarm_day, e.alert.id), reverse=True)
+
+
+def alert_entry(store: Store, alert_id: int, now: dt.datetime) -> AlertEntry:
+    """One alert.
+
+    Raises
+    ------
+    NotFound
+        There is no alert with this number.
+    """
+    entries = alert_entries(store, now)
+    for entry in entries:
+        if entry.alert.id == alert_id:
+            return entry
+    known = f"known: 1 to {max(e.alert.id for e in entries)}" if entries else "the log is empty"
+    raise NotFound(f"alert {alert_id}: no such alert ({known}). List them with `rhovane alerts`.")
+
+
+def record_decision(
+    store: Store,
+    alert_id: int,
+    kind: EventKind,
+    *,
+    now: dt.datetime,
+    who: str,
+    note: str = "",
+    payload: dict[str, Any] | None = None,
+) -> AlertEntry:
+    """Append what a person decided to the alert log, and return the alert as it stands then.
+
+    Raises
+    ------
+    NotFound
+        There is no alert with this number.
+    RhovaneError
+        The decision does not fit the alert's state; says why.
+    """
+    entry = alert_entry(store, alert_id, now)
+    event = AlertEvent(alert_id, kind, now, who, note, payload or {})
+    reason = refusal(event, entry.events, now)
+    if reason is not None:
+        raise RhovaneError(f"alert {alert_id}: {reason}. Nothing was written.")
+    log_events(store, [event])
+    return alert_entry(store, alert_id, now)
+
+
+def counts_by_state(entries: Sequence[AlertEntry]) -> dict[str, int]:
+    """How many alerts are in each state."""
+    counts: dict[str, int] = {}
+    for entry in entries:
+        counts[entry.standing.state.value] = counts.get(entry.standing.state.value, 0) + 1
+    return counts

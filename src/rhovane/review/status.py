@@ -1,0 +1,109 @@
+"""Did the night run, what arrived, and what is silent for lack of data."""
+
+from __future__ import annotations
+
+import datetime as dt
+import math
+from dataclasses import dataclass
+from typing import Any
+
+from rhovane.model import ExitCode
+from rhovane.prepare import days_of
+from rhovane.review.alert_list import alert_entries, counts_by_state
+from rhovane.settings import Settings
+from rhovane.store import Store
+
+STALE_HOURS = 48  # hours a series may be behind the night's last day before it is called silent
+
+
+@dataclass(frozen=True)
+class Status:
+    """The state of the watch at one moment."""
+
+    network: str
+    last_night: dict[str, Any] | None
+    nights_missed: int
+    alerts_by_state: dict[str, int]
+    unreviewed: int
+    silent_series: list[dict[str, Any]]
+    silent_pairs: list[dict[str, Any]]
+    rejected_rows: int
+    exit_code: ExitCode
+
+    def as_json(self) -> dict[str, Any]:
+        """Plain values for ``--json``."""
+        return {
+            "network": self.network,
+            "last_night": self.last_night,
+            "nights_missed": self.nights_missed,
+            "alerts": self.alerts_by_state,
+            "unreviewed": self.unreviewed,
+            "silent_series": self.silent_series,
+            "silent_pairs": self.silent_pairs,
+            "rejected_rows": self.rejected_rows,
+            "exit_code": int(self.exit_code),
+        }
+
+
+def network_status(
+    settings: Settings, store: Store, now: dt.datetime, *, as_of: dt.date | None = None
+) -> Status:
+    """The state of the watch.
+
+    Parameters
+    ----------
+    as_of : date, optional
+        Judge missed nights and silent series as of this day; default: the last complete day.
+    """
+    days = days_of(settings.network.standard_offset)
+    last = store.last_finished_night()
+    expected = as_of or days.last_complete(now)
+    missed = 0 if last is None else max(0, (expected - last.as_of).days)
+    entries = alert_entries(store, now)
+    reference = expected if last is None else min(expected, last.as_of)
+    spans = store.span_of([s.key for s in settings.series])
+    silent_series = []
+    for one in settings.series:
+        seen = spans[one.key][1] if one.key in spans else None
+        behind = None if seen is None else (days.last_hour_of(reference) - int(seen.timestamp())) // 3600
+        if behind is None or behind > STALE_HOURS:
+            silent_series.append(
+                {
+                    "series": one.key,
+                    "last_reading": None if seen is None else seen.isoformat(),
+                    "hours_behind": behind,
+                }
+            )
+    silent_pairs = []
+    if last is not None:
+        end = days.moment(days.end_of(last.as_of))
+        found = store.read_windows(start=end - dt.timedelta(hours=1), end=end, lag=0)
+        row_of = {key: i for i, key in enumerate(found["pair_key"])}
+        for pair in settings.pair:
+            i = row_of.get(pair.key)
+            if i is None:
+                silent_pairs.append({"pair": pair.key, "reason": "not computed"})
+            elif math.isnan(found["statistic"][i]):
+                silent_pairs.append({"pair": pair.key, "reason": found["reason"][i]})
+    code = ExitCode.WELL
+    if last is None or missed > 1 or last.outcome != "complete":
+        code = ExitCode.NIGHT_INCOMPLETE
+    return Status(
+        settings.network.name,
+        None
+        if last is None
+        else {
+            "id": last.night_id,
+            "as_of": last.as_of.isoformat(),
+            "outcome": last.outcome,
+            "steps": last.steps,
+            "counts": {k: v for k, v in last.counts.items() if k not in ("recipes", "left")},
+        },
+        missed,
+        counts_by_state(entries),
+        sum(e.needs_review for e in entries),
+        silent_series,
+        silent_pairs,
+        store.count_rejected(),
+        code,
+    )
