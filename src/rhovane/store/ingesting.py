@@ -1,0 +1,365 @@
+"""Parsed feed files into readings: ledger, precedence, history and quarantine in one transaction."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from datetime import datetime
+from typing import NamedTuple
+
+import numpy as np
+
+from rhovane.model import IngestOutcome, ParsedFile, RhovaneError, Series
+from rhovane.store.clock import from_seconds, microseconds, naive_utc, seconds_of, timestamps
+from rhovane.store.precedence import (
+    NEW,
+    READING,
+    REVISED,
+    UNCHANGED,
+    Records,
+    Settlement,
+    group_by_hour,
+    settle,
+)
+from rhovane.store.session import Session
+
+_COLUMNS = ("series_key", "hour_start", "value", "flag", "stage", "result_time", "line")
+_ROW = "series_id, ts, value, flag, stage, result_time, line, ingest_id, confirmed_by"
+
+
+class _Delivery(NamedTuple):
+    """A file that the ledger does not know yet, with the number that its ledger row gets."""
+
+    file: ParsedFile
+    ingest_id: int
+
+
+class ReadingWriter(Session):
+    """Writing of series and readings."""
+
+    def ensure_series(self, series: Sequence[Series]) -> dict[str, int]:
+        """Make series known and return the number of each by its key; a changed label is taken over.
+
+        Raises
+        ------
+        RhovaneError
+            A known series has another unit, kind or step than before: its readings cannot be mixed.
+        """
+        known = {
+            key: rest
+            for key, *rest in self.rows("select key, id, unit, kind, step_minutes, label from series")
+        }
+        fresh = []
+        relabelled = []
+        ids: dict[str, int] = {}
+        last = max((row[0] for row in known.values()), default=0)
+        for one in series:
+            if one.key in ids:
+                continue
+            if one.key not in known:
+                last += 1
+                ids[one.key] = last
+                fresh.append(
+                    (
+                        last,
+                        one.key,
+                        one.station,
+                        one.quantity,
+                        one.unit,
+                        one.kind,
+                        one.step_minutes,
+                        one.label,
+                    )
+                )
+                continue
+            number, unit, kind, step, label = known[one.key]
+            for word, stored, given in (
+                ("unit", unit, one.unit),
+                ("kind", kind, one.kind),
+                ("step in minutes", step, one.step_minutes),
+            ):
+                if stored != given:
+                    raise RhovaneError(
+                        f"{one.key}: {word} is {given!r}, but its readings are stored with {word} {stored!r}. "
+                        f"Set it back to {stored!r}, or give the series a new key. Nothing was changed."
+                    )
+            ids[one.key] = number
+            if label != one.label:
+                relabelled.append((one.label, number))
+        if fresh or relabelled:
+            with self.transaction():
+                for row in fresh:
+                    self.execute("insert into series values (?, ?, ?, ?, ?, ?, ?, ?)", row)
+                for change in relabelled:
+                    self.execute("update series set label = ? where id = ?", change)
+        return ids
+
+    def append_files(
+        self, files: Sequence[ParsedFile], *, now: datetime, checkpoint: bool = True
+    ) -> list[IngestOutcome]:
+        """Add parsed files to the store, all of them or none; the outcome of each, in their order.
+
+        A file whose content (sha256) the ledger holds already for the same source adds nothing. Every
+        other file gets a ledger row and counts as if the files had come one after the other: see
+        :mod:`rhovane.store.precedence` for what is new, revised or unchanged. For each outcome
+        ``rows_read == new + revised + unchanged + rejected``.
+
+        Parameters
+        ----------
+        now : the moment to record
+        checkpoint : fold the write-ahead log into the file afterwards; False leaves that to a later call
+
+        Raises
+        ------
+        RhovaneError
+            A file names an unknown series, holds an infinite value, or its columns or counts contradict
+            each other. Nothing of any file was kept.
+        """
+        with self.transaction():
+            known = self._known_contents(files)
+            next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
+            fresh: dict[tuple[str, str], _Delivery] = {}
+            for file in files:
+                content = (file.source, file.sha256)
+                if content not in known and content not in fresh:
+                    fresh[content] = _Delivery(file, next_id + len(fresh))
+            deliveries = list(fresh.values())
+            counts = self._settle_and_write(deliveries)
+            self._write_ledger(deliveries, counts, naive_utc(now))
+            outcomes = []
+            told: set[tuple[str, str]] = set()
+            for file in files:
+                content = (file.source, file.sha256)
+                if content in fresh and content not in told:
+                    told.add(content)
+                    number = fresh[content].ingest_id
+                    outcomes.append(_outcome(file, number, counts[number - next_id]))
+                else:
+                    number = known.get(content) or fresh[content].ingest_id
+                    outcomes.append(_outcome(file, number, (0, 0, len(file.value)), already_known=True))
+            self._remember_files(files, outcomes, naive_utc(now))
+            if checkpoint:
+                self.checkpoint_after_commit()
+        return outcomes
+
+    def _known_contents(self, files: Sequence[ParsedFile]) -> dict[tuple[str, str], int]:
+        found = self.rows(
+            "select source, sha256, id from ingest where sha256 in (select unnest(?))",
+            [[f.sha256 for f in files]],
+        )
+        return {(source, sha256): number for source, sha256, number in found}
+
+    def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
+        """Write the readings of all deliveries; (new, revised, unchanged) of each."""
+        ids = dict(self.rows("select key, id from series"))
+        parts = [_records(delivery, ids) for delivery in deliveries]
+        if not sum(map(len, parts)):
+            return [(0, 0, 0)] * len(parts)
+        rows = parts[0] if len(parts) == 1 else np.concatenate(parts)
+        group, first = group_by_hour(rows)
+        held, held_group, row_number = self._held(rows.take(first))
+        result = settle(rows, group, held, held_group)
+        self._write_readings(result, held_group, row_number)
+        counts = []
+        begin = 0
+        for part in parts:
+            of_file = np.bincount(result.verdict[begin : begin + len(part)], minlength=3)
+            counts.append((int(of_file[NEW]), int(of_file[REVISED]), int(of_file[UNCHANGED])))
+            begin += len(part)
+        return counts
+
+    def _held(self, hours: Records) -> tuple[Records, np.ndarray, np.ndarray]:
+        """Current readings of the given hours, the group number of each, and where it stands in the table."""
+        columns = {
+            "position": np.arange(len(hours)),
+            "series_id": hours["series_id"],
+            "ts": timestamps(hours["ts"]),
+        }
+        span = [from_seconds(hours["ts"].min()), from_seconds(hours["ts"].max())]
+        found = self.columns(
+            """
+            select w.position, r.rowid as row_number, r.series_id, r.ts, r.value, r.flag, r.stage,
+                   r.result_time, i.file_rank, r.line, r.ingest_id, r.confirmed_by
+            from reading r
+            join staged w on w.series_id = r.series_id and w.ts = r.ts
+            join ingest i on i.id = r.confirmed_by
+            where r.ts between ? and ?
+            """,
+            [naive_utc(t) for t in span],
+            columns,
+        )
+        held = np.empty(len(found["position"]), READING)
+        for name in READING.names or ():
+            held[name] = seconds_of(found[name]) if name in ("ts", "result_time") else found[name]
+        return held, found["position"], found["row_number"]
+
+    def _write_readings(self, result: Settlement, held_group: np.ndarray, row_number: np.ndarray) -> None:
+        was_held = np.zeros(len(result.winner), np.bool_)
+        was_held[held_group] = True
+        fresh = result.winner.compress(~was_held)
+        if len(fresh):
+            self.execute(f"insert into reading select {_ROW} from staged", staged=_table(fresh))
+        changed = result.changed[held_group]
+        if changed.any():
+            self.execute(
+                """
+                update reading set value = c.value, flag = c.flag, stage = c.stage, line = c.line,
+                    result_time = c.result_time, ingest_id = c.ingest_id, confirmed_by = c.confirmed_by
+                from staged c where reading.rowid = c.row_number
+                """,
+                staged=_table(result.winner.take(held_group[changed])) | {"row_number": row_number[changed]},
+            )
+        if len(result.history):
+            self.execute(
+                f"insert into reading_history select {_ROW}, superseded_by from staged",
+                staged=_table(result.history) | {"superseded_by": result.superseded_by},
+            )
+
+    def _write_ledger(
+        self, deliveries: Sequence[_Delivery], counts: Sequence[tuple[int, int, int]], now: datetime
+    ) -> None:
+        if not deliveries:
+            return
+        columns = _text_columns(
+            sha256=[d.file.sha256 for d in deliveries],
+            source=[d.file.source for d in deliveries],
+            path=[d.file.path for d in deliveries],
+        )
+        columns["id"] = np.array([d.ingest_id for d in deliveries])
+        columns["file_rank"] = np.array([_file_rank(d.file) for d in deliveries], np.uint64)
+        columns["size_bytes"] = np.array([d.file.size_bytes for d in deliveries], np.int64)
+        columns["rows_read"] = np.array([d.file.rows_read for d in deliveries], np.int64)
+        for i, name in enumerate(("rows_new", "rows_revised", "rows_unchanged")):
+            columns[name] = np.array([c[i] for c in counts], np.int64)
+        columns["rows_rejected"] = np.array([_rejected_rows(d.file) for d in deliveries], np.int64)
+        spans = [_span(d.file) for d in deliveries]
+        for i, name in enumerate(("first_ts", "last_ts")):
+            columns[name] = np.array(["NaT" if s is None else s[i] for s in spans], "datetime64[us]")
+        self.execute(
+            """
+            insert into ingest select id, sha256, file_rank, source, path, size_bytes, rows_read, rows_new,
+                rows_revised, rows_unchanged, rows_rejected, first_ts, last_ts, ? from staged
+            """,
+            [now],
+            columns,
+        )
+        self.expect_after_commit("last_ingest_id", deliveries[-1].ingest_id)
+        refused = [(d.ingest_id, d.file.path, row) for d in deliveries for row in d.file.rejected]
+        if refused:
+            columns = _text_columns(
+                path=[path for _, path, _ in refused],
+                column_name=[row.column for *_, row in refused],
+                raw=[row.raw for *_, row in refused],
+                reason=[row.reason for *_, row in refused],
+            )
+            columns["ingest_id"] = np.array([number for number, *_ in refused])
+            columns["line"] = np.array([row.line for *_, row in refused], np.int64)
+            self.execute(
+                "insert into rejected select ingest_id, path, line, column_name, raw, reason from staged",
+                staged=columns,
+            )
+
+    def _remember_files(
+        self, files: Sequence[ParsedFile], outcomes: Sequence[IngestOutcome], now: datetime
+    ) -> None:
+        latest = {f.path: (f, o) for f, o in zip(files, outcomes, strict=True)}
+        if not latest:
+            return
+        pairs = list(latest.values())
+        columns = _text_columns(
+            path=list(latest),
+            source=[f.source for f, _ in pairs],
+            sha256=[f.sha256 for f, _ in pairs],
+        )
+        columns["size_bytes"] = np.array([f.size_bytes for f, _ in pairs], np.int64)
+        columns["mtime_ns"] = np.array([microseconds(f.modified) * 1000 for f, _ in pairs], np.int64)
+        columns["ingest_id"] = np.array([o.ingest_id for _, o in pairs])
+        self.execute(
+            """
+            merge into feed_file using (select *, ?::timestamp as seen_at from staged) s using (path)
+            when matched then update set source = s.source, size_bytes = s.size_bytes, seen_at = s.seen_at,
+                mtime_ns = s.mtime_ns, sha256 = s.sha256, ingest_id = s.ingest_id
+            when not matched then insert by name
+            """,
+            [now],
+            columns,
+        )
+
+
+def _records(delivery: _Delivery, ids: dict[str, int]) -> Records:
+    """The readings of a file as records, in file order."""
+    file = delivery.file
+    n = len(file.value)
+    lengths = {name: len(getattr(file, name)) for name in _COLUMNS}
+    if set(lengths.values()) != {n}:
+        raise RhovaneError(f"{file.path}: its columns have different lengths: {lengths}. Nothing was kept.")
+    if file.rows_read != n + _rejected_rows(file):
+        raise RhovaneError(
+            f"{file.path}: {file.rows_read} rows read, but {n} readings and {_rejected_rows(file)} rejected rows. "
+            "Nothing was kept; every row must be one or the other."
+        )
+    unknown = sorted(set(file.series_key) - ids.keys())
+    if unknown:
+        raise RhovaneError(
+            f"{file.path}: series not known to the store: {', '.join(unknown)}. Define them in the settings first. "
+            "Nothing was kept."
+        )
+    rows = np.empty(n, READING)
+    rows["series_id"] = np.fromiter((ids[key] for key in file.series_key), np.int32, n)
+    rows["ts"] = file.hour_start
+    rows["value"] = file.value
+    rows["flag"] = file.flag
+    rows["stage"] = file.stage
+    rows["result_time"] = file.result_time
+    rows["line"] = file.line
+    rows["file_rank"] = _file_rank(file)
+    rows["ingest_id"] = rows["confirmed_by"] = delivery.ingest_id
+    infinite = np.isinf(rows["value"])
+    if infinite.any():
+        raise RhovaneError(
+            f"{file.path}: the value of line {rows['line'][infinite][0]} is infinite; a reading is a finite number "
+            "or missing (NaN). Nothing was kept."
+        )
+    return rows
+
+
+def _table(rows: Records) -> dict[str, np.ndarray]:
+    columns = {name: rows[name] for name in READING.names or () if name != "file_rank"}
+    return columns | {name: timestamps(rows[name]) for name in ("ts", "result_time")}
+
+
+def _text_columns(**columns: Sequence[str]) -> dict[str, np.ndarray]:
+    return {name: np.array(values, dtype=object) for name, values in columns.items()}
+
+
+def _file_rank(file: ParsedFile) -> int:
+    """The first 64 bits of the content hash: enough to order files by content."""
+    return int(file.sha256[:16], 16)
+
+
+def _rejected_rows(file: ParsedFile) -> int:
+    return sum(row.line > 0 for row in file.rejected)
+
+
+def _span(file: ParsedFile) -> tuple[datetime, datetime] | None:
+    if not len(file.hour_start):
+        return None
+    hours = np.asarray(file.hour_start)
+    return naive_utc(from_seconds(hours.min())), naive_utc(from_seconds(hours.max()))
+
+
+def _outcome(
+    file: ParsedFile, ingest_id: int, counts: tuple[int, int, int], *, already_known: bool = False
+) -> IngestOutcome:
+    span = _span(file)
+    first, last = (None, None) if span is None else (from_seconds(microseconds(t) // 1_000_000) for t in span)
+    return IngestOutcome(
+        ingest_id,
+        file.source,
+        file.path,
+        file.rows_read,
+        *counts,
+        _rejected_rows(file),
+        already_known,
+        first,
+        last,
+    )

@@ -1,0 +1,138 @@
+"""The night ledger: one row for each execution of the nightly steps."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from datetime import date, datetime
+from typing import Any, Literal
+
+from rhovane.model import NotFound, RhovaneError
+from rhovane.store.clock import aware_utc, naive_utc
+from rhovane.store.jsontext import json_text
+from rhovane.store.session import Session
+
+NightOutcome = Literal["complete", "incomplete", "failed"]
+_OUTCOMES = ("complete", "incomplete", "failed")
+_SELECT = """
+select id, kind, as_of, started, finished, outcome, steps, counts, settings_hash, program_version,
+       data_version from night
+"""
+
+
+@dataclass(frozen=True)
+class NightRecord:
+    """A row of the night ledger; ``outcome`` is "running" until the night is finished.
+
+    ``data_version`` is the number of the last ingest that the night saw.
+    """
+
+    night_id: int
+    kind: str
+    as_of: date
+    started: datetime
+    finished: datetime | None
+    outcome: str
+    steps: list[dict[str, Any]]
+    counts: dict[str, Any]
+    settings_hash: str
+    program_version: str
+    data_version: int
+
+
+class NightLedger(Session):
+    """Writing and reading of the night ledger."""
+
+    def begin_night(
+        self, *, kind: str, as_of: date, now: datetime, settings_hash: str, program_version: str
+    ) -> int:
+        """Record that a night has begun, and return its number."""
+        with self.transaction():
+            number: int = self.value("select coalesce(max(id), 0) + 1 from night")
+            self.execute(
+                """
+                insert into night values (?, ?, ?, ?, null, 'running', '[]', '{}', ?, ?,
+                    (select coalesce(max(id), 0) from ingest))
+                """,
+                [number, kind, as_of, naive_utc(now), settings_hash, program_version],
+            )
+            self.expect_after_commit("nights", number)
+        return number
+
+    def finish_night(
+        self,
+        night_id: int,
+        *,
+        now: datetime,
+        outcome: NightOutcome,
+        steps: Sequence[Mapping[str, Any]],
+        counts: Mapping[str, Any],
+        data_version: int | None = None,
+    ) -> None:
+        """Record how a night ended; ``data_version`` is by default the last ingest of the store.
+
+        Raises
+        ------
+        NotFound
+            There is no such night.
+        RhovaneError
+            The night is finished already, or the outcome is not a known word.
+        """
+        if outcome not in _OUTCOMES:
+            raise RhovaneError(f"outcome={outcome!r} is not known; allowed are {', '.join(_OUTCOMES)}.")
+        with self.transaction():
+            found = self.rows("select outcome from night where id = ?", [int(night_id)])
+            if not found:
+                raise NotFound(f"There is no night {night_id} in the ledger.")
+            if found[0][0] != "running":
+                raise RhovaneError(f"Night {night_id} is finished already ({found[0][0]}); begin a new one.")
+            self.execute(
+                """
+                update night set finished = ?, outcome = ?, steps = ?, counts = ?,
+                    data_version = coalesce(?, (select max(id) from ingest), 0) where id = ?
+                """,
+                [
+                    naive_utc(now),
+                    outcome,
+                    json_text(list(steps)),
+                    json_text(counts),
+                    None if data_version is None else int(data_version),
+                    int(night_id),
+                ],
+            )
+            self.checkpoint_after_commit()
+
+    def nights(self, limit: int = 30) -> list[NightRecord]:
+        """The latest nights, newest first."""
+        return [_record(row) for row in self.rows(f"{_SELECT} order by id desc limit ?", [int(limit)])]
+
+    def last_complete_night(self, kind: str | None = None) -> NightRecord | None:
+        """The latest night that ended complete (of one kind, if given); None before the first."""
+        found = self.rows(
+            f"{_SELECT} where outcome = 'complete' and kind = coalesce(?, kind) order by id desc limit 1",
+            [kind],
+        )
+        return _record(found[0]) if found else None
+
+    def last_finished_night(self) -> NightRecord | None:
+        """The latest night that ended complete or incomplete, of any kind; None before the first."""
+        found = self.rows(f"{_SELECT} where outcome in ('complete', 'incomplete') order by id desc limit 1")
+        return _record(found[0]) if found else None
+
+
+def _record(row: tuple[Any, ...]) -> NightRecord:
+    number, kind, as_of, started, finished, outcome, steps, counts, settings, program, version = row
+    return NightRecord(
+        number,
+        kind,
+        as_of,
+        aware_utc(started),
+        None if finished is None else aware_utc(finished),
+        outcome,
+        json.loads(steps),
+        json.loads(counts),
+        settings,
+        program,
+        version,
+    )

@@ -1,0 +1,18 @@
+"""The open store with everything it can be asked to keep or to show."""
+
+from __future__ import annotations
+
+from rhovane.store.exports import Exports
+from rhovane.store.ingesting import ReadingWriter
+from rhovane.store.nights import NightLedger
+from rhovane.store.reading import ReadingReader
+from rhovane.store.results import Results
+from rhovane.store.upkeep import Upkeep
+
+
+class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, Upkeep):
+    """An open store; made by :func:`rhovane.store.open_store`, used in a ``with`` block.
+
+    Datetimes given without a zone are taken as UTC; datetimes returned say UTC. Spans of time are
+    half-open: ``start <= t < end``. A store belongs to the thread that opened it.
+    """
