@@ -81,7 +81,7 @@ def test_pairs_are_25_and_distinct(settings):
     keys = [pair.key for pair in settings.pair]
     assert len(keys) == len(set(keys)) == 25
     assert "KEL.traffic~KEL.NO2[adjusted]" in keys
-    assert "SKA.lorries~SKA.PM10[20-90deg,06-18h,workdays]" in keys
+    assert "SKA.lorries~SKA.PM10[20-90deg]" in keys
     assert "UVE.rain~DOR.rain[wet]" in keys
 
 

@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from flow.small_network import HEADER, SETTINGS, START, related_series, row
 from rhovane.model import EventKind, ExitCode
-from rhovane.pipeline import run_night, walk_nights
+from rhovane.pipeline import STEPS, run_night, walk_nights
 from rhovane.review import alert_entries, network_status
 from rhovane.settings import Settings, load_settings
 from rhovane.store import open_store
@@ -223,3 +223,31 @@ def test_a_revision_that_removes_a_change_supersedes_its_alert_and_deletes_nothi
     (entry,) = entries_of(network, moment(last + DAY))
     assert [e.kind for e in entry.events] == [EventKind.RAISED, EventKind.SUPERSEDED]
     assert entry.standing.superseded
+
+
+def test_a_step_that_breaks_leaves_the_reason_in_the_ledger_and_the_next_night_does_its_work(
+    network: Settings, deliver: Callable[[str, str], Path], changing
+):
+    def broken(night):
+        night.store.write_windows(
+            night.id,
+            {k: [] for k in ("pair_key",)},
+        )
+        return ""
+
+    deliver("all.csv", lines(range(24 * 20), *changing))
+    last = FIRST + 19 * DAY
+    with open_store(network.store_path) as store:
+        steps = tuple((name, broken if name == "evidence" else do) for name, do in STEPS)
+        report = run_night(network, store, as_of=last, now=moment(last), steps=steps)
+        assert report.outcome == "failed"
+        assert report.exit_code is ExitCode.NIGHT_INCOMPLETE
+        assert report.troubles[0].step == "evidence"
+        assert store.nights(1)[0].outcome == "failed"
+        assert len(store.read_windows(PAIR)["lag"]) == 0
+        status = network_status(network, store, moment(last), as_of=last)
+        assert status.exit_code is ExitCode.NIGHT_INCOMPLETE
+        assert status.last_night["outcome"] == "failed"
+        whole = run_night(network, store, as_of=last, now=moment(last))
+        assert whole.outcome == "complete"
+        assert len(store.read_windows(PAIR)["lag"]) > 0

@@ -192,6 +192,15 @@ def test_parquet_columns_come_in_row_order_with_gaps_marked(store, tmp_path):
     assert store.read_parquet(file).keys() == columns.keys()
 
 
+def test_parquet_times_with_a_zone_keep_their_instant(store, tmp_path):
+    file = tmp_path / "zoned.parquet"
+    store.execute(
+        f"copy (select * from (values (timestamptz '2024-05-01 03:00:00+02'), (null)) t(time)) to '{file}' (format parquet)"
+    )
+    times = store.read_parquet(file)["time"].tolist()
+    assert times == [dt.datetime(2024, 5, 1, 1, tzinfo=dt.UTC), None]
+
+
 def test_parquet_file_that_cannot_be_read_is_named(tmp_path):
     with pytest.raises(FeedError, match="no such file"):
         read_parquet(tmp_path / "none.parquet")

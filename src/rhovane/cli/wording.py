@@ -93,18 +93,25 @@ def short_state(entry: AlertEntry) -> str:
 def alert_lines(entry: AlertEntry) -> list[str]:
     """One alert in full."""
     a, standing = entry.alert, entry.standing
-    lines = [
-        f"Alert {a.id}: {a.pair_key} became {a.direction}",
-        f"  state      {short_state(entry)}" + ("" if not standing.changed else ", change lasts"),
-        f"  alarm day  {a.alarm_day} (night of {a.night_as_of})",
-        f"  onset      {a.onset_day} is the likeliest first day",
-        f"  before     {rho_in_full(a.before)}",
-        f"  after      {rho_in_full(a.after)}",
-        f"  evidence   {a.evidence:.2f} against a threshold of {a.threshold:.2f} (logarithm of the chart)",
-        f"  rests on   readings up to ingest {a.data_version}, settings {a.settings_hash}, recipe {a.recipe_hash}",
+    facts = [
+        ("state", short_state(entry) + (", change lasts" if standing.changed else "")),
+        ("suspect", a.suspect),
+        ("members", ", ".join(a.members) if len(a.members) > 1 else ""),
+        ("alarm day", f"{a.alarm_day} (night of {a.night_as_of})"),
+        ("onset", f"{a.onset_day} is the likeliest first day"),
+        ("before", rho_in_full(a.before)),
+        ("after", rho_in_full(a.after)),
+        ("evidence", f"{a.evidence:.2f} against a threshold of {a.threshold:.2f} (logarithm of the chart)"),
+        (
+            "rests on",
+            f"readings up to ingest {a.data_version}, settings {a.settings_hash}, recipe {a.recipe_hash}",
+        ),
+        *(("hint", hint) for hint in a.hints),
     ]
-    for hint in a.hints:
-        lines += textwrap.wrap(hint, WIDTH, initial_indent="  hint       ", subsequent_indent=" " * 13)
+    lines = [f"Alert {a.id}: {a.pair_key} became {a.direction}"]
+    for name, text in facts:
+        if text:
+            lines += textwrap.wrap(text, WIDTH, initial_indent=f"  {name:<11}", subsequent_indent=" " * 13)
     lines.append("  log")
     for event in entry.events:
         extra = ", ".join(f"{k} {v}" for k, v in event.payload.items() if k in ("outcome", "until", "day"))

@@ -57,10 +57,12 @@ class SourceCheck:
 def dry_run(settings: Settings, store: Store | None) -> list[SourceCheck]:
     """Parse every file of every source and say what is in it; nothing is written."""
     known = set() if store is None else {str(sha) for sha in store.ingests()["sha256"]}
-    return [_check_source(source, settings, known) for source in settings.source]
+    return [_check_source(source, settings, known, store) for source in settings.source]
 
 
-def _check_source(source: SourceSettings, settings: Settings, known: set[str]) -> SourceCheck:
+def _check_source(
+    source: SourceSettings, settings: Settings, known: set[str], store: Store | None
+) -> SourceCheck:
     try:
         listed = list_files(source, settings.work_folder)
     except FeedError as error:
@@ -71,7 +73,7 @@ def _check_source(source: SourceSettings, settings: Settings, known: set[str]) -
     first = last = None
     for file in listed:
         try:
-            parsed = parse_feed_file(settings.work_folder / file.place, source, settings, file.place)
+            parsed = parse_feed_file(settings.work_folder / file.place, source, settings, file.place, store)
         except FeedError as error:
             reasons["file cannot be read"] += 1
             lines.append(str(error))

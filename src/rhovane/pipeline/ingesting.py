@@ -6,10 +6,10 @@ from collections.abc import Iterable
 from pathlib import Path
 
 from rhovane.ingest import describe_rejections, list_files, parse_file
-from rhovane.model import FeedError, ParsedFile
+from rhovane.model import FeedError, IngestOutcome, ParsedFile, RhovaneError, StoreDamaged
 from rhovane.pipeline.context import Night
 from rhovane.settings import Settings, SourceSettings
-from rhovane.store import read_parquet
+from rhovane.store import Store, read_parquet
 
 STEP = "ingest"
 
@@ -38,7 +38,7 @@ def read_feed(night: Night) -> str:
 def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) -> ParsedFile | None:
     """One feed file as readings and rejected rows; None, with the reason noted, when it cannot be opened."""
     try:
-        one = parse_feed_file(path, source, night.settings, shown)
+        one = parse_feed_file(path, source, night.settings, shown, night.store)
     except FeedError as error:
         night.failed(STEP, shown, str(error))
         return None
@@ -51,7 +51,7 @@ def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) 
 def append(night: Night, parsed: Iterable[ParsedFile]) -> None:
     """Append parsed files and add what they did to the night's counts."""
     files = list(parsed)
-    night.ingested = night.store.append_files(files, now=night.now) if files else []
+    night.ingested = _append_or_note(night, files) if files else []
     fresh = [o for o in night.ingested if not o.already_known]
     night.counts.update(
         {
@@ -64,9 +64,25 @@ def append(night: Night, parsed: Iterable[ParsedFile]) -> None:
     night.rejections = [line for file in files if file.rejected for line in describe_rejections(file)]
 
 
-def parse_feed_file(path: Path, source: SourceSettings, settings: Settings, shown: str) -> ParsedFile:
+def _append_or_note(night: Night, files: list[ParsedFile]) -> list[IngestOutcome]:
+    """Append all files at once; if one of them is refused, one by one, so that the others go in."""
+    try:
+        return night.store.append_files(files, now=night.now)
+    except StoreDamaged:
+        raise
+    except RhovaneError as error:
+        if len(files) == 1:
+            night.failed(STEP, files[0].path, str(error))
+            return []
+        return [outcome for file in files for outcome in _append_or_note(night, [file])]
+
+
+def parse_feed_file(
+    path: Path, source: SourceSettings, settings: Settings, shown: str, store: Store | None
+) -> ParsedFile:
     """One feed file as readings and rejected rows, known to the ledger by the place ``shown``."""
-    return parse_file(path, source, settings.series_by_key(), read_parquet=read_parquet, shown_as=shown)
+    reader = read_parquet if store is None else store.read_parquet
+    return parse_file(path, source, settings.series_by_key(), read_parquet=reader, shown_as=shown)
 
 
 def shown_path(path: Path, settings: Settings) -> str:

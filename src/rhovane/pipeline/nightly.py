@@ -11,7 +11,7 @@ import datetime as dt
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Literal
 
 import rhovane
 from rhovane.model import ExitCode
@@ -25,6 +25,8 @@ from rhovane.settings import Settings
 from rhovane.store import Store
 
 Step = tuple[str, Callable[[Night], str]]
+
+OWN_TRANSACTION = ("ingest",)  # commits by itself; all later steps share one transaction
 
 STEPS: tuple[Step, ...] = (
     ("ingest", read_feed),
@@ -87,8 +89,8 @@ def run_night(
     Returns
     -------
     NightReport
-        ``outcome`` is "complete", or "incomplete" when parts failed (they are listed and tried again by
-        the next night).
+        ``outcome`` is "complete"; "incomplete" when parts failed (they are listed and tried again by the
+        next night); or "failed" when a step as a whole did (nothing it would have computed is kept).
     """
     store.ensure_series(settings.domain_series())
     night = Night(settings, store, as_of, now, progress=progress, recompute_from=recompute_from)
@@ -100,28 +102,37 @@ def run_night(
         program_version=rhovane.__version__,
     )
     outcomes: list[StepOutcome] = []
-    before = [step for step in steps if step[0] == "ingest"]
-    for step in before:
-        outcomes.append(_run_step(step, night))
-    with store.transaction():
-        for step in steps:
-            if step not in before:
-                outcomes.append(_run_step(step, night))
-        outcome = "incomplete" if night.troubles else "complete"
-        store.finish_night(
-            night.id,
-            now=now,
-            outcome=outcome,
-            steps=[o.as_json() for o in outcomes],
-            counts=night.counts,
-        )
+    outcome = "failed"
+    try:
+        _run_steps([s for s in steps if s[0] in OWN_TRANSACTION], night, outcomes)
+        with store.transaction():
+            _run_steps([s for s in steps if s[0] not in OWN_TRANSACTION], night, outcomes)
+            outcome = "incomplete" if night.troubles else "complete"
+            _finish(night, outcome, outcomes)
+    except Exception as error:  # noqa: BLE001  the one place: what stopped a night is written to its ledger
+        outcome = "failed"
+        step = steps[len(outcomes)][0] if len(outcomes) < len(steps) else "ledger"
+        night.failed(step, "the whole step", f"{type(error).__name__}: {error}")
+        outcomes.append(StepOutcome(step, 0.0, "failed; nothing of the night's results was kept", tuple(night.troubles)))
+        _finish(night, outcome, outcomes)
     return NightReport(night.id, as_of, outcome, tuple(outcomes), tuple(night.troubles), night.counts)
 
 
-def _run_step(step: Step, night: Night) -> StepOutcome:
-    name, do = step
-    night.progress(name)
-    known = len(night.troubles)
-    started = time.perf_counter()
-    summary = do(night)
-    return StepOutcome(name, time.perf_counter() - started, summary, tuple(night.troubles[known:]))
+def _run_steps(steps: list[Step], night: Night, outcomes: list[StepOutcome]) -> None:
+    for name, do in steps:
+        night.progress(name)
+        known = len(night.troubles)
+        started = time.perf_counter()
+        summary = do(night)
+        seconds = time.perf_counter() - started
+        outcomes.append(StepOutcome(name, seconds, summary, tuple(night.troubles[known:])))
+
+
+def _finish(night: Night, outcome: Literal["complete", "incomplete", "failed"], outcomes: list[StepOutcome]) -> None:
+    night.store.finish_night(
+        night.id,
+        now=night.now,
+        outcome=outcome,
+        steps=[o.as_json() for o in outcomes],
+        counts=night.counts,
+    )

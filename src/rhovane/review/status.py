@@ -18,7 +18,12 @@ STALE_HOURS = 48  # hours a series may be behind the night's last day before it 
 
 @dataclass(frozen=True)
 class Status:
-    """The state of the watch at one moment."""
+    """The state of the watch at one moment.
+
+    ``last_night`` is the newest entry of the night ledger, whatever its outcome ("interrupted": it began
+    and did not end); ``nights_missed`` counts days since the newest night that finished, all of them when
+    none has.
+    """
 
     network: str
     last_night: dict[str, Any] | None
@@ -85,19 +90,20 @@ def network_status(
                 silent_pairs.append({"pair": pair.key, "reason": "not computed"})
             elif math.isnan(found["statistic"][i]):
                 silent_pairs.append({"pair": pair.key, "reason": found["reason"][i]})
+    newest = next(iter(store.nights(1)), None)
     code = ExitCode.WELL
-    if last is None or missed > 1 or last.outcome != "complete":
+    if newest is None or last is None or missed > 1 or newest.outcome != "complete":
         code = ExitCode.NIGHT_INCOMPLETE
     return Status(
         settings.network.name,
         None
-        if last is None
+        if newest is None
         else {
-            "id": last.night_id,
-            "as_of": last.as_of.isoformat(),
-            "outcome": last.outcome,
-            "steps": last.steps,
-            "counts": {k: v for k, v in last.counts.items() if k not in ("recipes", "left")},
+            "id": newest.night_id,
+            "as_of": newest.as_of.isoformat(),
+            "outcome": "interrupted" if newest.outcome == "running" else newest.outcome,
+            "steps": newest.steps,
+            "counts": {k: v for k, v in newest.counts.items() if k not in ("recipes", "left")},
         },
         missed,
         counts_by_state(entries),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
@@ -155,30 +155,47 @@ class ReadingReader(Session):
         """Number of rows in quarantine."""
         return int(self.value("select count(*) from rejected"))
 
-    @staticmethod
-    def read_parquet(path: Path) -> dict[str, np.ndarray]:
-        """Columns of a Parquet file by name; see :func:`rhovane.store.read_parquet`."""
-        return read_parquet(path)
+    def read_parquet(self, path: Path) -> dict[str, np.ndarray]:
+        """Columns of a Parquet file by name; see :func:`rhovane.store.read_parquet`.
+
+        Faster than the function, because the store's engine is running already; touches no table.
+        """
+        return _parquet_columns(self._connection.cursor(), path)
 
 
 def read_parquet(path: Path) -> dict[str, np.ndarray]:
     """Columns of a Parquet file by name, in row order; needs no store.
 
     Times come as datetime64[us] (NaT: missing), numbers as numpy arrays (NaN: missing among floats),
-    text and whole numbers with gaps as object arrays (None: missing).
+    text and whole numbers with gaps as object arrays (None: missing). Times with a zone come as aware
+    datetimes in UTC, so that they are never taken for labels of the source's own clock.
 
     Raises
     ------
     FeedError
         There is no such file, or it is not a Parquet file.
     """
+    with duckdb.connect(":memory:", config={"threads": 1}) as connection:
+        return _parquet_columns(connection, path)
+
+
+def _parquet_columns(connection: duckdb.DuckDBPyConnection, path: Path) -> dict[str, np.ndarray]:
     if not path.is_file():
         raise FeedError(f"{path}: no such file.")
-    with duckdb.connect(":memory:", config={"threads": 1}) as connection:
+    with connection:
         try:
             relation = connection.execute("select * from read_parquet(?)", [str(path)])
-            decimals = [name for name, kind, *_ in relation.description if str(kind).startswith("DECIMAL")]
+            kinds = {name: str(kind) for name, kind, *_ in relation.description}
             fetched = relation.fetchnumpy()
         except duckdb.Error as error:
             raise FeedError(f"{path}: cannot be read as Parquet: {error}") from error
-    return {n: plain_array(v).astype(float) if n in decimals else plain_array(v) for n, v in fetched.items()}
+    return {name: _parquet_column(plain_array(values), kinds[name]) for name, values in fetched.items()}
+
+
+def _parquet_column(values: np.ndarray, kind: str) -> np.ndarray:
+    if kind.startswith("DECIMAL"):
+        return values.astype(float)
+    if kind == "TIMESTAMP WITH TIME ZONE":  # fetched as naive UTC; without its offset it would be taken for local
+        moments = values.astype("datetime64[us]").tolist()
+        return np.array([t and t.replace(tzinfo=UTC) for t in moments], dtype=object)
+    return values

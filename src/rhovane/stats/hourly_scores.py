@@ -1,0 +1,339 @@
+"""From readings to hourly scores of one series: ranks, cycle removed, whitened; each day from a bounded past.
+
+Three steps, each causal and each decided by ranks only, so that a strictly increasing transform of a
+series changes nothing:
+
+1. *Normal score*: the midrank of a reading among the last 30 days of the series, as a normal quantile.
+2. *Level*: the normal score minus its trailing 28-day mean at that hour of the day.
+3. *Innovation*: what an AR(2) process, fitted afresh for every day on the 90 days before it, could not
+   foresee of the level. Gaps are bridged by the exact Kalman filter of that process.
+
+Nothing is anchored to a calendar or to the first reading: the scores of day *d* are a function of the
+readings of days ``d - SERIES_HISTORY_DAYS + 1`` to *d*, the same to the last bit whether a night computes
+that day alone or a study computes years at once.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import ndtri
+
+from rhovane.stats.arguments import as_series
+from rhovane.stats.compiled import compiled
+
+Floats = NDArray[np.float64]
+
+RANK_DAYS = 30
+"""Days, today included, among which a reading is ranked (720 hours)."""
+MIN_RANKED_DAYS = 2
+"""A reading is scored once this many days' worth of observations stand in its ranking window."""
+SCORE_TAIL = 1e-4
+"""Ranks are kept this far from 0 and 1 before they become normal quantiles."""
+CYCLE_DAYS = 28
+"""Days, today included, of the trailing mean that stands for the daily cycle (four whole weeks)."""
+FIT_DAYS = 90
+"""Days before a day on which its AR(2) process and its scale are fitted."""
+MIN_FIT_DAYS = 14
+"""Days' worth of observations among those, below which a day gets no innovations."""
+MAX_BRIDGED_VARIANCE = 2.5
+"""An innovation after a gap is kept while its forecast variance is at most this multiple of the usual one."""
+CLIP = 3.5
+"""Innovations beyond this many standard deviations count as that many."""
+MAX_PARTIAL_AUTOCORRELATION = 0.99
+"""Fitted partial autocorrelations are kept inside this, so that the process is stationary."""
+SERIES_HISTORY_DAYS = FIT_DAYS + CYCLE_DAYS + RANK_DAYS - 1
+"""Days of readings, the scored day included, that its hourly scores depend on."""
+
+
+@dataclass(frozen=True)
+class SeriesScores:
+    """Hourly scores of one series for consecutive days; work that all its pairs share.
+
+    Attributes
+    ----------
+    first_day : int
+        Number of the first day; row ``i`` belongs to day ``first_day + i``.
+    midrank : ndarray of float64, shape (n_days, steps_per_day)
+        Midrank in (0, 1) among the last 30 days; NaN without an observation or with too few to rank.
+    normal_score : ndarray of float64, shape (n_days, steps_per_day)
+        Normal quantile of the midrank, daily cycle kept.
+    level : ndarray of float64, shape (n_days, steps_per_day)
+        Normal score minus its trailing 28-day mean at that time of day.
+    innovation : ndarray of float64, shape (n_days, steps_per_day)
+        Whitened level in units of its trailing standard deviation, within ±3.5; NaN where the level is
+        missing, where a gap is too wide to bridge, or where fewer than 14 days' worth of observations
+        stand in the 90 days before.
+    shape_sd, course_sd : ndarray of float64, shape (n_days,)
+        Standard deviation of level and of normal score about their daily means over the 90 days before;
+        NaN as above.
+    """
+
+    first_day: int
+    midrank: Floats
+    normal_score: Floats
+    level: Floats
+    innovation: Floats
+    shape_sd: Floats
+    course_sd: Floats
+
+    @property
+    def n_days(self) -> int:
+        """How many days are scored."""
+        return len(self.shape_sd)
+
+
+def series_scores(values: Floats, days: range | None = None, *, steps_per_day: int = 24) -> SeriesScores:
+    """Hourly scores of one series for a range of days.
+
+    Parameters
+    ----------
+    values : ndarray of float64, shape (n_hours,)
+        Observations on a regular grid that starts with a day; NaN marks an hour without one. A last day
+        that is not complete is left out.
+    days : range, optional
+        Consecutive day numbers to score, 0 being the first day of ``values``; default all. Scores of day
+        *d* use the readings of the ``SERIES_HISTORY_DAYS`` days that end with *d*, as far as they exist.
+    steps_per_day : int
+        Readings a day, 24 for hourly values.
+
+    Raises
+    ------
+    ValueError
+        When ``values`` is not one numeric series or holds an infinite value, or ``days`` reaches beyond it.
+
+    Notes
+    -----
+    Yule-Walker estimates from the pairs of readings that exist at each lag; forecast errors and their
+    variances from the Kalman filter, see Jones (1980). An error after a gap is divided by the square root
+    of its variance, and dropped where that variance is more than 2.5 times the usual one.
+
+    References
+    ----------
+    R. H. Jones (1980), Technometrics 22, 389-395.
+
+    Examples
+    --------
+    >>> scores = series_scores(np.random.default_rng(1).normal(size=24 * 40), range(39, 40))
+    >>> scores.innovation.shape
+    (1, 24)
+    """
+    values = as_series(values, "values")
+    days = checked_days(days, len(values) // steps_per_day)
+    first, last = days.start, days.stop
+    fit_first = max(0, first - FIT_DAYS)
+    cycle_first = max(0, fit_first - CYCLE_DAYS + 1)
+    grid = values[: last * steps_per_day].reshape(last, steps_per_day)
+    midrank = trailing_midranks(grid, cycle_first, RANK_DAYS, MIN_RANKED_DAYS * steps_per_day)
+    score = ndtri(np.clip(midrank, SCORE_TAIL, 1.0 - SCORE_TAIL))
+    level = remove_daily_cycle(score, fit_first - cycle_first, CYCLE_DAYS)
+    least = MIN_FIT_DAYS * steps_per_day
+    known = score[fit_first - cycle_first :]
+    return SeriesScores(
+        first,
+        midrank[first - cycle_first :],
+        score[first - cycle_first :],
+        level[first - fit_first :],
+        whiten(level, first - fit_first, FIT_DAYS, least),
+        within_day_sd(level, first - fit_first, FIT_DAYS, least),
+        within_day_sd(known, first - fit_first, FIT_DAYS, least),
+    )
+
+
+def checked_days(days: range | None, n_days: int) -> range:
+    """The range of days to score, default all of ``n_days``; ValueError where it is not among them."""
+    if days is None:
+        return range(n_days)
+    if days.step != 1 or not 0 <= days.start <= days.stop <= n_days:
+        raise ValueError(
+            f"days={days} is not a run of consecutive days among the {n_days} complete days of the values; "
+            f"choose range(first, last + 1) within range(0, {n_days})."
+        )
+    return days
+
+
+@compiled
+def trailing_midranks(grid: Floats, first: int, rank_days: int, min_ranked: int) -> Floats:
+    """Midranks of each day's readings among the last ``rank_days`` days, for days ``first`` to the last.
+
+    The sorted window moves by one day at a time: yesterday's window without the day that leaves, merged
+    with the day that enters. Whole-number counts, hence exact.
+    """
+    n_days, steps = grid.shape
+    out = np.full((n_days - first, steps), np.nan)
+    window = np.empty((rank_days + 1) * steps)
+    merged = np.empty((rank_days + 1) * steps)
+    count = 0
+    for day in range(max(0, first - rank_days), n_days):
+        entering = np.sort(grid[day][~np.isnan(grid[day])])
+        gone = day - rank_days
+        if gone >= max(0, first - rank_days):
+            leaving = np.sort(grid[gone][~np.isnan(grid[gone])])
+        else:
+            leaving = np.empty(0)
+        n = 0
+        out_at = 0
+        in_at = 0
+        for i in range(count):
+            value = window[i]
+            if out_at < len(leaving) and leaving[out_at] == value:
+                out_at += 1
+                continue
+            while in_at < len(entering) and entering[in_at] < value:
+                merged[n] = entering[in_at]
+                n += 1
+                in_at += 1
+            merged[n] = value
+            n += 1
+        while in_at < len(entering):
+            merged[n] = entering[in_at]
+            n += 1
+            in_at += 1
+        window, merged = merged, window
+        count = n
+        if day < first or count < min_ranked:
+            continue
+        ranked = window[:count]
+        for t in range(steps):
+            value = grid[day, t]
+            if not np.isnan(value):
+                less = np.searchsorted(ranked, value)
+                not_more = np.searchsorted(ranked, value, side="right")
+                out[day - first, t] = (less + 0.5 * (not_more - less)) / count
+    return out
+
+
+@compiled
+def remove_daily_cycle(score: Floats, first: int, cycle_days: int) -> Floats:
+    """Scores minus their trailing mean at that time of day, for rows ``first`` to the last."""
+    n_days, steps = score.shape
+    out = np.empty((n_days - first, steps))
+    for day in range(first, n_days):
+        for t in range(steps):
+            total = 0.0
+            count = 0
+            for earlier in range(max(0, day - cycle_days + 1), day + 1):
+                value = score[earlier, t]
+                if not np.isnan(value):
+                    total += value
+                    count += 1
+            out[day - first, t] = score[day, t] - total / count if count > 0 else np.nan
+    return out
+
+
+@compiled
+def fit_ar2(level: Floats) -> tuple[float, float]:
+    """AR(2) coefficients of a gappy series by Yule-Walker, kept stationary."""
+    n = len(level)
+    total = 0.0
+    count = 0
+    for t in range(n):
+        if not np.isnan(level[t]):
+            total += level[t]
+            count += 1
+    mean = total / count
+    products = np.zeros(3)
+    counts = np.zeros(3)
+    for t in range(n):
+        if np.isnan(level[t]):
+            continue
+        for lag in range(min(3, t + 1)):
+            if not np.isnan(level[t - lag]):
+                products[lag] += (level[t] - mean) * (level[t - lag] - mean)
+                counts[lag] += 1
+    if products[0] <= 0.0:
+        return 0.0, 0.0
+    variance = products[0] / counts[0]
+    limit = MAX_PARTIAL_AUTOCORRELATION
+    r1 = products[1] / max(counts[1], 1.0) / variance
+    r2 = products[2] / max(counts[2], 1.0) / variance
+    r1 = min(max(r1, -limit), limit)
+    partial = min(max((r2 - r1 * r1) / (1.0 - r1 * r1), -limit), limit)
+    return r1 * (1.0 - partial), partial
+
+
+@compiled
+def filter_ar2(level: Floats, a1: float, a2: float, out: Floats) -> None:
+    """Forecast errors of an AR(2) process over a gappy series, each in units of its own forecast error.
+
+    State: forecasts of this and the last level with their covariance, in units of the innovation variance.
+    """
+    unknown = 1e4  # forecast variance before the first reading: nothing is known
+    now, last, v11, v12, v22 = 0.0, 0.0, unknown, 0.0, unknown
+    for t in range(len(level)):
+        forecast = a1 * now + a2 * last
+        f11 = a1 * a1 * v11 + 2.0 * a1 * a2 * v12 + a2 * a2 * v22 + 1.0
+        f12 = a1 * v11 + a2 * v12
+        f22 = v11
+        if np.isnan(level[t]):
+            last, now = now, forecast
+            v11, v12, v22 = f11, f12, f22
+            out[t] = np.nan
+        else:
+            error = level[t] - forecast
+            gain = f12 / f11
+            out[t] = error / np.sqrt(f11) if f11 <= MAX_BRIDGED_VARIANCE else np.nan
+            last = now + gain * error
+            now = level[t]
+            v11, v12, v22 = 0.0, 0.0, f22 - gain * f12
+
+
+@compiled
+def within_day_sd(values: Floats, first: int, fit_days: int, min_fit: int) -> Floats:
+    """Standard deviation about daily means over the days before each of the rows ``first`` to the last."""
+    n_days, steps = values.shape
+    out = np.full(n_days - first, np.nan)
+    within, rows = np.zeros(n_days), np.zeros(n_days)
+    for day in range(n_days):
+        total = 0.0
+        for t in range(steps):
+            if not np.isnan(values[day, t]):
+                total += values[day, t]
+                rows[day] += 1
+        for t in range(steps):
+            if not np.isnan(values[day, t]):
+                within[day] += (values[day, t] - total / rows[day]) ** 2
+    for day in range(first, n_days):
+        count = 0.0
+        squares = 0.0
+        for earlier in range(max(0, day - fit_days), day):
+            count += rows[earlier]
+            squares += within[earlier]
+        if count >= min_fit:
+            out[day - first] = np.sqrt(squares / count)
+    return out
+
+
+@compiled
+def whiten(level: Floats, first: int, fit_days: int, min_fit: int) -> Floats:
+    """Innovations of the rows ``first`` to the last, each day from a process fitted to the days before it."""
+    n_days, steps = level.shape
+    out = np.full((n_days - first, steps), np.nan)
+    flat = level.reshape(n_days * steps)
+    errors = np.empty((fit_days + 1) * steps)
+    for day in range(first, n_days):
+        begin = max(0, day - fit_days)
+        past = flat[begin * steps : day * steps]
+        known = 0
+        for t in range(len(past)):
+            known += not np.isnan(past[t])
+        if known < min_fit:
+            continue
+        a1, a2 = fit_ar2(past)
+        filter_ar2(flat[begin * steps : (day + 1) * steps], a1, a2, errors)
+        total = 0.0
+        squares = 0.0
+        kept = 0
+        for t in range(len(past)):
+            if not np.isnan(errors[t]):
+                total += errors[t]
+                squares += errors[t] * errors[t]
+                kept += 1
+        if kept < 2:
+            continue
+        sd = np.sqrt(max(squares / kept - (total / kept) ** 2, 1e-12))
+        for t in range(steps):
+            out[day - first, t] = min(max(errors[len(past) + t] / sd, -CLIP), CLIP)
+    return out

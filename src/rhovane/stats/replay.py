@@ -1,0 +1,340 @@
+"""Every day of a network's history judged in order: charts, incidents, returns and new baselines."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rhovane.stats.budget import threshold
+from rhovane.stats.chart import MAX_DEVIATION, MIN_REFERENCE_DAYS, SHIFTS, gather_all, scales, standardised
+from rhovane.stats.incident import Incident, Judgement, OpenIncident, onset_day, weighted_mean
+from rhovane.stats.network import (
+    CLASS_VARIANCE,
+    HISTORY_DAYS,
+    LEAST_OBSERVED_SHARE,
+    MAX_HISTORY_DEVIATION,
+    Structure,
+    add_class_movement,
+    directions,
+    duplicate_nodes,
+    filtered,
+    learnt_covariance,
+    references,
+)
+from rhovane.stats.suspect import explain, lag_movement
+
+Floats = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+
+PAIR_SHARE = 0.5
+"""Share of the budget of false alarms that goes to pairs; the rest to series and stations."""
+NODE_REVIEW_DAYS = 28
+"""Days between two reviews of which nodes are told apart from their pairs."""
+SETTLING_DAYS = 7
+"""Days after an alarm over which the suspect is judged anew each night, then fixed."""
+MERGING_DAYS = 10
+"""Days after an alarm within which crossings of related charts belong to it."""
+MAX_KEPT_DEVIATION = 7.0
+"""Deviations that explain an incident are kept inside this."""
+RETURN_EVIDENCE = 5.0
+"""Log likelihood ratio at which changed pairs count as back at their reference."""
+MAX_RETURN_STEP = 2.5
+"""One day adds at most this much to it."""
+RETURN_OVERLAP_DAYS = 3
+"""Days before a return is recognised that already belong to the reference again."""
+REBASELINE_SKIP_DAYS = 7
+"""Days from the onset on that stay out of the new reference after re-baselining."""
+LEARNING, WATCHED, CHANGED, NOT_SCORED = 0, 1, 2, 3
+
+
+@dataclass(frozen=True)
+class Spans:
+    """Lengths in days, as in :func:`rhovane.stats.watch.watch`."""
+
+    baseline_days: int
+    guard_days: int
+    rebaseline_days: int
+
+
+@dataclass
+class Night:
+    """One day's view of the network, for its charts and for explaining an incident."""
+
+    day: int
+    mean: Floats
+    sd: Floats
+    deviation: Floats
+    observed: Flags
+    covariance: Floats
+    direction: Floats
+
+
+class Replay:
+    """State of the watch while it walks over the days; :meth:`run` does all of them.
+
+    ``score`` and ``weight`` have shape (n_pairs, n_days), ``lagged`` (n_pairs, n_days, 5); ``ready`` is the
+    first day on which each pair is judged.
+    """
+
+    def __init__(
+        self,
+        score: Floats,
+        weight: Floats,
+        lagged: Floats,
+        ready: NDArray[np.int64],
+        structure: Structure,
+        spans: Spans,
+        false_alarms_per_year: float,
+    ) -> None:
+        n_pairs, n_days = score.shape
+        n_charts = len(structure.hypotheses)
+        self.score, self.weight, self.lagged, self.ready = score, weight, lagged, ready
+        self.structure, self.spans = structure, spans
+        self.usable = np.isfinite(score)
+        self.frozen = np.full((3, n_pairs), np.nan)
+        self.holder = np.full(n_pairs, -1)
+        self.statistic = np.zeros((n_charts, 2, len(SHIFTS)))
+        self.counted, self.scaled = np.full((n_charts, n_days), np.nan), np.full((n_charts, n_days), np.nan)
+        self.spoiled = np.zeros((n_charts, n_days), dtype=bool)
+        self.kept = np.full((n_pairs, n_days), np.nan)
+        self.values = np.full((n_charts, n_days), np.nan)
+        self.limits = np.full((n_charts, n_days), np.nan)
+        self.means, self.sds = np.full((n_pairs, n_days), np.nan), np.full((n_pairs, n_days), np.nan)
+        self.state = np.zeros((n_pairs, n_days), dtype=np.int8)
+        self.open: list[OpenIncident] = []
+        self.closed: list[Incident] = []
+        self.is_node = np.array([h.kind != "pair" for h in structure.hypotheses], dtype=bool)
+        belongs = np.zeros((n_charts, n_pairs), dtype=bool)
+        for h, one in enumerate(structure.hypotheses):
+            belongs[h, one.pairs] = True
+        self.belongs = belongs
+        # Charts are related where one of their pairs shares a class or a series with one of the other's.
+        self.touches = (belongs @ structure.related.astype(int)) > 0
+        same_class = structure.classes[:, None] == structure.classes[None, :]
+        self.same_class = (belongs @ same_class.astype(int)) > 0
+        self.rate = false_alarms_per_year
+        self.live = self.is_node.copy()
+        self.limit = np.full(n_charts, np.inf)
+        self._share_budget()
+
+    def run(self) -> tuple[Incident, ...]:
+        """Judge every day; the incidents in order of their alarm day."""
+        first = int(self.ready.min(initial=self.score.shape[1]))
+        for day in range(self.score.shape[1]):
+            night = self._night(day)
+            self.means[:, day], self.sds[:, day] = night.mean, night.sd
+            if day >= first:
+                self._judge_charts(night, review=(day - first) % NODE_REVIEW_DAYS == 0)
+                for incident in list(self.open):
+                    self._follow(incident, night)
+                self._raise(night)
+            self._record_state(night)
+        done = self.closed + [i.closed(None, None) for i in self.open]
+        return tuple(sorted(done, key=lambda i: (i.alarm_day, i.pairs)))
+
+    def _share_budget(self) -> None:
+        """Thresholds: half the budget to pairs, half over the nodes that are told apart from them."""
+        n_nodes = int(self.live.sum())
+        pairs = PAIR_SHARE if n_nodes else 1.0
+        length = self.spans.baseline_days
+        self.limit[~self.is_node] = threshold(
+            pairs * self.rate / max(self.structure.n_pairs, 1), baseline_days=length
+        )
+        if n_nodes:
+            self.limit[self.is_node] = threshold(
+                (1.0 - pairs) * self.rate / n_nodes, baseline_days=length, one_sided=True
+            )
+
+    def _night(self, day: int) -> Night:
+        """References and deviations of one day."""
+        spans = self.spans
+        mean, sd, total, _ = references(
+            self.score,
+            self.weight,
+            self.usable,
+            day,
+            spans.guard_days,
+            spans.baseline_days,
+            MIN_REFERENCE_DAYS,
+        )
+        held = np.isfinite(self.frozen[0])
+        mean, sd, total = (np.where(held, f, v) for f, v in zip(self.frozen, (mean, sd, total), strict=True))
+        spread = sd * np.sqrt(1.0 / self.weight[:, day] + 1.0 / total)
+        deviation = np.where(day >= self.ready, (self.score[:, day] - mean) / spread, np.nan)
+        observed = np.isfinite(deviation) & (self.holder < 0)
+        self.kept[observed, day] = np.clip(deviation[observed], -MAX_KEPT_DEVIATION, MAX_KEPT_DEVIATION)
+        empty = np.empty((0, 0))
+        return Night(day, mean, sd, deviation, observed, empty, empty)
+
+    def _judge_charts(self, night: Night, *, review: bool) -> None:
+        """Every hypothesis's deviation of the day, after network control, into its chart."""
+        day, guard = night.day, self.spans.guard_days
+        begin, end = max(0, day - guard - HISTORY_DAYS), max(0, day - guard)
+        past = (self.score[:, begin:end] - night.mean[:, None]) / night.sd[:, None]
+        past *= np.sqrt(self.weight[:, begin:end])
+        known = self.usable[:, begin:end] & np.isfinite(past)
+        past = np.clip(np.where(known, past, 0.0), -MAX_HISTORY_DEVIATION, MAX_HISTORY_DEVIATION)
+        night.direction, movement = directions(
+            self.is_node, self.belongs, night.mean, night.sd, self.weight[:, day]
+        )
+        night.covariance = learnt_covariance(past, known, self.structure.related)
+        scored = np.isfinite(night.deviation)
+        add_class_movement(night.covariance, self.structure.classes, scored, movement, CLASS_VARIANCE)
+        seen = np.flatnonzero(night.observed)
+        if not len(seen):
+            return
+        inverse = np.zeros_like(night.covariance)
+        inverse[np.ix_(seen, seen)] = np.linalg.inv(night.covariance[np.ix_(seen, seen)])
+        if review:
+            self.live = self.is_node & ~duplicate_nodes(self.structure, night.direction, inverse)
+            self._share_budget()
+        size = np.abs(night.direction)
+        full = size.sum(axis=1)
+        judged = (full > 0) & (size[:, seen].sum(axis=1) >= LEAST_OBSERVED_SHARE * full)
+        judged &= self.live | ~self.is_node
+        today = np.where(night.observed, night.deviation, 0.0)
+        t, n = filtered(
+            night.direction, inverse, today, past, known.astype(np.float64), self.spans.baseline_days
+        )
+        raw = standardised(t, n, judged)
+        clean = np.clip(raw, -MAX_DEVIATION, MAX_DEVIATION)
+        self.counted[:, day] = np.where(self.spoiled[:, day], np.nan, clean)
+        z = raw / scales(self.counted, day, guard)
+        self.scaled[:, day] = np.clip(z, -MAX_DEVIATION, MAX_DEVIATION)
+        gather_all(self.scaled[:, day], np.nan_to_num(night.mean), self.statistic, self.values[:, day])
+        self.limits[:, day] = self.limit
+
+    def _raise(self, night: Night) -> None:
+        """New incidents from charts above their limit; crossings related to a young one belong to it."""
+        day = night.day
+        above = self.values[:, day] - self.limit
+        above[np.isnan(self.scaled[:, day])] = -np.inf
+        for chart in np.argsort(-above, kind="stable"):
+            if not above[chart] > 0.0:
+                break
+            pairs = self.structure.hypotheses[chart].pairs
+            young = [
+                i for i in self.open
+                if (not i.settled or day - i.alarm_day <= MERGING_DAYS) and i.reach[pairs].any()
+            ]  # fmt: skip
+            if young:
+                self.statistic[chart] = 0.0
+                continue
+            onset = onset_day(self.scaled[chart], day, int(self.ready.min()))
+            value, limit = float(self.values[chart, day]), float(self.limit[chart])
+            incident = OpenIncident(day, onset, int(chart), value, limit)
+            incident.pairs = pairs
+            incident.reach = self.touches[chart].copy()
+            self._spoil(pairs, onset, day + SETTLING_DAYS)
+            incident.first = incident.last = self._judged(incident, night)
+            lead = incident.first.lead
+            incident.before = float(night.mean[lead])
+            rows = slice(onset, day + 1)
+            incident.after = weighted_mean(self.score[lead, rows], self.weight[lead, rows])
+            self.open.append(incident)
+            self.statistic[self._reached(incident)] = 0.0
+
+    def _spoil(self, pairs: NDArray[np.int64], first: int, last: int) -> None:
+        """Keep the days of an incident out of the scales of all charts that share a class with it."""
+        charts = self.same_class[:, pairs].any(axis=1)
+        self.spoiled[charts, first : last + 1] = True
+        self.counted[charts, first : last + 1] = np.nan
+
+    def _reached(self, incident: OpenIncident) -> Flags:
+        """Charts related to an incident."""
+        return np.asarray((self.belongs & incident.reach).any(axis=1))
+
+    def _judged(self, incident: OpenIncident, night: Night) -> Judgement:
+        """Where to look first, from the days since the onset; the incident's pairs follow it."""
+        rows = slice(incident.onset_day, night.day + 1)
+        found = explain(
+            self.structure,
+            np.flatnonzero(self._reached(incident)),
+            self.kept[:, rows],
+            night.covariance,
+            night.direction,
+            night.mean,
+        )
+        chart = incident.chart if found is None else found.hypothesis
+        one = self.structure.hypotheses[chart]
+        lead = int(one.pairs[0]) if found is None else found.lead
+        incident.pairs = one.pairs
+        incident.reach |= self.touches[chart]
+        recent = slice(max(incident.onset_day, night.day - SETTLING_DAYS + 1), night.day + 1)
+        steps = lag_movement(self.structure, chart, self.lagged[:, recent], np.nan_to_num(night.mean))
+        kind = "timing" if steps else "strength"
+        return Judgement(night.day, (one.kind, one.name), tuple(map(int, one.pairs)), lead, kind, steps)
+
+    def _follow(self, incident: OpenIncident, night: Night) -> None:
+        """One more day of an open incident: judged anew, settled, returned or re-baselined."""
+        day = night.day
+        if not incident.settled:
+            incident.last = self._judged(incident, night)
+            if day - incident.alarm_day >= SETTLING_DAYS:
+                self._settle(incident, night)
+            else:
+                return
+        pairs = incident.pairs
+        mine = self.holder[pairs] >= 0
+        seen = mine & np.isfinite(night.deviation[pairs])
+        if seen.sum() >= 0.5 * len(pairs):
+            change = incident.change[seen]
+            squares = max(float(change @ change), 1e-9)
+            noise = night.covariance[np.ix_(pairs[seen], pairs[seen])]
+            information = squares**2 / max(float(change @ noise @ change), 1e-9)
+            today = np.clip(night.deviation[pairs[seen]], -MAX_HISTORY_DEVIATION, MAX_HISTORY_DEVIATION)
+            remaining = float(change @ today) / squares
+            step = (0.5 - remaining) * min(information, 1.0)
+            incident.back = max(0.0, incident.back + float(np.clip(step, -MAX_RETURN_STEP, MAX_RETURN_STEP)))
+        if incident.back > RETURN_EVIDENCE:
+            self._close(incident, day, "returned")
+        elif day - incident.alarm_day >= self.spans.rebaseline_days:
+            self._close(incident, day, "new baseline")
+
+    def _settle(self, incident: OpenIncident, night: Night) -> None:
+        """Fix the suspect: its pairs keep the reference from before the onset and stop being judged."""
+        incident.settled = True
+        pairs, onset = incident.pairs, incident.onset_day
+        self._spoil(pairs, onset, night.day)
+        before = references(
+            self.score, self.weight, self.usable, max(onset, int(self.ready.min())), self.spans.guard_days,
+            self.spans.baseline_days, MIN_REFERENCE_DAYS,
+        )  # fmt: skip
+        free = pairs[self.holder[pairs] < 0]
+        self.frozen[:, free] = before[:3, free]
+        self.holder[free] = 0
+        self.usable[pairs, onset:] = False
+        rows = self.kept[pairs, onset : night.day + 1]
+        counts = np.isfinite(rows).sum(axis=1)
+        incident.change = np.nansum(rows, axis=1) / np.maximum(counts, 1)
+        self.statistic[self._reached(incident)] = 0.0
+
+    def _close(self, incident: OpenIncident, day: int, ending: str) -> None:
+        """End an incident: its pairs are judged again, against the old reference or a new one."""
+        self.open.remove(incident)
+        self.closed.append(incident.closed(day, ending))
+        others = {int(p) for i in self.open if i.settled for p in i.pairs}
+        for p in incident.pairs:
+            if p in others:
+                continue
+            self.frozen[:, p] = np.nan
+            self.holder[p] = -1
+            begin = (
+                day - RETURN_OVERLAP_DAYS
+                if ending == "returned"
+                else incident.onset_day + REBASELINE_SKIP_DAYS
+            )
+            if ending != "returned":
+                self.usable[p, :begin] = False
+            self.usable[p, begin:] = np.isfinite(self.score[p, begin:])
+        self.statistic[self.belongs[:, incident.pairs].any(axis=1)] = 0.0
+
+    def _record_state(self, night: Night) -> None:
+        """What each pair was in at the end of the day."""
+        state = np.where(np.isfinite(night.deviation), WATCHED, NOT_SCORED)
+        state[night.day < self.ready] = LEARNING
+        for incident in self.open:
+            state[incident.pairs] = CHANGED
+        self.state[:, night.day] = state

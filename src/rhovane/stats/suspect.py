@@ -1,0 +1,167 @@
+"""Where to look first: which hypothesis explains best what has changed since the onset.
+
+Deviations since the onset are averaged and whitened with the night's covariance. A pair on its own is
+weighed by its squared filter output; a node (series or station) by the squared output along its direction,
+or by what its pairs explain together when each may have changed by its own amount; both less a price for
+what they leave free. A node needs a *second witness*: without its strongest pair it must still stand out.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rhovane.stats.network import LEAST_OBSERVED_SHARE, Hypothesis, Structure
+
+Floats = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+
+PRICE = 4.0
+"""Squared standard deviations that each free amount has to pay for."""
+PRICE_OF_GAIN = 4.0
+"""What a pair pays more where it grew stronger: faults seldom do that."""
+WITNESS = 3.0
+"""Standard deviations that a node must show without its strongest pair."""
+LEAST_AGREEING = 0.6
+"""Share of a node's pairs whose freely fitted changes must have the sign of a failure."""
+LEAST_LAG_GAIN = 0.1
+"""A best lag away from the usual counts where its mean correlation is higher by more than this."""
+LEAST_LAGGED_RELATION = 0.3
+"""Pairs with a smaller daily reference correlation say nothing about timing."""
+IMPOSSIBLE = -99.0
+
+
+@dataclass(frozen=True)
+class Explanation:
+    """The best hypothesis, its weight in squared standard deviations, and its mean daily strength."""
+
+    hypothesis: int
+    weight: float
+    lead: int
+
+
+def explain(
+    structure: Structure,
+    candidates: NDArray[np.int64],
+    deviations: Floats,
+    covariance: Floats,
+    direction: Floats,
+    mean: Floats,
+) -> Explanation | None:
+    """The hypothesis among ``candidates`` that explains best the deviations since an onset.
+
+    Parameters
+    ----------
+    deviations : ndarray of float64, shape (n_pairs, n_days)
+        Deviations of the days since the onset, NaN where not judged.
+    covariance : ndarray of float64, shape (n_pairs, n_pairs)
+        Of one day's deviations.
+    direction : ndarray of float64, shape (n_hypotheses, n_pairs)
+    mean : ndarray of float64, shape (n_pairs,)
+        Reference means (atanh).
+
+    Returns
+    -------
+    Explanation or None
+        None where nothing was observed.
+    """
+    n_days = deviations.shape[1]
+    n = np.isfinite(deviations).sum(axis=1)
+    if not n.any():
+        return None
+    fewest = max(1.0, 0.5 * n_days * min(1.0, 0.6 * n.max() / n_days))
+    seen = np.flatnonzero(n >= fewest)
+    total = np.zeros(len(n))
+    total[seen] = np.nansum(deviations[seen], axis=1) / np.sqrt(n[seen])
+    inverse = np.zeros_like(covariance)
+    inverse[np.ix_(seen, seen)] = np.linalg.inv(covariance[np.ix_(seen, seen)])
+    whitened = inverse @ total
+    observed = np.zeros(len(n), dtype=bool)
+    observed[seen] = True
+    weights = np.full(len(structure.hypotheses), IMPOSSIBLE)
+    for i in candidates:
+        one = structure.hypotheses[i]
+        if observed[one.pairs].sum() < LEAST_OBSERVED_SHARE * len(one.pairs):
+            continue
+        if one.kind == "pair":
+            if observed[one.pairs[0]]:
+                weights[i] = _pair_weight(int(one.pairs[0]), whitened, inverse, mean)
+        else:
+            weights[i] = _node_weight(one, direction[i], total, covariance, observed)
+    best = int(weights.argmax())
+    if weights[best] <= IMPOSSIBLE:
+        return None
+    pairs = structure.hypotheses[best].pairs
+    strength = np.abs(whitened[pairs]) / np.sqrt(np.maximum(np.diag(inverse)[pairs], 1e-12))
+    return Explanation(best, float(weights[best]), int(pairs[strength.argmax()]))
+
+
+def _pair_weight(pair: int, whitened: Floats, inverse: Floats, mean: Floats) -> float:
+    z = whitened[pair] / np.sqrt(inverse[pair, pair])
+    grew = (z > 0.0) != (mean[pair] < 0.0)
+    return float(z * z - PRICE - PRICE_OF_GAIN * grew)
+
+
+def _node_weight(
+    one: Hypothesis, direction: Floats, total: Floats, covariance: Floats, observed: Flags
+) -> float:
+    pairs = one.pairs[observed[one.pairs] & (direction[one.pairs] != 0.0)]
+    if len(pairs) < 2:
+        return IMPOSSIBLE
+    seen = np.flatnonzero(observed)
+    z, whitened, inverse = _along(direction, pairs, total, covariance, seen)
+    if z <= 0.0:
+        return IMPOSSIBLE
+    strongest = pairs[(whitened[pairs] ** 2 / np.diag(inverse)[pairs]).argmax()]
+    witness, _, _ = _along(direction, pairs[pairs != strongest], total, covariance, seen[seen != strongest])
+    if witness < WITNESS:
+        return IMPOSSIBLE
+    free = np.linalg.solve(inverse[np.ix_(pairs, pairs)], whitened[pairs])
+    agreeing = np.mean(np.sign(free) == np.sign(direction[pairs]))
+    together = (
+        float(whitened[pairs] @ free) - PRICE * len(pairs) if agreeing >= LEAST_AGREEING else IMPOSSIBLE
+    )
+    return max(z * z - PRICE, together)
+
+
+def _along(
+    direction: Floats, pairs: NDArray[np.int64], total: Floats, covariance: Floats, seen: NDArray[np.int64]
+) -> tuple[float, Floats, Floats]:
+    """Filter output along a direction restricted to some pairs, whitened totals and inverse covariance."""
+    inverse = np.zeros_like(covariance)
+    inverse[np.ix_(seen, seen)] = np.linalg.inv(covariance[np.ix_(seen, seen)])
+    whitened = inverse @ total
+    along = np.zeros(len(total))
+    along[pairs] = direction[pairs]
+    variance = max(float(along @ inverse @ along), 1e-12)
+    return float(along @ whitened) / float(np.sqrt(variance)), whitened, inverse
+
+
+def lag_movement(structure: Structure, hypothesis: int, lagged: Floats, mean: Floats) -> int:
+    """Steps by which the suspect's series seem late (negative: early) in recent days; 0 where not moved.
+
+    Parameters
+    ----------
+    lagged : ndarray of float64, shape (n_pairs, n_days, 5)
+        Daily innovation correlations at lags -2 to 2 around the pair's own, second series later.
+    mean : ndarray of float64, shape (n_pairs,)
+        Reference means (atanh).
+    """
+    one = structure.hypotheses[hypothesis]
+    strong = [p for p in one.pairs if abs(np.tanh(mean[p])) > LEAST_LAGGED_RELATION] or list(one.pairs)
+    profiles = []
+    for p in strong:
+        seen = lagged[p][np.isfinite(lagged[p]).all(axis=1)]
+        if not len(seen):
+            continue
+        profile = seen.mean(axis=0) * (-1.0 if mean[p] < 0.0 else 1.0)
+        first = structure.members[p][0]
+        suspect_first = one.kind != "pair" and one.name in (first, first.partition(".")[0])
+        profiles.append(profile[::-1] if suspect_first else profile)
+    if not profiles:
+        return 0
+    mixed = np.mean(profiles, axis=0)
+    middle = len(mixed) // 2
+    return int(mixed.argmax()) - middle if mixed.max() - mixed[middle] > LEAST_LAG_GAIN else 0

