@@ -62,7 +62,7 @@ def test_network_and_calendar_are_those_of_the_world(settings):
         for first, last in clocks.OTHER_DAYS
         for i in range((last - first).days + 1)
     }
-    assert settings.calendar.dates() == expected
+    assert settings.calendar.dates == expected
     assert settings.work_folder == (CONFIG.parent / "../rhovane-demo").resolve()
     assert settings.alerts.false_alarms_per_year == 4
 

@@ -107,12 +107,12 @@ def naive_scale(history: list[np.ndarray], own: int) -> float:
     mine = products(history[own], 0)
     variance = (mine.sum() + 150.0 * pooled) / (len(mine) + 150.0)
     total = 0.0
-    for lag in (1, 2, 3):
+    for lag in (1, 2, 3, 4, 5, 6):
         shared = np.concatenate([products(z, lag) for z in history])
         common = shared.sum() / max(len(shared), 1) / pooled
         mine = products(history[own], lag)
         total += (mine.sum() / variance + 400.0 * common) / (len(mine) + 400.0)
-    return math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), 1.0)))
+    return math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), 2.0)))
 
 
 def naive_evidence(z: np.ndarray, mean: float) -> np.ndarray:
@@ -122,7 +122,7 @@ def naive_evidence(z: np.ndarray, mean: float) -> np.ndarray:
         sides = []
         for sign in (1.0, -1.0):
             total = 0.0
-            for shift in (1.0, 2.0, 4.0):
+            for shift in (1.5, 2.5, 4.0):
                 total += sum(math.exp(sum(sign * shift * v - shift**2 / 2 for v in z[k:n])) for k in range(n))
             sides.append(total / 3)
         up, down = sides if mean >= 0 else sides[::-1]

@@ -173,7 +173,7 @@ def test_the_settings_hash_changes_with_any_setting_but_not_with_the_place():
 def test_calendar_spans_include_both_ends():
     raw = plain()
     raw["calendar"] = {"other_days": ["2024-12-30/2025-01-01", "2025-05-01"]}
-    assert settings_from(raw, PLACE).calendar.dates() == {
+    assert settings_from(raw, PLACE).calendar.dates == {
         dt.date(2024, 12, 30),
         dt.date(2024, 12, 31),
         dt.date(2025, 1, 1),

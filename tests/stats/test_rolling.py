@@ -208,6 +208,7 @@ GOOD = np.arange(50.0)
         ({"x": np.where(GOOD == 7, np.inf, GOOD)}, r"x holds 1 infinite values, the first in row 7"),
         ({"y": np.where(GOOD > 47, -np.inf, GOOD)}, r"y holds 2 infinite values"),
         ({"y": GOOD[:-1]}, r"x has 50 rows and y has 49"),
+        ({"x": [], "y": []}, r"x and y have no rows"),
         ({"x": GOOD.reshape(25, 2)}, r"x has 2 dimensions \(shape \(25, 2\)\)"),
         ({"x": np.array(["a"] * 50)}, r"x has type <U1"),
         ({"x": GOOD > 3}, r"x has type bool"),
@@ -242,6 +243,7 @@ def test_long_lags_strides_beyond_the_window_and_outages_equal_the_definition(me
         (900, 9, 40, (-600, -257, -256, 0, 256, 257, 513, 514), 2),
         (400, 33, 100, (0, 5), 10),
         (260, 48, 7, tuple(range(-9, 10)), 30),
+        (4100, 33, 2000, (0,), 10),
     )
     for seed, (n, window, step, lags, fewest) in enumerate(cases):
         x, y = hard_pair(seed, n=n)

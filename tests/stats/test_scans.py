@@ -178,3 +178,13 @@ def test_limits_of_the_scan_are_refused_in_words():
         window_scan(x, x, window=40, lags=(0,), min_effective=3)
     with pytest.raises(ValueError, match=r"lag 40 reaches beyond"):
         window_scan(x, x, window=40, lags=(40,))
+
+
+def test_lag_zero_serves_all_lags_even_where_another_lag_has_more_pairs():
+    x, y = slow_pair(14, 240)
+    x[100:110] = np.nan
+    y[102:112] = np.nan
+    scan = window_scan(x, y, window=200, lags=(2, 0))
+    assert scan.n_pairs[0] > scan.n_pairs[1]
+    assert scan.n_effective[1] == rank_correlation_test(x[-200:], y[-200:]).n_effective
+    assert abs(scan.n_effective[0] / scan.n_pairs[0] - scan.n_effective[1] / scan.n_pairs[1]) < 1e-12

@@ -215,5 +215,15 @@ def test_unrelated_slow_series_are_called_at_about_the_stated_rate():
 def test_interval_accepts_ranks_computed_before():
     x, y = slow_pair(3, rho=0.4)
     ranks = joint_ranks(dense_ranks(x)[0], dense_ranks(y)[0])
-    found = rank_interval(ranks, autocorrelation(ranks), 2.0, "spearman", math.nan)
+    found = rank_interval(ranks, autocorrelation(ranks), 2.0)
     assert found.low < ranks.rho < found.high
+
+
+def test_interval_equals_its_definition():
+    for seed, rho in enumerate((0.0, 0.6)):
+        x, y = slow_pair(50 + seed, n=88, rho=rho, phi=0.5, rounding=0 if seed else 2)
+        found = rank_correlation_test(x, y)
+        low, high = naive.rotated_rank_interval(x.tolist(), y.tolist(), student.ppf)
+        # The definition takes influences by difference quotients, good to five digits.
+        assert abs(found.low - low) < 1e-4, f"seed {seed}"
+        assert abs(found.high - high) < 1e-4, f"seed {seed}"

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import datetime as dt
 import shutil
+import subprocess
+import sys
 import time
 import tomllib
 from collections.abc import Callable
@@ -12,9 +14,10 @@ from pathlib import Path
 
 from rhovane.cli.wording import alert_table, caution_lines
 from rhovane.model import RhovaneError
-from rhovane.pipeline import walk_nights
+from rhovane.pipeline import nights_between, walk_nights
 from rhovane.review import AlertEntry, alert_entries
 from rhovane.settings import Settings, load_settings
+from rhovane.stats.compile_ahead import PARTS
 from rhovane.store import Store
 from rhovane_demo import settings_text
 from rhovane_demo.feed import deliveries, write_files
@@ -22,6 +25,7 @@ from rhovane_demo.planted import BY_ID, TABLE, answers
 from rhovane_demo.world import make_world
 
 NIGHT_HOUR = dt.time(3, 40)
+ARCHIVE_DAYS = 90  # days taken in at once at the start: a reference is learnt on them, no alert is possible
 
 
 @dataclass
@@ -86,7 +90,8 @@ class Demonstration:
         return (
             f"Demo: {self.settings.network.name}, seed {self.seed}, {what}.\n"
             f"Working folder: {self.folder}\n"
-            "The first run compiles the statistics once (some seconds)."
+            f"The first {ARCHIVE_DAYS} days come as an archive, then night by night. The first run compiles the "
+            "statistics once (some seconds)."
         )
 
     def walk(
@@ -97,32 +102,43 @@ class Demonstration:
         tell: Callable[[dt.date, int, int], None],
         now: Callable[[], dt.datetime],
     ) -> Walked:
-        """Deliver each day's files and run its night, oldest first; goes on where an earlier demo stopped."""
+        """Deliver each day's files and run its night, oldest first; goes on where an earlier demo stopped.
+
+        The first days, which no night could judge yet, arrive together as the network's archive.
+        """
         started = time.perf_counter()
+        compiling = [
+            subprocess.Popen([sys.executable, "-m", "rhovane.stats.compile_ahead", part]) for part in PARTS
+        ]
         arriving = {d.night: d.files for d in deliveries(make_world(seed=self.seed, events=self.events))}
         first, last = min(arriving), max(arriving)
         if nights is not None:
             last = min(last, first + dt.timedelta(days=nights - 1))
-        total = (last - first).days + 1
+        archive = min(last, first + dt.timedelta(days=ARCHIVE_DAYS - 1))
+        total = (last - archive).days + 1
         zone = dt.timezone(self.settings.network.standard_offset)
 
         def deliver(day: dt.date) -> None:
-            write_files(arriving[day], self.folder / "feed")
+            days = nights_between(first, day) if day == archive else [day]
+            for one in days:
+                write_files(arriving[one], self.folder / "feed")
 
         def moment(day: dt.date) -> dt.datetime:
             run_at = dt.datetime.combine(day + dt.timedelta(days=1), NIGHT_HOUR, zone)
             return run_at.astimezone(dt.UTC)
 
+        for process in compiling:
+            process.wait()
         walked = Walked()
         for report in walk_nights(
-            self.settings, store, first, last, moment_of=moment, before_each=deliver
+            self.settings, store, archive, last, moment_of=moment, before_each=deliver
         ):
             walked.nights += 1
             walked.incomplete += report.outcome != "complete"
             walked.new += report.counts.get("readings new", 0)
             walked.revised += report.counts.get("readings revised", 0)
             walked.rejected += report.counts.get("rows rejected", 0)
-            tell(report.as_of, (report.as_of - first).days + 1, total)
+            tell(report.as_of, (report.as_of - archive).days + 1, total)
         walked.seconds = time.perf_counter() - started
         return walked
 

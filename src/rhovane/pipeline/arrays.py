@@ -23,6 +23,12 @@ class PairArrays:
     controls: NDArray[np.float64] | None
     mask: PairMask
 
+    def rows(self, wanted: slice) -> PairArrays:
+        """Some of the rows."""
+        mask = PairMask(self.mask.kept[wanted], self.mask.unknown[wanted])
+        controls = None if self.controls is None else self.controls[wanted]
+        return PairArrays(self.x[wanted], self.y[wanted], controls, mask)
+
 
 def load_grid(
     settings: Settings,
@@ -55,7 +61,7 @@ def load_grid(
 def pair_arrays(settings: Settings, recipe: PairSettings, grid: Grid) -> PairArrays:
     """Members and controls of a pair, masked by its recipe."""
     mask = kept_hours(
-        recipe, grid, civil_zone=settings.network.civil_zone, other_days=settings.calendar.dates()
+        recipe, grid, civil_zone=settings.network.civil_zone, other_days=settings.calendar.dates
     )
     x, y = grid.column(recipe.first), grid.column(recipe.second)
     controls = None

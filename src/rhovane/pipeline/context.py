@@ -8,9 +8,12 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from rhovane.model import IngestOutcome, Pair
-from rhovane.prepare import Days, days_of
+from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
+from rhovane.prepare import Days, Grid, days_of
 from rhovane.settings import PairSettings, Settings
-from rhovane.store import Store
+from rhovane.stats.daily_scores import HISTORY_DAYS
+from rhovane.stats.watch import WatchMemory
+from rhovane.store import NightRecord, Store
 
 HOUR_S = 3600
 
@@ -57,7 +60,10 @@ class Night:
     """One execution of the steps. Steps read what earlier steps left here and add their own.
 
     ``as_of`` is the last day the night covers (standard time): nothing later is used. ``now`` is the
-    moment it runs (aware, UTC); only entry points read the clock.
+    moment it runs (aware, UTC); only entry points read the clock. ``previous`` is the newest night that
+    finished before; ``checkpoint_ingest`` whether reading the feed folds the write-ahead log into the
+    file by itself (a whole night does so at its end, where ``checkpoint_night`` says so).
+    ``memory`` lets the watch go on from the night before in the same process; the result is the same.
     """
 
     settings: Settings
@@ -67,16 +73,44 @@ class Night:
     id: int = 0
     progress: Callable[[str], None] = lambda _text: None
     recompute_from: dt.date | None = None
+    previous: NightRecord | None = None
+    checkpoint_ingest: bool = True
+    checkpoint_night: bool = True
+    memory: WatchMemory | None = None
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
     watched: list[WatchedPair] = field(default_factory=list)
     counts: dict[str, Any] = field(default_factory=dict)
+    _grid: Grid | None = None
+    _arrays: dict[str, PairArrays] = field(default_factory=dict)
 
     @property
     def days(self) -> Days:
         """The network's days."""
         return days_of(self.settings.network.standard_offset)
+
+    def grid(self) -> Grid:
+        """Observations of all stale pairs, from the earliest reading that any of their results rests on.
+
+        Loaded once a night, for windows and evidence alike.
+        """
+        if self._grid is None:
+            settings = self.settings
+            stale = [w for w in self.watched if w.stale_from is not None]
+            lags = [abs(lag) for w in stale for lag in settings.lags_of(w.recipe)]
+            reach = max(HISTORY_DAYS, (settings.correlation.window_hours + max(lags)) // 24 + 1)
+            first = min(w.stale_from for w in stale if w.stale_from) - dt.timedelta(days=reach)
+            keys = {k for w in stale for k in settings.series_of(w.recipe)}
+            self._grid = load_grid(settings, self.store, keys, first, self.as_of)
+        return self._grid
+
+    def arrays(self, watched: WatchedPair) -> PairArrays:
+        """A pair's members and controls on the night's grid, masked by its recipe; made once a night."""
+        key = watched.pair.key
+        if key not in self._arrays:
+            self._arrays[key] = pair_arrays(self.settings, watched.recipe, self.grid())
+        return self._arrays[key]
 
     def failed(self, step: str, part: str, reason: str) -> None:
         """Record that one part of a step failed; the rest goes on."""

@@ -4,30 +4,28 @@ from __future__ import annotations
 
 import datetime as dt
 from collections.abc import Mapping
+from concurrent.futures import ThreadPoolExecutor
 
 import numpy as np
 from numpy.typing import NDArray
 
-from rhovane.pipeline.arrays import load_grid, pair_arrays
 from rhovane.pipeline.context import Night, WatchedPair
 from rhovane.prepare import Grid
-from rhovane.stats.daily_scores import HISTORY_DAYS, DailyScores, lookback_days, pair_scores
+from rhovane.stats.compiled import available_threads
+from rhovane.stats.daily_scores import DailyScores, lookback_days, pair_scores
 from rhovane.stats.hourly_scores import SeriesScores, series_scores
 from rhovane.store import LATER_COLUMNS
 
 STEP = "evidence"
-DAY = dt.timedelta(days=1)
 
 
 def judge_days(night: Night) -> str:
     """Daily scores of every stale pair and day; written as evidence."""
-    settings = night.settings
     stale = [w for w in night.watched if w.stale_from is not None]
     if not stale:
         return "nothing to judge"
-    first = min(w.stale_from for w in stale if w.stale_from) - HISTORY_DAYS * DAY
-    keys = {k for w in stale for k in settings.series_of(w.recipe)}
-    grid = load_grid(settings, night.store, keys, first, night.as_of)
+    grid = night.grid()
+    first = night.days.day_of(grid.start)
     last = (night.as_of - first).days
     shared = _series_scores(stale, grid, first, last)
     columns: dict[str, list[NDArray[np.generic]]] = {}
@@ -36,7 +34,7 @@ def judge_days(night: Night) -> str:
         assert watched.stale_from is not None
         days = range((watched.stale_from - first).days, last + 1)
         try:
-            scores = _pair_days(night, watched, grid, shared, days)
+            scores = _pair_days(night, watched, shared, days)
         except ValueError as error:
             night.pair_failed(STEP, watched, str(error))
             continue
@@ -61,14 +59,20 @@ def _series_scores(
         before = lookback_days(0, controls=bool(recipe.adjusted_for))
         begin = min(begin, max(0, (watched.stale_from - first).days - before))
         keys.update((recipe.first, recipe.second, *recipe.adjusted_for))
-    return {key: series_scores(grid.column(key), range(begin, last + 1)) for key in sorted(keys)}
+    names = sorted(keys)
+
+    def score(key: str) -> SeriesScores:
+        return series_scores(grid.column(key), range(begin, last + 1))
+
+    with ThreadPoolExecutor(max_workers=min(len(names), available_threads())) as pool:
+        return dict(zip(names, pool.map(score, names), strict=True))
 
 
 def _pair_days(
-    night: Night, watched: WatchedPair, grid: Grid, shared: Mapping[str, SeriesScores], days: range
+    night: Night, watched: WatchedPair, shared: Mapping[str, SeriesScores], days: range
 ) -> DailyScores:
     recipe = watched.recipe
-    mask = pair_arrays(night.settings, recipe, grid).mask
+    mask = night.arrays(watched).mask
     return pair_scores(
         shared[recipe.first],
         shared[recipe.second],
@@ -88,5 +92,7 @@ def _columns(watched: WatchedPair, scores: DailyScores, first: dt.date) -> dict[
         "innovation_hours": scores.innovation_hours,
         "shape": scores.shape,
         "shape_hours": scores.shape_hours,
+        "course": np.full(n, np.nan) if scores.course is None else scores.course,
+        "course_hours": np.zeros(n) if scores.course_hours is None else scores.course_hours,
         **{name: scores.lagged[:, i] for i, name in enumerate(LATER_COLUMNS)},
     }

@@ -67,7 +67,7 @@ def append(night: Night, parsed: Iterable[ParsedFile]) -> None:
 def _append_or_note(night: Night, files: list[ParsedFile]) -> list[IngestOutcome]:
     """Append all files at once; if one of them is refused, one by one, so that the others go in."""
     try:
-        return night.store.append_files(files, now=night.now)
+        return night.store.append_files(files, now=night.now, checkpoint=night.checkpoint_ingest)
     except StoreDamaged:
         raise
     except RhovaneError as error:

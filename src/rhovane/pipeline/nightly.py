@@ -22,6 +22,7 @@ from rhovane.pipeline.raising import raise_alerts
 from rhovane.pipeline.stale import find_stale
 from rhovane.pipeline.windows import compute_windows
 from rhovane.settings import Settings
+from rhovane.stats.watch import WatchMemory
 from rhovane.store import Store
 
 Step = tuple[str, Callable[[Night], str]]
@@ -68,6 +69,8 @@ def run_night(
     steps: tuple[Step, ...] = STEPS,
     kind: str = "nightly",
     recompute_from: dt.date | None = None,
+    checkpoint: bool = True,
+    memory: WatchMemory | None = None,
 ) -> NightReport:
     """Run the steps of one night and write it to the ledger.
 
@@ -85,6 +88,10 @@ def run_night(
         The steps, in order; the default is the whole night.
     recompute_from : date, optional
         Treat every pair as stale from this day on, whatever the ledger says.
+    checkpoint : bool
+        Fold the write-ahead log into the store file at the end; False only for one of many nights in a row.
+    memory : WatchMemory, optional
+        Handed from night to night of one process; saves replaying the watch from the beginning.
 
     Returns
     -------
@@ -93,7 +100,18 @@ def run_night(
         next night); or "failed" when a step as a whole did (nothing it would have computed is kept).
     """
     store.ensure_series(settings.domain_series())
-    night = Night(settings, store, as_of, now, progress=progress, recompute_from=recompute_from)
+    night = Night(
+        settings,
+        store,
+        as_of,
+        now,
+        progress=progress,
+        recompute_from=recompute_from,
+        previous=store.last_finished_night(),
+        checkpoint_ingest=False,
+        checkpoint_night=checkpoint,
+        memory=memory,
+    )
     night.id = store.begin_night(
         kind=kind,
         as_of=as_of,
@@ -135,4 +153,5 @@ def _finish(night: Night, outcome: Literal["complete", "incomplete", "failed"], 
         outcome=outcome,
         steps=[o.as_json() for o in outcomes],
         counts=night.counts,
+        checkpoint=night.checkpoint_night,
     )

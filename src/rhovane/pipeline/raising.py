@@ -18,7 +18,7 @@ from rhovane.pipeline.context import Night, WatchedPair
 from rhovane.review import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import DailyScores
-from rhovane.stats.watch import Incident, Watch, watch
+from rhovane.stats.watch import Incident, Watch, WatchMemory, watch
 from rhovane.store import LATER_COLUMNS, Store
 
 STEP = "alerts"
@@ -29,14 +29,14 @@ FEWEST_PAIRS = 8  # hours; fewest pairs for the correlation after an onset that 
 
 def raise_alerts(night: Night) -> str:
     """Raise what is new, note what ended, and mark what revised readings no longer show."""
-    newest = night.store.last_finished_night()
+    newest = night.previous
     if newest is not None and newest.as_of > night.as_of:
         return f"the night of {newest.as_of} has judged later days; the log is left as it is"
     judged = [w for w in night.watched if w.pair.key not in night.counts.get("left", {})]
     first_day, scores = stored_scores(night.store, judged, night.as_of)
     if first_day is None:
         return "no evidence yet"
-    seen = replay(night.settings, judged, scores)
+    seen = replay(night.settings, judged, scores, night.memory)
     found = [_found(i, judged, first_day) for i in seen.incidents]
     alerts, events = logged_alerts(night.store), logged_events(night.store)
     change = reconcile(
@@ -92,23 +92,38 @@ def stored_scores(
                 column("shape", np.nan),
                 column("shape_hours", 0.0),
                 np.column_stack([column(name, np.nan) for name in LATER_COLUMNS]),
+                course=column("course", np.nan),
+                course_hours=column("course_hours", 0.0),
             )
         )
     return first.astype(object), scores
 
 
-def replay(settings: Settings, watched: Sequence[WatchedPair], scores: Sequence[DailyScores]) -> Watch:
+def replay(
+    settings: Settings,
+    watched: Sequence[WatchedPair],
+    scores: Sequence[DailyScores],
+    memory: WatchMemory | None = None,
+) -> Watch:
     """The change watch over the daily scores of all pairs, with the network's settings."""
     limits = settings.alerts
     return watch(
         scores,
         false_alarms_per_year=limits.false_alarms_per_year,
         members=[(w.pair.first, w.pair.second) for w in watched],
+        classes=[_class_of(w) for w in watched],
         choice=[w.recipe.score for w in watched],
         baseline_days=limits.baseline_days,
         guard_days=limits.guard_days,
         rebaseline_days=limits.rebaseline_days,
+        memory=memory,
     )
+
+
+def _class_of(watched: WatchedPair) -> str:
+    """Pairs of one class are moved together by weather and season: the same quantities and recipe."""
+    quantities = sorted(key.partition(".")[2] for key in (watched.pair.first, watched.pair.second))
+    return f"{'~'.join(quantities)}[{watched.recipe.variant}]"
 
 
 def _found(incident: Incident, watched: Sequence[WatchedPair], first_day: dt.date) -> Found:

@@ -18,11 +18,14 @@ DAY = dt.timedelta(days=1)
 def find_stale(night: Night) -> str:
     """Fill ``night.watched``: every pair with its first stale day."""
     settings, store, days = night.settings, night.store, night.days
-    last = store.last_finished_night()
+    last = night.previous
     recipes = {} if last is None else dict(last.counts.get("recipes", {}))
     left = {} if last is None else dict(last.counts.get("left", {}))
     changed = store.changed_since(0 if last is None else last.data_version)
-    first_hours = store.changed_since(0)
+    known = {} if last is None else last.counts.get("first_hours", {})
+    first_hours = {k: dt.datetime.fromisoformat(v) for k, v in known.items()}
+    for key, moment in changed.items():
+        first_hours[key] = min(moment, first_hours.get(key, moment))
     night.watched = []
     for recipe in settings.pair:
         pair = settings.pair_of(recipe)
@@ -44,6 +47,7 @@ def find_stale(night: Night) -> str:
         since = max(since, begin)
         night.watched.append(WatchedPair(recipe, pair, since if since <= night.as_of else None))
     stale = [w for w in night.watched if w.stale_from is not None]
+    night.counts["first_hours"] = {k: v.isoformat() for k, v in sorted(first_hours.items())}
     night.counts["recipes"] = {w.pair.key: w.pair.recipe_hash for w in night.watched}
     oldest = min((w.stale_from for w in stale if w.stale_from), default=None)
     return f"{len(stale)} of {len(night.watched)} pairs" + (f", from {oldest}" if oldest else "")

@@ -7,9 +7,11 @@ from collections.abc import Callable, Iterator
 
 from rhovane.pipeline.nightly import NightReport, run_night
 from rhovane.settings import Settings
+from rhovane.stats.watch import WatchMemory
 from rhovane.store import Store
 
 DAY = dt.timedelta(days=1)
+NIGHTS_A_CHECKPOINT = 10  # nights of a walk after which the write-ahead log is folded into the store file
 
 
 def nights_between(first: dt.date, last: dt.date) -> Iterator[dt.date]:
@@ -37,8 +39,10 @@ def walk_nights(
         Called with the date before its night, to deliver what arrived that day.
     """
     done = store.last_finished_night()
+    memory = WatchMemory()
     for day in nights_between(first, last):
         if done is not None and day <= done.as_of:
             continue
         before_each(day)
-        yield run_night(settings, store, as_of=day, now=moment_of(day))
+        fold = day == last or day.toordinal() % NIGHTS_A_CHECKPOINT == 0
+        yield run_night(settings, store, as_of=day, now=moment_of(day), checkpoint=fold, memory=memory)

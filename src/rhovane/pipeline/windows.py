@@ -2,118 +2,105 @@
 
 from __future__ import annotations
 
-import datetime as dt
-import math
-from collections import defaultdict
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from rhovane import stats
-from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
+from rhovane.pipeline.arrays import PairArrays
 from rhovane.pipeline.context import HOUR_S, Night, WatchedPair
 from rhovane.prepare import Grid
 from rhovane.settings import CorrelationSettings
+from rhovane.stats.partial import partial_window
+from rhovane.stats.window_table import WindowTable, window_table
 
 STEP = "windows"
-DAY = dt.timedelta(days=1)
 FEWEST_PAIRS = 24  # hours; below one day's worth a window of a masked pair is not computed
 
 
 def compute_windows(night: Night) -> str:
     """Windows that end with each stale day, for every pair and lag."""
-    settings = night.settings
     stale = [w for w in night.watched if w.stale_from is not None]
     if not stale:
         return "nothing to compute"
-    reach = settings.correlation.window_hours + max(
-        max(abs(lag) for lag in settings.lags_of(w.recipe)) for w in stale
-    )
-    first = min(w.stale_from for w in stale if w.stale_from) - (reach // 24 + 1) * DAY
-    keys = {k for w in stale for k in settings.series_of(w.recipe)}
-    grid = load_grid(settings, night.store, keys, first, night.as_of)
-    columns: dict[str, list[Any]] = defaultdict(list)
+    grid = night.grid()
+    parts: list[dict[str, NDArray[Any]]] = []
     for watched in stale:
         try:
-            arrays = pair_arrays(settings, watched.recipe, grid)
-            _pair_windows(night, watched, grid, arrays, columns)
+            parts.append(pair_windows(night, watched, grid))
         except ValueError as error:
             night.pair_failed(STEP, watched, str(error))
-    n_rows = len(columns["pair_key"])
-    if n_rows:
-        night.store.write_windows(night.id, _as_arrays(columns))
-    return f"{n_rows} correlations in {len(stale)} pairs"
+    if not parts:
+        return f"0 correlations in {len(stale)} pairs"
+    columns = {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
+    night.store.write_windows(night.id, columns)
+    return f"{len(columns['lag'])} correlations in {len(parts)} pairs"
 
 
-def _pair_windows(
-    night: Night,
-    watched: WatchedPair,
-    grid: Grid,
-    arrays: PairArrays,
-    columns: dict[str, list[Any]],
-) -> None:
+def pair_windows(night: Night, watched: WatchedPair, grid: Grid) -> dict[str, NDArray[Any]]:
+    """The correlations of one pair in the windows that end with its stale days, as columns for the store.
+
+    ``coverage`` is the number of joint observations over the hours that the recipe keeps in the window; a
+    window is computed when it reaches ``min_coverage`` of them and at least a day's worth.
+    """
     assert watched.stale_from is not None
     correlation = night.settings.correlation
-    day = watched.stale_from
-    while day <= night.as_of:
-        last = grid.row_of(night.days.last_hour_of(day))
-        lags = tuple(night.settings.lags_of(watched.recipe))
-        rows = window_rows(arrays, last, lags=lags, correlation=correlation)
-        end = grid.start + HOUR_S * last
-        for row in rows:
-            columns["pair_key"].append(watched.pair.key)
-            columns["window_end"].append(end)
-            for name, value in row.items():
-                columns[name].append(value)
-        day += DAY
-
-
-def window_rows(
-    arrays: PairArrays, last: int, *, lags: tuple[int, ...], correlation: CorrelationSettings
-) -> list[dict[str, Any]]:
-    """The correlation in the window that ends with row ``last``, at every lag, as rows for the store.
-
-    ``coverage`` is the number of joint observations over the hours that the recipe keeps in the window;
-    a window is computed when it reaches ``min_coverage`` of them and at least a day's worth.
-    """
+    arrays = night.arrays(watched)
     window = correlation.window_hours
-    reach = max(abs(lag) for lag in lags)
-    begin = max(0, last + 1 - window - reach)
-    x, y = arrays.x[begin : last + 1], arrays.y[begin : last + 1]
-    kept = int(np.count_nonzero(arrays.mask.kept[max(0, last + 1 - window) : last + 1]))
-    min_pairs = min(window, max(FEWEST_PAIRS, math.ceil(correlation.min_coverage * kept)))
-    fewest = correlation.min_effective
-    if arrays.controls is not None:
-        scan = stats.partial_window(
-            x, y, arrays.controls[begin : last + 1], window=window, lags=lags, min_pairs=min_pairs, min_effective=fewest
-        )
-    else:
-        scan = stats.window_scan(
-            x, y, window=window, lags=lags, method=correlation.statistic, min_pairs=min_pairs, min_effective=fewest
-        )
-    return [
-        {
-            "lag": int(lag),
-            "statistic": scan.statistic[i],
-            "n_pairs": int(scan.n_pairs[i]),
-            "coverage": scan.n_pairs[i] / kept if kept else 0.0,
-            "n_effective": scan.n_effective[i],
-            "p_value": scan.p_value[i],
-            "low": scan.low[i],
-            "high": scan.high[i],
-            "reason": scan.reason[i],
-        }
-        for i, lag in enumerate(scan.lags)
-    ]
-
-
-def _as_arrays(columns: dict[str, list[Any]]) -> dict[str, NDArray[Any]]:
-    text = {"pair_key", "reason"}
-    whole = {"window_end", "lag", "n_pairs"}
-    return {
-        name: np.array(
-            values, dtype=object if name in text else np.int64 if name in whole else np.float64
-        )
-        for name, values in columns.items()
+    n_days = (night.as_of - watched.stale_from).days + 1
+    end = grid.row_of(night.days.last_hour_of(watched.stale_from)) + 24 * np.arange(n_days)
+    kept_before = np.concatenate(([0], np.cumsum(arrays.mask.kept)))
+    kept = kept_before[end + 1] - kept_before[np.maximum(end + 1 - window, 0)]
+    min_pairs = np.clip(np.ceil(correlation.min_coverage * kept).astype(np.int64), FEWEST_PAIRS, window)
+    lags = np.array(night.settings.lags_of(watched.recipe))
+    needed = slice(max(0, int(end[0]) + 1 - window - int(np.abs(lags).max())), int(end[-1]) + 1)
+    table = _table(arrays.rows(needed), window, end - needed.start, min_pairs, lags, correlation)
+    n_lags = len(lags)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        coverage = np.where(kept[:, None] > 0, table.n_pairs / kept[:, None], 0.0)
+    columns = {
+        "pair_key": np.full(n_days * n_lags, watched.pair.key, dtype=object),
+        "window_end": np.repeat(grid.start + HOUR_S * end, n_lags),
+        "lag": np.tile(lags, n_days),
+        "coverage": coverage.ravel(),
+        "reason": np.array([reason for row in table.reason for reason in row], dtype=object),
     }
+    numbers = ("statistic", "n_pairs", "n_effective", "p_value", "low", "high")
+    return columns | {name: getattr(table, name).ravel() for name in numbers}
+
+
+def _table(
+    arrays: PairArrays,
+    window: int,
+    end: NDArray[np.int64],
+    min_pairs: NDArray[np.int64],
+    lags: NDArray[np.int64],
+    correlation: CorrelationSettings,
+) -> WindowTable:
+    """The pair's windows: plain, or with its controls taken out (then one scan a window)."""
+    if arrays.controls is None:
+        return window_table(
+            arrays.x,
+            arrays.y,
+            window=window,
+            end=end,
+            min_pairs=min_pairs,
+            lags=lags,
+            method=correlation.statistic,
+            min_effective=correlation.min_effective,
+        )
+    scans = [
+        partial_window(
+            arrays.x[: last + 1],
+            arrays.y[: last + 1],
+            arrays.controls[: last + 1],
+            window=window,
+            lags=lags.tolist(),
+            min_pairs=int(fewest),
+            min_effective=correlation.min_effective,
+        )
+        for last, fewest in zip(end.tolist(), min_pairs.tolist(), strict=True)
+    ]
+    names = ("statistic", "n_pairs", "n_effective", "p_value", "low", "high")
+    stacked = {name: np.stack([getattr(scan, name) for scan in scans]) for name in names}
+    return WindowTable(end=end, lags=lags, reason=[list(scan.reason) for scan in scans], **stacked)

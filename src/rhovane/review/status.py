@@ -103,7 +103,7 @@ def network_status(
             "as_of": newest.as_of.isoformat(),
             "outcome": "interrupted" if newest.outcome == "running" else newest.outcome,
             "steps": newest.steps,
-            "counts": {k: v for k, v in newest.counts.items() if k not in ("recipes", "left")},
+            "counts": {k: v for k, v in newest.counts.items() if k not in ("recipes", "left", "first_hours")},
         },
         missed,
         counts_by_state(entries),

@@ -79,6 +79,7 @@ class CalendarSettings(Section):
                 raise ValueError(f"the span {text!r} ends before it begins")
         return value
 
+    @cached_property
     def dates(self) -> frozenset[dt.date]:
         """All other days as dates."""
         days: set[dt.date] = set()
@@ -234,8 +235,10 @@ class PairSettings(Section):
     )
     working_days_only: bool = False
     wet_only: bool = Field(False, description="Keep only hours in which at least one side is above zero.")
-    score: Literal["auto", "innovation", "day shape"] = Field(
-        "auto", description="Daily evidence: changes from hour to hour, the shape of the day, or chosen on the baseline."
+    score: Literal["auto", "innovation", "day shape", "day course"] = Field(
+        "auto",
+        description="Daily evidence: changes from hour to hour, the day's departure from its usual shape, its course "
+        "with the daily cycle kept, or chosen on the baseline.",
     )
 
     @property

@@ -11,14 +11,19 @@ from typing import Any
 
 # Public name -> module of this package that holds it.
 _HOME = {
+    "ConstancyTest": "constancy",
     "CorrelationNetwork": "correlation_network",
     "LagScan": "scan_lags",
+    "LagTrack": "lag_track",
     "RankCorrelationTest": "rank_test",
     "RollingCorrelation": "rolling",
     "WindComponents": "wind",
     "WindowScan": "scan_window",
+    "WindowTable": "window_table",
+    "constancy_test": "constancy",
     "correlate_network": "correlation_network",
     "false_discovery": "multiplicity",
+    "innovations": "lag_track",
     "lag_scan": "scan_lags",
     "monitor_network": "monitor",
     "monitor_pair": "monitor",
@@ -26,9 +31,11 @@ _HOME = {
     "rank_correlation_test": "rank_test",
     "remove_cycle": "cycle",
     "rolling_rank_correlation": "rolling",
+    "track_lag": "lag_track",
     "wind_along": "wind",
     "wind_components": "wind",
     "window_scan": "scan_window",
+    "window_table": "window_table",
 }
 
 __all__ = sorted(_HOME)

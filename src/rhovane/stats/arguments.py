@@ -39,7 +39,8 @@ def as_series(values: ArrayLike, name: str) -> Floats:
     ValueError
         Not numeric, not one-dimensional, infinite values, or integers too large to be told apart.
     """
-    if isinstance(values, np.ma.MaskedArray):
+    # Asking for "mask" first spares everyone else the loading of numpy.ma.
+    if hasattr(values, "mask") and isinstance(values, np.ma.MaskedArray):
         values = np.ma.filled(values.astype(np.float64), np.nan)
     found = np.asarray(values)
     if found.dtype.kind == "O":
@@ -76,6 +77,8 @@ def as_series(values: ArrayLike, name: str) -> Floats:
 def as_pair(x: ArrayLike, y: ArrayLike) -> tuple[Floats, Floats]:
     """Return two series of equal length; see :func:`as_series`."""
     first, second = as_series(x, "x"), as_series(y, "y")
+    if len(first) == 0 == len(second):
+        raise ValueError("x and y have no rows; at least one is needed; check what was selected.")
     if len(first) != len(second):
         raise ValueError(
             f"x has {len(first)} rows and y has {len(second)}; both must share one grid; "

@@ -3,8 +3,8 @@
 *Reference*: the last 90 valid days up to 14 days before today, weighted by joint hours. *Deviation*:
 today's distance from it as a t statistic, made normal, divided by the scale that the pair's own past
 deviations had out of sample, kept within ±3.5. *Evidence*: a Shiryaev-Roberts statistic, averaged over
-shifts of 1, 2 and 4 standard deviations and over the two directions; its logarithm is compared with a
-threshold that depends on nothing but the wanted number of false alarms.
+shifts of several sizes and over the two directions; its logarithm is compared with a threshold that
+depends on nothing but the wanted number of false alarms.
 
 References
 ----------
@@ -24,8 +24,11 @@ from rhovane.stats.compiled import compiled
 
 Floats = NDArray[np.float64]
 
-SHIFTS = np.array([1.0, 2.0, 4.0])
-"""Shifts of the mean, in standard deviations, that the evidence is averaged over."""
+SHIFTS = np.array([1.5, 2.5, 4.0])
+"""Shifts of a pair's mean, in standard deviations, that its evidence is averaged over: sharp changes, not
+the slow turning of a season."""
+NODE_SHIFTS = np.array([1.0, 2.0, 4.0])
+"""The same for a series or station: seasons leave these alone, drifting instruments do not."""
 LOSS_SHARE = 0.65
 """Share of the evidence given to a relationship growing weaker; the rest to its growing stronger."""
 NO_RELATION = 0.1
@@ -42,11 +45,11 @@ SCALE_PRIOR_DAYS = 150.0
 """Weight, in days, of the network's pooled variance in a pair's own."""
 POOL_PRIOR_DAYS = 300.0
 """Weight, in days, of variance 1 in the variance pooled over all charts."""
-SCALE_LAGS = 10
-"""Days over which autocorrelation of deviations widens their scale."""
+SCALE_LAGS = 6
+"""Days over which autocorrelation of deviations widens their scale: most of a week, as weather lasts."""
 AUTOCORRELATION_PRIOR_DAYS = 400.0
 """Weight, in days, of the network's pooled autocorrelation in a pair's own."""
-MAX_AUTOCORRELATION_SUM = 3.0
+MAX_AUTOCORRELATION_SUM = 2.0
 """The sum of autocorrelations counts from 0 to this."""
 LARGEST_STATISTIC = 1e12
 """The Shiryaev-Roberts statistic stops here; far above any threshold."""
@@ -54,16 +57,16 @@ LARGEST_STATISTIC = 1e12
 
 @compiled
 def normal_from_t(t: float, df: float) -> float:
-    """Normal deviate with the tail probability of a t statistic, after Wallace (1959); within 0.003 from df = 19."""
+    """Normal deviate with the tail probability of a t statistic, after Wallace (1959); within 0.005 from df = 19 for |t| ≤ 6."""
     size = (8.0 * df + 1.0) / (8.0 * df + 3.0) * math.sqrt(df * math.log1p(t * t / df))
     return size if t > 0.0 else -size
 
 
 @compiled
-def gather(statistic: Floats, z: float) -> None:
+def gather(statistic: Floats, z: float, shifts: Floats) -> None:
     """Add one day's deviation to the Shiryaev-Roberts statistics, shape (2, n_shifts): up, down; in place."""
-    for k in range(len(SHIFTS)):
-        shift = SHIFTS[k]
+    for k in range(len(shifts)):
+        shift = shifts[k]
         up = (1.0 + statistic[0, k]) * math.exp(shift * z - shift * shift / 2.0)
         down = (1.0 + statistic[1, k]) * math.exp(-shift * z - shift * shift / 2.0)
         statistic[0, k] = min(up, LARGEST_STATISTIC)
@@ -91,11 +94,29 @@ def standardised(t: Floats, n: NDArray[np.int64], judged: NDArray[np.bool_]) -> 
 
 
 @compiled
+def scale_from(sums: Floats, counts: Floats, pool: Floats, pool_counts: Floats) -> float:
+    """Out-of-sample standard deviation of a chart's deviations from sums of their products at lags 0 to 6.
+
+    Shrunk to the pool of all charts; positive autocorrelation over the lags widens it. Arrays have shape
+    (SCALE_LAGS + 1,).
+    """
+    pooled = (pool[0] + POOL_PRIOR_DAYS) / (pool_counts[0] + POOL_PRIOR_DAYS)
+    variance = (sums[0] + SCALE_PRIOR_DAYS * pooled) / (counts[0] + SCALE_PRIOR_DAYS)
+    total = 0.0
+    for lag in range(1, SCALE_LAGS + 1):
+        common = pool[lag] / max(pool_counts[lag], 1.0) / pooled
+        total += (sums[lag] / variance + AUTOCORRELATION_PRIOR_DAYS * common) / (
+            counts[lag] + AUTOCORRELATION_PRIOR_DAYS
+        )
+    return math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), MAX_AUTOCORRELATION_SUM)))
+
+
+@compiled
 def scales(z: Floats, day: int, guard_days: int) -> Floats:
-    """Out-of-sample standard deviation of each chart's deviations, shrunk to that of all charts.
+    """Out-of-sample standard deviation of each chart's deviations, see :func:`scale_from`.
 
     ``z`` has shape (n_charts, n_days), NaN on days that do not count; the 200 days before ``day`` up to the
-    guard are used. Autocorrelation over three days widens the scale.
+    guard are used.
     """
     n_charts = len(z)
     begin, end = max(0, day - SCALE_DAYS), max(0, day - guard_days)
@@ -108,17 +129,9 @@ def scales(z: Floats, day: int, guard_days: int) -> Floats:
                     sums[h, lag] += product
                     counts[h, lag] += 1.0
     pool, pool_counts = sums.sum(axis=0), counts.sum(axis=0)
-    pooled = (pool[0] + POOL_PRIOR_DAYS) / (pool_counts[0] + POOL_PRIOR_DAYS)
     out = np.empty(n_charts)
     for h in range(n_charts):
-        variance = (sums[h, 0] + SCALE_PRIOR_DAYS * pooled) / (counts[h, 0] + SCALE_PRIOR_DAYS)
-        total = 0.0
-        for lag in range(1, SCALE_LAGS + 1):
-            common = pool[lag] / max(pool_counts[lag], 1.0) / pooled
-            total += (sums[h, lag] / variance + AUTOCORRELATION_PRIOR_DAYS * common) / (
-                counts[h, lag] + AUTOCORRELATION_PRIOR_DAYS
-            )
-        out[h] = math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), MAX_AUTOCORRELATION_SUM)))
+        out[h] = scale_from(sums[h], counts[h], pool, pool_counts)
     return out
 
 
@@ -131,7 +144,7 @@ def gather_all(z: Floats, mean: Floats, statistic: Floats, values: Floats) -> No
     """
     for h in range(len(z)):
         if not np.isnan(z[h]):
-            gather(statistic[h], z[h])
+            gather(statistic[h], z[h], SHIFTS if h < len(mean) else NODE_SHIFTS)
         if h < len(mean):
             values[h] = evidence(statistic[h], mean[h])
         else:
@@ -142,15 +155,18 @@ def gather_all(z: Floats, mean: Floats, statistic: Floats, values: Floats) -> No
 def chart_alone(
     score: Floats, baseline_days: int, guard_days: int, first: int
 ) -> tuple[Floats, Floats, Floats]:
-    """One pair's chart without incidents: scaled deviations, two-sided and one-sided log evidence by day.
+    """One chart without incidents: scaled deviations, log evidence of a pair and of a node by day.
 
     What the watch makes of a pair that no other is related to, with equal weights, before its first alarm;
     the thresholds were simulated with it. ``score`` has shape (n_days,); the chart begins on day ``first``.
     """
     n_days = len(score)
-    raw = np.full((1, n_days), np.nan)
+    raw = np.full(n_days, np.nan)
     scaled, both, rising = np.full(n_days, np.nan), np.full(n_days, np.nan), np.full(n_days, np.nan)
-    statistic = np.zeros((2, len(SHIFTS)))
+    statistic, node = np.zeros((2, len(SHIFTS))), np.zeros((2, len(NODE_SHIFTS)))
+    # Running sums over the days of products at each lag, and how many exist.
+    products, known = np.zeros((n_days + 1, SCALE_LAGS + 1)), np.zeros((n_days + 1, SCALE_LAGS + 1))
+    sums, counts = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1)
     for day in range(first, n_days):
         n = 0
         total, squares = 0.0, 0.0
@@ -166,9 +182,21 @@ def chart_alone(
             variance = (squares - n * mean * mean) / (n - 1)
             t = (score[day] - mean) / math.sqrt(max(variance, 1e-12) * (1.0 + 1.0 / n))
             z = normal_from_t(t, n - 1.0)
-            raw[0, day] = min(max(z, -MAX_DEVIATION), MAX_DEVIATION)
-            scaled[day] = min(max(z / scales(raw, day, guard_days)[0], -MAX_DEVIATION), MAX_DEVIATION)
-            gather(statistic, scaled[day])
+            raw[day] = min(max(z, -MAX_DEVIATION), MAX_DEVIATION)
+            end = max(first, day - guard_days)
+            for lag in range(SCALE_LAGS + 1):
+                begin = min(max(first, day - SCALE_DAYS) + lag, end)
+                sums[lag] = products[end, lag] - products[begin, lag]
+                counts[lag] = known[end, lag] - known[begin, lag]
+            scale = scale_from(sums, counts, sums, counts)
+            scaled[day] = min(max(z / scale, -MAX_DEVIATION), MAX_DEVIATION)
+            gather(statistic, scaled[day], SHIFTS)
+            gather(node, scaled[day], NODE_SHIFTS)
             both[day] = evidence(statistic, mean)
-            rising[day] = math.log(max(statistic[0].mean(), 1e-12))
+            rising[day] = math.log(max(node[0].mean(), 1e-12))
+        for lag in range(SCALE_LAGS + 1):
+            products[day + 1, lag], known[day + 1, lag] = products[day, lag], known[day, lag]
+            if day >= lag and not np.isnan(raw[day] * raw[day - lag]):
+                products[day + 1, lag] += raw[day] * raw[day - lag]
+                known[day + 1, lag] += 1.0
     return scaled, both, rising

@@ -17,7 +17,11 @@ Kernel = TypeVar("Kernel", bound=Callable[..., Any])
 
 
 def compiled(function: Kernel) -> Kernel:
-    """Compile ``function`` at its first call and keep the machine code for later processes."""
+    """Compile ``function`` at its first call and keep the machine code for later processes.
+
+    The kept code is renewed when the file of the function changes, not when a kernel it calls in another file
+    does: after such a change, delete ``*.nbi`` and ``*.nbc`` in ``__pycache__``.
+    """
     return cast("Kernel", numba.njit(cache=True, nogil=True)(function))
 
 

@@ -55,18 +55,30 @@ def remove_cycle(
     before the rows that matter.
     """
     values = as_series(x, "x")
-    per_day = whole_number(steps_per_day, "steps_per_day")
-    if not 1 <= per_day <= 1440:
-        raise ValueError(f"steps_per_day={per_day} is out of range; choose from 1 to 1440.")
+    per_day = checked_steps_per_day(steps_per_day)
     slots = _slots(hour_of_day, working_day, len(values))
-    ranks, _ = dense_ranks(values)
-    share = np.full(len(values), np.nan)
-    _trailing_share(ranks, RANK_DAYS * per_day, MIN_RANKED_DAYS * per_day, share)
-    score: Floats = ndtri(np.clip(share, SCORE_TAIL, 1.0 - SCORE_TAIL))
+    score = trailing_scores(values, per_day)
     usual = np.full(len(values), np.nan)
     _trailing_slot_mean(score, slots, CYCLE_DAYS * per_day, MIN_CYCLE_DAYS, usual)
     detrended: Floats = score - usual
     return detrended
+
+
+def checked_steps_per_day(steps_per_day: int) -> int:
+    """Return the rows a day, 1 to 1440."""
+    per_day = whole_number(steps_per_day, "steps_per_day")
+    if not 1 <= per_day <= 1440:
+        raise ValueError(f"steps_per_day={per_day} is out of range; choose from 1 to 1440.")
+    return per_day
+
+
+def trailing_scores(values: Floats, steps_per_day: int) -> Floats:
+    """Return normal scores of each row among the last 30 days, itself included; NaN with under two days of values."""
+    ranks, _ = dense_ranks(values)
+    share = np.full(len(values), np.nan)
+    fill_trailing_share(ranks, RANK_DAYS * steps_per_day, MIN_RANKED_DAYS * steps_per_day, share)
+    score: Floats = ndtri(np.clip(share, SCORE_TAIL, 1.0 - SCORE_TAIL))
+    return score
 
 
 def _slots(hour_of_day: ArrayLike, working_day: ArrayLike, n_rows: int) -> Integers:
@@ -86,7 +98,7 @@ def _slots(hour_of_day: ArrayLike, working_day: ArrayLike, n_rows: int) -> Integ
 
 
 @compiled
-def _trailing_share(ranks: Ranks, rows: int, fewest: int, share: Floats) -> None:
+def fill_trailing_share(ranks: Ranks, rows: int, fewest: int, share: Floats) -> None:
     """Fill (number below + half the equal) / number over the last ``rows`` rows, each row itself included."""
     for t in range(len(ranks)):
         here = ranks[t]

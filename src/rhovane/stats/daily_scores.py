@@ -82,8 +82,9 @@ class DailyScores:
     def last(self, n_days: int) -> DailyScores:
         """The scores of the last ``n_days`` days."""
         begin = max(0, len(self.day) - n_days)
-        kept: dict[str, Any] = {f.name: getattr(self, f.name) for f in fields(self)}
-        return DailyScores(**{name: v if v is None else v[begin:] for name, v in kept.items()})
+        given: dict[str, Any] = {f.name: getattr(self, f.name) for f in fields(self)}
+        part: dict[str, Any] = {name: v[begin:] for name, v in given.items() if v is not None}
+        return DailyScores(**part)
 
 
 def lookback_days(lag: int, *, controls: bool, steps_per_day: int = 24) -> int:

@@ -102,6 +102,7 @@ class OpenIncident:
     after: float = np.nan
     pairs: NDArray[np.int64] = field(default_factory=lambda: np.empty(0, np.int64))
     reach: NDArray[np.bool_] = field(default_factory=lambda: np.empty(0, bool))
+    lead: int = -1
     first: Judgement | None = None
     last: Judgement | None = None
     settled: bool = False

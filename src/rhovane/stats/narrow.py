@@ -34,7 +34,7 @@ _COUNTING = ir.Constant(_ROWS, list(range(BLOCK)))
 def rows_in_32_bits(window: int) -> int:
     """Return how many rows of products of a window's centred ranks surely add up within 32 bits, in whole blocks."""
     if window * (window * window - 1) // 3 <= LARGEST_32_BITS:
-        return -(-window // BLOCK) * BLOCK
+        return -(-max(window, 1) // BLOCK) * BLOCK
     return LARGEST_32_BITS // (window - 1) ** 2 // BLOCK * BLOCK
 
 

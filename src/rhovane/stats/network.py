@@ -25,10 +25,13 @@ HISTORY_DAYS = 200
 """Days before the guard whose deviations form a filter's own history."""
 COVARIANCE_DAYS = 120
 """Days before the guard from which correlations between pairs are learnt."""
-REFIT_DAYS = 14
-"""Days between two estimates of that covariance."""
 INDEPENDENT_SHARE = 0.3
-"""Share of the covariance that is taken as independent between pairs."""
+"""Share by which correlations between pairs are shrunk toward none at least."""
+LEAST_EIGENVALUE = 0.1
+"""Correlations between pairs are shrunk until their matrix has no smaller eigenvalue: with hundreds of pairs
+and 120 days the estimates contradict each other,"""
+SHRINKAGE = 0.7
+"""by this factor at a time."""
 LEAST_COMMON_DAYS = 20
 """A correlation between two pairs is divided by at least this many common days."""
 CLASS_VARIANCE = np.array([0.0, 0.0, 4.0, 4.0])
@@ -43,6 +46,10 @@ LEAST_OBSERVED_SHARE = 0.6
 """A hypothesis is judged where this share of its direction is observed."""
 MAX_HISTORY_DEVIATION = 5.0
 """Deviations of reference days are kept inside this."""
+LEAST_OTHER_PAIRS = 6
+"""Fewest pairs from which the unrest of the rest of the network is read."""
+NORMAL_MEDIAN = 0.6745
+"""Median of the absolute value of a standard normal variable."""
 DUPLICATE_COSINE = 0.85
 """A node whose direction is this close to that of one of its pairs is left to the pair."""
 
@@ -131,6 +138,22 @@ def quantity_of(key: str) -> str:
 
 
 @compiled
+def unrest(deviation: Floats, touches: Flags) -> Floats:
+    """How restless the rest of the network is today, for each chart: 1 is usual.
+
+    The median absolute deviation of the pairs that a chart does not touch, over that of a normal variable;
+    NaN with fewer than six of them. ``deviation`` has shape (n_pairs,), ``touches`` (n_charts, n_pairs).
+    """
+    out = np.full(len(touches), np.nan)
+    size = np.abs(deviation)
+    for h in range(len(touches)):
+        others = size[~touches[h] & ~np.isnan(size)]
+        if len(others) >= LEAST_OTHER_PAIRS:
+            out[h] = np.median(others) / NORMAL_MEDIAN
+    return out
+
+
+@compiled
 def references(
     score: Floats, weight: Floats, usable: Flags, day: int, guard_days: int, length: int, least: int
 ) -> Floats:
@@ -165,14 +188,32 @@ def learnt_covariance(history: Floats, known: Flags, related: Flags) -> Floats:
     """Correlations between the pairs' deviations on reference days, shrunk; shape (n_pairs, n_pairs).
 
     ``history`` has shape (n_pairs, n_days), zero where not ``known``; pairs that are not ``related`` are
-    taken as uncorrelated.
+    taken as uncorrelated. The correlations are shrunk toward none by the share of their squares that chance
+    would give (Schäfer & Strimmer 2005), at least by 30 %, and further where they contradict each other.
     """
     recent, seen = history[:, -COVARIANCE_DAYS:], known[:, -COVARIANCE_DAYS:].astype(np.float64)
-    covariance = (recent @ recent.T) / np.maximum(seen @ seen.T, LEAST_COMMON_DAYS)
+    days = np.maximum(seen @ seen.T, LEAST_COMMON_DAYS)
+    covariance = (recent @ recent.T) / days
     sd = np.sqrt(np.maximum(np.diag(covariance), 0.2))
-    out = (1.0 - INDEPENDENT_SHARE) * np.where(related, covariance / np.outer(sd, sd), 0.0)
-    np.fill_diagonal(out, 1.0)
-    return out
+    between = np.where(related, covariance / np.outer(sd, sd), 0.0)
+    np.fill_diagonal(between, 0.0)
+    by_chance = np.where(related, 1.0 / days, 0.0)
+    np.fill_diagonal(by_chance, 0.0)
+    chance = by_chance.sum() / max(float((between**2).sum()), 1e-12)
+    between *= 1.0 - min(max(chance, INDEPENDENT_SHARE), 1.0)
+    whole = (1.0 - LEAST_EIGENVALUE) * np.eye(len(between))
+    while not _positive(whole + between):
+        between *= SHRINKAGE
+    return np.eye(len(between)) + between
+
+
+def _positive(matrix: Floats) -> bool:
+    """Whether a symmetric matrix is positive definite."""
+    try:
+        np.linalg.cholesky(matrix)
+    except np.linalg.LinAlgError:
+        return False
+    return True
 
 
 @compiled
@@ -220,7 +261,7 @@ def directions(
 
 def duplicate_nodes(structure: Structure, direction: Floats, inverse: Floats) -> Flags:
     """Nodes whose direction is nearly that of one of their pairs, in the metric of ``inverse``."""
-    strength = np.einsum("hi,ij,hj->h", direction, inverse, direction)
+    strength = ((direction @ inverse) * direction).sum(axis=1)
     unit = np.sqrt(np.maximum(np.outer(strength, np.diag(inverse)), 1e-12))
     cosine = np.abs(direction @ inverse) / unit
     return np.array(

@@ -11,10 +11,11 @@ from math import exp, log1p, pi, sqrt
 import numpy as np
 from numpy.typing import NDArray
 
-from rhovane.stats.arguments import Floats, Whole
+from rhovane.stats.arguments import Floats
 from rhovane.stats.compiled import compiled
 from rhovane.stats.dependence import SMALLEST_EFFECTIVE, SMALLEST_INFLATION, SMALLEST_UNEXPLAINED
-from rhovane.stats.narrow import BLOCK, dot16
+from rhovane.stats.narrow import BLOCK
+from rhovane.stats.rank_kernels import exact_dot
 from rhovane.stats.sliding_ranks import Counts, Narrow, slide_base
 
 SMALLEST_DIFFERENCE = 1e-17  # of a series or continued fraction, relative: below double precision
@@ -126,24 +127,15 @@ def series_autocorrelation(
         for i in range(window):
             centred[i] = base[place + i] & seen[start + i]
             n_seen += seen[start + i] & 1
-        square = lag_sum(centred, 0, window, chunk)
+        square = exact_dot(centred, 0, centred, 0, window, chunk)
         for k in range(1, n_lags + 1):
             count = counts[n_lags - k]
             if square > 0 and count > 0:
-                result[row, k - 1] = lag_sum(centred, k, window, chunk) / float(square) * n_seen / count
+                result[row, k - 1] = (
+                    exact_dot(centred, 0, centred, k, window - k, chunk) / float(square) * n_seen / count
+                )
             else:
                 result[row, k - 1] = np.nan
-
-
-@compiled
-def lag_sum(centred: Narrow, k: int, window: int, chunk: int) -> Whole:
-    """Return Σ c_t c_{t+k} within the window, exactly."""
-    total = np.int64(0)
-    part = 0
-    while part < window - k:
-        total += dot16(centred, part, centred, part + k, min(chunk, window - k - part))
-        part += chunk
-    return total
 
 
 @compiled

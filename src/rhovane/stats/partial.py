@@ -29,7 +29,7 @@ from rhovane.stats.family import best_of_lags_p_value
 from rhovane.stats.interval import (
     MIN_INTERVAL_COVERAGE,
     MIN_INTERVAL_EFFECTIVE,
-    dependent_half_width,
+    dependent_widths,
 )
 from rhovane.stats.rank_kernels import dense_ranks
 from rhovane.stats.rank_test import too_little_reason
@@ -143,9 +143,9 @@ def partial_window(
         acfs[i] = acf
         p_value[i] = float(spearman_p_value(rho, n_effective[i]))
         if interval and abs(rho) < 1.0 and n_pairs[i] >= MIN_INTERVAL_COVERAGE * length:
-            half, shift, found = dependent_half_width(rho, int(n_pairs[i]), acf, factor, 0.0, spent)
-            if found >= MIN_INTERVAL_EFFECTIVE:
-                low[i], high[i] = np.tanh(np.arctanh(rho) + shift + np.array([-half, half]))
+            widths = dependent_widths(rho, int(n_pairs[i]), acf, factor, 0.0, spent)
+            if widths.n_effective >= MIN_INTERVAL_EFFECTIVE:
+                low[i], high[i] = widths.around(rho)
     best, best_p_value = _best(leads, statistic, p_value, acfs, seed)
     shares = tie_share[tie_share == tie_share]
     return WindowScan(

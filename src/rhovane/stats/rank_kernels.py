@@ -14,13 +14,9 @@ from numpy.typing import NDArray
 
 from rhovane.stats.arguments import Floats, Integers, Whole
 from rhovane.stats.compiled import compiled
+from rhovane.stats.narrow import BLOCK, dot16
 
 ABSENT = -1  # dense rank of a row without an observation
-# (n^3 - n)/3, the sum of squared centred doubled ranks, stays below 2^31 up to this many rows.
-ROWS_IN_32_BITS = 1860
-# 128 products of numbers below 4096 stay below 2^31.
-CHUNK_IN_32_BITS = 128
-
 Ranks = NDArray[np.int32]
 Centred = NDArray[np.int16]
 
@@ -42,51 +38,54 @@ def dense_ranks(values: Floats) -> tuple[Ranks, int]:
 
 @compiled
 def centre_joint_ranks(
-    x: Ranks, y: Ranks, n_x: int, n_y: int, centred_x: NDArray[Any], centred_y: NDArray[Any]
-) -> int:
-    """Fill the centred doubled midranks over the rows where both are present (0 elsewhere); return their number.
+    x: Ranks,
+    y: Ranks,
+    n_x: int,
+    n_y: int,
+    centred_x: NDArray[Any],
+    centred_y: NDArray[Any],
+    joint: NDArray[Any],
+) -> tuple[Whole, Whole, Whole, Whole, Whole]:
+    """Fill the centred doubled midranks over the rows where both are present (0 elsewhere), and the mask of these.
 
-    ``x`` and ``y`` are dense ranks below ``n_x`` and ``n_y``; only their order within the rows counts.
+    ``x`` and ``y`` are dense ranks below ``n_x`` and ``n_y``; only their order within the rows counts. Returns the
+    number of pairs, the most pairs that share a value, and the exact sums of x·x, y·y and x·y.
     """
     n = len(x)
     counts_x = np.zeros(n_x + 1, np.int64)
     counts_y = np.zeros(n_y + 1, np.int64)
     n_pairs = 0
     for i in range(n):
+        joint[i] = 0
         if x[i] >= 0 and y[i] >= 0:
+            joint[i] = 1
             counts_x[x[i]] += 1
             counts_y[y[i]] += 1
             n_pairs += 1
+    most_tied = np.int64(0)
     # Turn counts into centred doubled midranks of each distinct value: below - above.
     for counts in (counts_x, counts_y):
         below = 0
         for value in range(len(counts)):
             tied = counts[value]
+            most_tied = max(most_tied, tied)
             counts[value] = 2 * below + tied - n_pairs
             below += tied
-    for i in range(n):
-        if x[i] >= 0 and y[i] >= 0:
-            centred_x[i] = counts_x[x[i]]
-            centred_y[i] = counts_y[y[i]]
-        else:
-            centred_x[i] = 0
-            centred_y[i] = 0
-    return n_pairs
-
-
-@compiled
-def product_sums(centred_x: NDArray[Any], centred_y: NDArray[Any]) -> tuple[Whole, Whole, Whole]:
-    """Return the sums of x·x, y·y and x·y, exactly."""
     xx = np.int64(0)
     yy = np.int64(0)
     xy = np.int64(0)
-    for i in range(len(centred_x)):
-        a = np.int64(centred_x[i])
-        b = np.int64(centred_y[i])
-        xx += a * a
-        yy += b * b
-        xy += a * b
-    return xx, yy, xy
+    for i in range(n):
+        centred_x[i] = 0
+        centred_y[i] = 0
+        if joint[i] != 0:
+            a = counts_x[x[i]]
+            b = counts_y[y[i]]
+            centred_x[i] = a
+            centred_y[i] = b
+            xx += a * a
+            yy += b * b
+            xy += a * b
+    return n_pairs, most_tied, xx, yy, xy
 
 
 @compiled
@@ -117,42 +116,43 @@ def tau_sums(x: Ranks, y: Ranks) -> tuple[Whole, Whole, Whole]:
 
 
 @compiled
-def exact_dot(a: Centred, b: Centred) -> Whole:
-    """Return the sum of a·b exactly: in 32 bits where that is safe (it is fast), in safe chunks elsewhere."""
-    n = len(a)
-    chunk = n if n <= ROWS_IN_32_BITS else CHUNK_IN_32_BITS
+def exact_dot(a: Centred, a_at: int, b: Centred, b_at: int, n_rows: int, chunk: int) -> Whole:
+    """Return Σ a·b over ``n_rows`` rows exactly, in steps of ``chunk`` rows that surely fit 32 bits."""
     total = np.int64(0)
-    start = 0
-    while start < n:
-        stop = min(start + chunk, n)
-        part_a = a[start:stop]
-        part_b = b[start:stop]
-        part = np.int32(0)
-        for i in range(stop - start):
-            part = np.int32(part + np.int32(np.int32(part_a[i]) * np.int32(part_b[i])))
-        total += part
-        start = stop
+    done = 0
+    while done < n_rows:
+        total += dot16(a, a_at + done, b, b_at + done, min(chunk, n_rows - done))
+        done += chunk
     return total
 
 
 @compiled
 def lag_products(
-    centred_x: Centred, centred_y: Centred, joint: Centred, own_lags: int, cross_lags: int
+    centred_x: Centred, centred_y: Centred, joint: Centred, own_lags: int, cross_lags: int, chunk: int
 ) -> tuple[Integers, Integers, Integers, Integers, Integers]:
-    """Return Σ x_t x_{t+k}, Σ y_t y_{t+k}, counts (k ≤ own_lags), Σ x_t y_{t+k}, Σ y_t x_{t+k} (k ≤ cross_lags)."""
+    """Return Σ x_t x_{t+k}, Σ y_t y_{t+k}, counts (k ≤ own_lags), Σ x_t y_{t+k}, Σ y_t x_{t+k} (k ≤ cross_lags).
+
+    ``chunk`` is :func:`rhovane.stats.narrow.rows_in_32_bits` of the number of rows.
+    """
     n = len(centred_x)
+    x = np.zeros(n + BLOCK, np.int16)
+    y = np.zeros(n + BLOCK, np.int16)
+    seen = np.zeros(n + BLOCK, np.int16)
+    x[:n] = centred_x
+    y[:n] = centred_y
+    seen[:n] = joint
     xx = np.zeros(own_lags + 1, np.int64)
     yy = np.zeros(own_lags + 1, np.int64)
     count = np.zeros(own_lags + 1, np.int64)
     xy = np.zeros(cross_lags + 1, np.int64)
     yx = np.zeros(cross_lags + 1, np.int64)
     for k in range(own_lags + 1):
-        xx[k] = exact_dot(centred_x[: n - k], centred_x[k:])
-        yy[k] = exact_dot(centred_y[: n - k], centred_y[k:])
-        count[k] = exact_dot(joint[: n - k], joint[k:])
+        xx[k] = exact_dot(x, 0, x, k, n - k, chunk)
+        yy[k] = exact_dot(y, 0, y, k, n - k, chunk)
+        count[k] = exact_dot(seen, 0, seen, k, n - k, chunk)
     for k in range(cross_lags + 1):
-        xy[k] = exact_dot(centred_x[: n - k], centred_y[k:])
-        yx[k] = exact_dot(centred_y[: n - k], centred_x[k:])
+        xy[k] = exact_dot(x, 0, y, k, n - k, chunk)
+        yx[k] = exact_dot(y, 0, x, k, n - k, chunk)
     return xx, yy, count, xy, yx
 
 

@@ -144,7 +144,7 @@ def rank_correlation_test(
         n_effective = effective_pairs(ranks.n_pairs, factor)
         reason = too_little_reason(n_effective, MIN_EFFECTIVE)
         p_value = nan if reason else dependent_p_value(ranks, sums, n_effective)
-        interval = rank_interval(ranks, acf, factor, chosen, statistic)
+        interval = rank_interval(ranks, acf, factor, sums)
     return RankCorrelationTest(
         statistic=statistic,
         n_pairs=ranks.n_pairs,

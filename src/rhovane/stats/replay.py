@@ -22,18 +22,27 @@ from rhovane.stats.network import (
     filtered,
     learnt_covariance,
     references,
+    unrest,
 )
-from rhovane.stats.suspect import explain, lag_movement
+from rhovane.stats.suspect import explain, lag_movement, slipped_node
 
 Floats = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 
 PAIR_SHARE = 0.5
 """Share of the budget of false alarms that goes to pairs; the rest to series and stations."""
+RELEARN_DAYS = 7
+"""Days between two estimates of the covariance between pairs."""
 NODE_REVIEW_DAYS = 28
 """Days between two reviews of which nodes are told apart from their pairs."""
+UNREST_POWER = 2
+"""Power of the unrest that deviations are divided by; 1 leaves a fifth more false alarms."""
+UNREST_DAYS = 5
+"""Days over which the unrest elsewhere in the network is averaged."""
 SETTLING_DAYS = 7
 """Days after an alarm over which the suspect is judged anew each night, then fixed."""
+MOVED = 2.0
+"""Standard deviations by which a pair of the suspect must have moved since the onset to count as changed."""
 MERGING_DAYS = 10
 """Days after an alarm within which crossings of related charts belong to it."""
 MAX_KEPT_DEVIATION = 7.0
@@ -92,11 +101,14 @@ class Replay:
         n_charts = len(structure.hypotheses)
         self.score, self.weight, self.lagged, self.ready = score, weight, lagged, ready
         self.structure, self.spans = structure, spans
+        self.first = int(ready.min(initial=n_days))
+        self.learnt: Floats | None = None
         self.usable = np.isfinite(score)
         self.frozen = np.full((3, n_pairs), np.nan)
-        self.holder = np.full(n_pairs, -1)
+        self.held = np.zeros(n_pairs, dtype=bool)
         self.statistic = np.zeros((n_charts, 2, len(SHIFTS)))
         self.counted, self.scaled = np.full((n_charts, n_days), np.nan), np.full((n_charts, n_days), np.nan)
+        self.unrest = np.full((n_charts, n_days), np.nan)
         self.spoiled = np.zeros((n_charts, n_days), dtype=bool)
         self.kept = np.full((n_pairs, n_days), np.nan)
         self.values = np.full((n_charts, n_days), np.nan)
@@ -121,16 +133,24 @@ class Replay:
 
     def run(self) -> tuple[Incident, ...]:
         """Judge every day; the incidents in order of their alarm day."""
-        first = int(self.ready.min(initial=self.score.shape[1]))
         for day in range(self.score.shape[1]):
-            night = self._night(day)
-            self.means[:, day], self.sds[:, day] = night.mean, night.sd
-            if day >= first:
-                self._judge_charts(night, review=(day - first) % NODE_REVIEW_DAYS == 0)
-                for incident in list(self.open):
-                    self._follow(incident, night)
-                self._raise(night)
-            self._record_state(night)
+            self.judge(day)
+        return self.incidents()
+
+    def judge(self, day: int) -> None:
+        """Judge one day; days must come in order."""
+        night = self._night(day)
+        self.means[:, day], self.sds[:, day] = night.mean, night.sd
+        if day >= self.first:
+            self._judge_charts(night, review=(day - self.first) % NODE_REVIEW_DAYS == 0)
+            self.limits[:, day] = self.limit
+            for incident in list(self.open):
+                self._follow(incident, night)
+            self._raise(night)
+        self._record_state(night)
+
+    def incidents(self) -> tuple[Incident, ...]:
+        """All incidents so far, in order of their alarm day."""
         done = self.closed + [i.closed(None, None) for i in self.open]
         return tuple(sorted(done, key=lambda i: (i.alarm_day, i.pairs)))
 
@@ -161,9 +181,11 @@ class Replay:
         )
         held = np.isfinite(self.frozen[0])
         mean, sd, total = (np.where(held, f, v) for f, v in zip(self.frozen, (mean, sd, total), strict=True))
-        spread = sd * np.sqrt(1.0 / self.weight[:, day] + 1.0 / total)
-        deviation = np.where(day >= self.ready, (self.score[:, day] - mean) / spread, np.nan)
-        observed = np.isfinite(deviation) & (self.holder < 0)
+        # A pair that still learns may yet choose another score: nothing of it may enter today's decisions.
+        learning = day < self.ready
+        mean, sd = np.where(learning, np.nan, mean), np.where(learning, np.nan, sd)
+        deviation = (self.score[:, day] - mean) / (sd * np.sqrt(1.0 / self.weight[:, day] + 1.0 / total))
+        observed = np.isfinite(deviation) & ~self.held
         self.kept[observed, day] = np.clip(deviation[observed], -MAX_KEPT_DEVIATION, MAX_KEPT_DEVIATION)
         empty = np.empty((0, 0))
         return Night(day, mean, sd, deviation, observed, empty, empty)
@@ -179,7 +201,9 @@ class Replay:
         night.direction, movement = directions(
             self.is_node, self.belongs, night.mean, night.sd, self.weight[:, day]
         )
-        night.covariance = learnt_covariance(past, known, self.structure.related)
+        if self.learnt is None or (day - self.first) % RELEARN_DAYS == 0:
+            self.learnt = learnt_covariance(past, known, self.structure.related)
+        night.covariance = self.learnt.copy()
         scored = np.isfinite(night.deviation)
         add_class_movement(night.covariance, self.structure.classes, scored, movement, CLASS_VARIANCE)
         seen = np.flatnonzero(night.observed)
@@ -194,7 +218,8 @@ class Replay:
         full = size.sum(axis=1)
         judged = (full > 0) & (size[:, seen].sum(axis=1) >= LEAST_OBSERVED_SHARE * full)
         judged &= self.live | ~self.is_node
-        today = np.where(night.observed, night.deviation, 0.0)
+        plain = (self.score[:, day] - night.mean) / night.sd * np.sqrt(self.weight[:, day])
+        today = np.where(night.observed, plain, 0.0)
         t, n = filtered(
             night.direction, inverse, today, past, known.astype(np.float64), self.spans.baseline_days
         )
@@ -202,9 +227,18 @@ class Replay:
         clean = np.clip(raw, -MAX_DEVIATION, MAX_DEVIATION)
         self.counted[:, day] = np.where(self.spoiled[:, day], np.nan, clean)
         z = raw / scales(self.counted, day, guard)
+        self.unrest[:, day] = unrest(z[: self.structure.n_pairs], self.touches)
+        z /= self._weather(day)
         self.scaled[:, day] = np.clip(z, -MAX_DEVIATION, MAX_DEVIATION)
         gather_all(self.scaled[:, day], np.nan_to_num(night.mean), self.statistic, self.values[:, day])
-        self.limits[:, day] = self.limit
+        self.values[np.isnan(self.scaled[:, day]), day] = np.nan
+
+    def _weather(self, day: int) -> Floats:
+        """What each chart's deviation is divided by: 1, or the squared unrest elsewhere in the last days."""
+        recent = self.unrest[:, max(0, day - UNREST_DAYS + 1) : day + 1]
+        n = np.isfinite(recent).sum(axis=1)
+        mean = np.nansum(recent, axis=1) / np.maximum(n, 1)
+        return np.maximum(np.where(n > 0, mean, 1.0), 1.0) ** UNREST_POWER
 
     def _raise(self, night: Night) -> None:
         """New incidents from charts above their limit; crossings related to a young one belong to it."""
@@ -222,7 +256,7 @@ class Replay:
             if young:
                 self.statistic[chart] = 0.0
                 continue
-            onset = onset_day(self.scaled[chart], day, int(self.ready.min()))
+            onset = onset_day(self.scaled[chart], day, self.first)
             value, limit = float(self.values[chart, day]), float(self.limit[chart])
             incident = OpenIncident(day, onset, int(chart), value, limit)
             incident.pairs = pairs
@@ -258,12 +292,18 @@ class Replay:
             night.mean,
         )
         chart = incident.chart if found is None else found.hypothesis
+        lead = int(self.structure.hypotheses[chart].pairs[0]) if found is None else found.lead
+        lagged = self.lagged[:, max(incident.onset_day, night.day - SETTLING_DAYS + 1) : night.day + 1]
+        mean = np.nan_to_num(night.mean)
+        steps = lag_movement(self.structure, self.structure.hypotheses[chart], lagged, mean)
+        if steps and not self.is_node[chart]:
+            node = slipped_node(self.structure, lead, lagged, mean)
+            if node is not None:
+                chart = node
+                steps = lag_movement(self.structure, self.structure.hypotheses[chart], lagged, mean) or steps
         one = self.structure.hypotheses[chart]
-        lead = int(one.pairs[0]) if found is None else found.lead
-        incident.pairs = one.pairs
+        incident.pairs, incident.lead = one.pairs, lead
         incident.reach |= self.touches[chart]
-        recent = slice(max(incident.onset_day, night.day - SETTLING_DAYS + 1), night.day + 1)
-        steps = lag_movement(self.structure, chart, self.lagged[:, recent], np.nan_to_num(night.mean))
         kind = "timing" if steps else "strength"
         return Judgement(night.day, (one.kind, one.name), tuple(map(int, one.pairs)), lead, kind, steps)
 
@@ -277,7 +317,7 @@ class Replay:
             else:
                 return
         pairs = incident.pairs
-        mine = self.holder[pairs] >= 0
+        mine = self.held[pairs]
         seen = mine & np.isfinite(night.deviation[pairs])
         if seen.sum() >= 0.5 * len(pairs):
             change = incident.change[seen]
@@ -294,21 +334,25 @@ class Replay:
             self._close(incident, day, "new baseline")
 
     def _settle(self, incident: OpenIncident, night: Night) -> None:
-        """Fix the suspect: its pairs keep the reference from before the onset and stop being judged."""
+        """Fix the suspect; those of its pairs that moved keep their old reference and stop being judged."""
         incident.settled = True
-        pairs, onset = incident.pairs, incident.onset_day
-        self._spoil(pairs, onset, night.day)
+        onset = incident.onset_day
+        self._spoil(incident.pairs, onset, night.day)
+        rows = self.kept[incident.pairs, onset : night.day + 1]
+        n = np.maximum(np.isfinite(rows).sum(axis=1), 1)
+        total = np.nansum(rows, axis=1)
+        moved = np.abs(total) >= MOVED * np.sqrt(n)
+        moved |= incident.pairs == incident.lead
+        pairs = incident.pairs = incident.pairs[moved]
+        incident.change = (total / n)[moved]
         before = references(
-            self.score, self.weight, self.usable, max(onset, int(self.ready.min())), self.spans.guard_days,
+            self.score, self.weight, self.usable, max(onset, self.first), self.spans.guard_days,
             self.spans.baseline_days, MIN_REFERENCE_DAYS,
         )  # fmt: skip
-        free = pairs[self.holder[pairs] < 0]
+        free = pairs[~self.held[pairs]]
         self.frozen[:, free] = before[:3, free]
-        self.holder[free] = 0
+        self.held[free] = True
         self.usable[pairs, onset:] = False
-        rows = self.kept[pairs, onset : night.day + 1]
-        counts = np.isfinite(rows).sum(axis=1)
-        incident.change = np.nansum(rows, axis=1) / np.maximum(counts, 1)
         self.statistic[self._reached(incident)] = 0.0
 
     def _close(self, incident: OpenIncident, day: int, ending: str) -> None:
@@ -320,7 +364,7 @@ class Replay:
             if p in others:
                 continue
             self.frozen[:, p] = np.nan
-            self.holder[p] = -1
+            self.held[p] = False
             begin = (
                 day - RETURN_OVERLAP_DAYS
                 if ending == "returned"

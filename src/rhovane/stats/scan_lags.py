@@ -65,13 +65,14 @@ class LagScan:
 
 @dataclass(frozen=True)
 class Scan:
-    """A lag scan with the ranks and autocorrelations behind it, for those that go on from there."""
+    """A lag scan with the ranks, autocorrelations and (Kendall) sums behind it, for those that go on from there."""
 
     result: LagScan
     ranks: tuple[JointRanks, ...]
     base: int | None
     acf: Autocorrelation | None
     factor: float
+    sums: dict[int, TauSums]
 
 
 def lag_scan(x: ArrayLike, y: ArrayLike, *, lags: Iterable[int], method: str = "spearman") -> LagScan:
@@ -108,38 +109,42 @@ def lag_scan(x: ArrayLike, y: ArrayLike, *, lags: Iterable[int], method: str = "
     first, second = as_pair(x, y)
     leads = checked_lags(lags, len(first))
     chosen = checked_method(method)
-    ranks_x, _ = dense_ranks(first)
-    ranks_y, _ = dense_ranks(second)
+    ranks_x, n_x = dense_ranks(first)
+    ranks_y, n_y = dense_ranks(second)
     n = len(first)
 
     def overlap(lag: int) -> tuple[Ranks, Ranks]:
         rows = n - abs(lag)
         return (ranks_x[:rows], ranks_y[n - rows :]) if lag >= 0 else (ranks_x[n - rows :], ranks_y[:rows])
 
-    return scan_lags(overlap, leads, chosen, SMALLEST_TEST, MIN_EFFECTIVE, DEFAULT_SEED).result
+    return scan_lags(overlap, (n_x, n_y), leads, chosen, SMALLEST_TEST, MIN_EFFECTIVE, DEFAULT_SEED).result
 
 
 def scan_lags(
     aligned: Callable[[int], tuple[Ranks, Ranks]],
+    n_distinct: tuple[int, int],
     lags: Integers,
     method: str,
     min_pairs: int,
     min_effective: float,
     seed: int,
 ) -> Scan:
-    """Return the scan over ``lags``; ``aligned`` gives the dense ranks of both sides, side by side, at a lag."""
+    """Return the scan over ``lags``; ``aligned`` gives the dense ranks of both sides, side by side, at a lag.
+
+    All dense ranks lie below ``n_distinct`` of their side.
+    """
     n_lags = len(lags)
     statistic = np.full(n_lags, np.nan)
     n_effective = np.full(n_lags, np.nan)
     p_value = np.full(n_lags, np.nan)
     sides = [aligned(int(lag)) for lag in lags]
-    ranks = tuple(joint_ranks(*pair) for pair in sides)
+    ranks = tuple(joint_ranks(*pair, *n_distinct) for pair in sides)
     reason = [no_statistic_reason(here, min_pairs) for here in ranks]
     n_pairs = np.array([here.n_pairs for here in ranks], dtype=np.int64)
     usable = [i for i in range(n_lags) if reason[i] is None]
     if not usable:
         result = LagScan(lags, statistic, n_pairs, n_effective, p_value, tuple(reason), None, float("nan"))
-        return Scan(result, ranks, None, None, float("nan"))
+        return Scan(result, ranks, None, None, float("nan"), {})
     tau: dict[int, TauSums] = {i: tau_of(*sides[i]) for i in usable} if method == "kendall" else {}
     # Lag 0 where it is computable; else the lag with most pairs, the smallest of them.
     base = min(usable, key=lambda i: (lags[i] != 0, -n_pairs[i], abs(lags[i]), lags[i]))
@@ -163,4 +168,4 @@ def scan_lags(
     result = LagScan(
         lags, statistic, n_pairs, n_effective, p_value, tuple(reason), int(lags[best]), best_p_value
     )
-    return Scan(result, ranks, base, acf, factor)
+    return Scan(result, ranks, base, acf, factor, tau)

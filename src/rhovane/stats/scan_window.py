@@ -95,12 +95,12 @@ def window_scan(
     fewest = checked_min_pairs(min_pairs, length)
     checked_min_effective(min_effective)
     reach = int(np.abs(leads).max())
-    ranks_x, _ = dense_ranks(last_rows(first, length + reach))
-    ranks_y, _ = dense_ranks(last_rows(second, length + reach))
-    scan = scan_lags(_window_at(ranks_x, ranks_y, length), leads, chosen, fewest, min_effective, seed)
-    low, high = (
-        _intervals(scan, chosen) if interval else (np.full(len(leads), np.nan), np.full(len(leads), np.nan))
+    ranks_x, n_x = dense_ranks(last_rows(first, length + reach))
+    ranks_y, n_y = dense_ranks(last_rows(second, length + reach))
+    scan = scan_lags(
+        _window_at(ranks_x, ranks_y, length), (n_x, n_y), leads, chosen, fewest, min_effective, seed
     )
+    low, high = _intervals(scan) if interval else (np.full(len(leads), np.nan), np.full(len(leads), np.nan))
     tie_share = float("nan") if scan.base is None else scan.ranks[scan.base].tie_share
     return WindowScan(**vars(scan.result), low=low, high=high, tie_share=tie_share)
 
@@ -130,7 +130,7 @@ def _window_at(x: Ranks, y: Ranks, window: int) -> Callable[[int], tuple[Ranks, 
     return aligned
 
 
-def _intervals(scan: Scan, method: str) -> tuple[Floats, Floats]:
+def _intervals(scan: Scan) -> tuple[Floats, Floats]:
     found: LagScan = scan.result
     low, high = np.full(len(found.lags), np.nan), np.full(len(found.lags), np.nan)
     if scan.base is None or scan.acf is None:
@@ -144,6 +144,6 @@ def _intervals(scan: Scan, method: str) -> tuple[Floats, Floats]:
         if i != scan.base:
             acf = autocorrelation(scan.ranks[i])
             factor = inflation(acf)
-        bounds = rank_interval(scan.ranks[i], acf, factor, method, float(found.statistic[i]))
+        bounds = rank_interval(scan.ranks[i], acf, factor, scan.sums.get(i))
         low[i], high[i] = bounds.low, bounds.high
     return low, high

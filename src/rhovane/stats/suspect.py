@@ -89,7 +89,7 @@ def explain(
             if observed[one.pairs[0]]:
                 weights[i] = _pair_weight(int(one.pairs[0]), whitened, inverse, mean)
         else:
-            weights[i] = _node_weight(one, direction[i], total, covariance, observed)
+            weights[i] = _node_weight(one, direction[i], whitened, inverse, observed)
     best = int(weights.argmax())
     if weights[best] <= IMPOSSIBLE:
         return None
@@ -105,41 +105,56 @@ def _pair_weight(pair: int, whitened: Floats, inverse: Floats, mean: Floats) -> 
 
 
 def _node_weight(
-    one: Hypothesis, direction: Floats, total: Floats, covariance: Floats, observed: Flags
+    one: Hypothesis, direction: Floats, whitened: Floats, inverse: Floats, observed: Flags
 ) -> float:
     pairs = one.pairs[observed[one.pairs] & (direction[one.pairs] != 0.0)]
     if len(pairs) < 2:
         return IMPOSSIBLE
-    seen = np.flatnonzero(observed)
-    z, whitened, inverse = _along(direction, pairs, total, covariance, seen)
-    if z <= 0.0:
+    along, own = direction[pairs], inverse[np.ix_(pairs, pairs)]
+    z = float(along @ whitened[pairs]) / float(np.sqrt(max(float(along @ own @ along), 1e-12)))
+    if z <= 0.0 or _witness(along, whitened[pairs], own) < WITNESS:
         return IMPOSSIBLE
-    strongest = pairs[(whitened[pairs] ** 2 / np.diag(inverse)[pairs]).argmax()]
-    witness, _, _ = _along(direction, pairs[pairs != strongest], total, covariance, seen[seen != strongest])
-    if witness < WITNESS:
-        return IMPOSSIBLE
-    free = np.linalg.solve(inverse[np.ix_(pairs, pairs)], whitened[pairs])
-    agreeing = np.mean(np.sign(free) == np.sign(direction[pairs]))
+    free = np.linalg.solve(own, whitened[pairs])
+    agreeing = np.mean(np.sign(free) == np.sign(along))
     together = (
         float(whitened[pairs] @ free) - PRICE * len(pairs) if agreeing >= LEAST_AGREEING else IMPOSSIBLE
     )
     return max(z * z - PRICE, together)
 
 
-def _along(
-    direction: Floats, pairs: NDArray[np.int64], total: Floats, covariance: Floats, seen: NDArray[np.int64]
-) -> tuple[float, Floats, Floats]:
-    """Filter output along a direction restricted to some pairs, whitened totals and inverse covariance."""
-    inverse = np.zeros_like(covariance)
-    inverse[np.ix_(seen, seen)] = np.linalg.inv(covariance[np.ix_(seen, seen)])
-    whitened = inverse @ total
-    along = np.zeros(len(total))
-    along[pairs] = direction[pairs]
-    variance = max(float(along @ inverse @ along), 1e-12)
-    return float(along @ whitened) / float(np.sqrt(variance)), whitened, inverse
+def _witness(along: Floats, whitened: Floats, own: Floats) -> float:
+    """Filter output along a node's direction once its strongest pair is taken out of the network.
+
+    Leaving a pair out changes the inverse covariance by one outer product of its column there.
+    """
+    strongest = int((whitened**2 / np.diag(own)).argmax())
+    rest = along.copy()
+    rest[strongest] = 0.0
+    column, corner = own[:, strongest], own[strongest, strongest]
+    output = rest @ whitened - (rest @ column) * whitened[strongest] / corner
+    variance = rest @ own @ rest - (rest @ column) ** 2 / corner
+    return float(output / np.sqrt(max(float(variance), 1e-12)))
 
 
-def lag_movement(structure: Structure, hypothesis: int, lagged: Floats, mean: Floats) -> int:
+def slipped_node(structure: Structure, pair: int, lagged: Floats, mean: Floats) -> int | None:
+    """The station or series whose other pairs moved in lag as this pair did; None where there is none.
+
+    A logger's clock carries all its series along, so a pair that moved in lag speaks for its whole station
+    where the others say the same. Arguments as for :func:`lag_movement`; the result is a position among the
+    hypotheses, stations before series.
+    """
+    best: tuple[bool, int, int] | None = None
+    for i, one in enumerate(structure.hypotheses):
+        others = one.pairs[one.pairs != pair]
+        if one.kind == "pair" or len(others) == len(one.pairs):
+            continue
+        if lag_movement(structure, Hypothesis(one.kind, one.name, others), lagged, mean):
+            rank = (one.kind == "station", len(others), -i)
+            best = rank if best is None else max(best, rank)
+    return None if best is None else -best[2]
+
+
+def lag_movement(structure: Structure, one: Hypothesis, lagged: Floats, mean: Floats) -> int:
     """Steps by which the suspect's series seem late (negative: early) in recent days; 0 where not moved.
 
     Parameters
@@ -149,7 +164,6 @@ def lag_movement(structure: Structure, hypothesis: int, lagged: Floats, mean: Fl
     mean : ndarray of float64, shape (n_pairs,)
         Reference means (atanh).
     """
-    one = structure.hypotheses[hypothesis]
     strong = [p for p in one.pairs if abs(np.tanh(mean[p])) > LEAST_LAGGED_RELATION] or list(one.pairs)
     profiles = []
     for p in strong:

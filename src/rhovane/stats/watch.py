@@ -18,8 +18,9 @@ from rhovane.stats.daily_scores import DailyScores
 from rhovane.stats.incident import Incident, Judgement
 from rhovane.stats.network import quantity_of, structure_of
 from rhovane.stats.replay import Replay, Spans
+from rhovane.stats.resume import WatchMemory
 
-__all__ = ["DayState", "Incident", "Judgement", "Watch", "watch"]
+__all__ = ["DayState", "Incident", "Judgement", "Watch", "WatchMemory", "watch"]
 
 Floats = NDArray[np.float64]
 
@@ -48,10 +49,11 @@ class Watch:
     """What the watch saw and decided; arrays have shape (n_days, n_pairs).
 
     ``score`` and ``weight`` are what was judged (NaN, 0: not scored); ``reference_mean`` and
-    ``reference_sd`` what it was judged against (atanh of a daily correlation; per unit of weight);
-    ``deviation`` the pair's standardised deviation after network control, NaN while learning, changed or
-    not scored; ``evidence`` the pair's log chart value with ``threshold`` its limit; ``state`` a
-    :class:`DayState`. ``recipe`` says for each pair which score was watched: "innovation", "day shape" or "day course".
+    ``reference_sd`` what it was judged against (atanh of a daily correlation; per unit of weight), NaN
+    while learning; ``deviation`` the pair's standardised deviation after network control and ``evidence``
+    its log chart value, both NaN while learning, changed or not scored; ``threshold`` the limit of the
+    evidence; ``state`` a :class:`DayState`. ``recipe`` says for each pair which score was watched:
+    "innovation", "day shape" or "day course".
     Charts of series and stations are not among these arrays; an incident they raised carries its own
     evidence and threshold.
     """
@@ -79,6 +81,7 @@ def watch(
     baseline_days: int = 90,
     guard_days: int = 14,
     rebaseline_days: int = 110,
+    memory: WatchMemory | None = None,
 ) -> Watch:
     """Watch the daily scores of all pairs of a network, day by day.
 
@@ -103,6 +106,8 @@ def watch(
         Days between the reference and the day judged.
     rebaseline_days : int
         Days after an alarm when a change that has lasted becomes the new reference.
+    memory : WatchMemory, optional
+        Where an earlier call stood: judging goes on from there where it can, with the same result.
 
     Returns
     -------
@@ -129,7 +134,7 @@ def watch(
     lagged = np.array([s.lagged for s in scores]).reshape(*shape, -1) if n_pairs else np.empty((0, 0, 5))
     alone = [(f"{i}a", f"{i}b") for i in range(n_pairs)]
     stations = members is not None and all("." in key for pair in members for key in pair)
-    replay = Replay(
+    history = (
         score,
         weight,
         lagged,
@@ -138,18 +143,25 @@ def watch(
         Spans(baseline_days, guard_days, rebaseline_days),
         false_alarms_per_year,
     )
-    incidents = replay.run()
+    if memory is None:
+        replay = Replay(*history)
+        incidents = replay.run()
+    else:
+        replay = memory.resume(*history)
+        incidents = replay.advance()
+        memory.keep(replay)
+    days = slice(0, len(day))
     return Watch(
         day,
         incidents,
         score.T,
         np.where(np.isnan(score), 0.0, weight).T,
-        replay.means.T,
-        replay.sds.T,
-        replay.scaled[:n_pairs].T,
-        replay.values[:n_pairs].T,
-        replay.limits[:n_pairs].T,
-        replay.state.T,
+        replay.means[:, days].T,
+        replay.sds[:, days].T,
+        replay.scaled[:n_pairs, days].T,
+        replay.values[:n_pairs, days].T,
+        replay.limits[:n_pairs, days].T,
+        replay.state[:, days].T,
         tuple(j[3] for j in judged),
     )
 
@@ -180,10 +192,8 @@ def _check(
         if given is not None and len(given) != len(scores):
             raise ValueError(f"{name} has {len(given)} entries for {len(scores)} pairs; pass one a pair.")
     for i, word in enumerate(choice or ()):
-        if word not in ("auto", "innovation", "day shape"):
-            raise ValueError(
-                f'choice[{i}]={word!r} is not known; choose "auto", "innovation" or "day shape".'
-            )
+        if word not in CHOICES:
+            raise ValueError(f"choice[{i}]={word!r} is not known; choose one of {', '.join(CHOICES)}.")
 
 
 def _judged(

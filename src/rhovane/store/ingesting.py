@@ -33,8 +33,13 @@ class _Delivery(NamedTuple):
     ingest_id: int
 
 
+_SERIES_IDS = "select key, id from series"
+
+
 class ReadingWriter(Session):
     """Writing of series and readings."""
+
+    _made_known: Sequence[Series] = ()
 
     def ensure_series(self, series: Sequence[Series]) -> dict[str, int]:
         """Make series known and return the number of each by its key; a changed label is taken over.
@@ -44,6 +49,8 @@ class ReadingWriter(Session):
         RhovaneError
             A known series has another unit, kind or step than before: its readings cannot be mixed.
         """
+        if series == self._made_known:
+            return self.remembered(_SERIES_IDS)
         known = {
             key: rest
             for key, *rest in self.rows("select key, id, unit, kind, step_minutes, label from series")
@@ -91,6 +98,8 @@ class ReadingWriter(Session):
                     self.execute("insert into series values (?, ?, ?, ?, ?, ?, ?, ?)", row)
                 for change in relabelled:
                     self.execute("update series set label = ? where id = ?", change)
+        self._remembered.pop(_SERIES_IDS, None)
+        self._made_known = list(series)
         return ids
 
     def append_files(
@@ -150,7 +159,7 @@ class ReadingWriter(Session):
 
     def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""
-        ids = dict(self.rows("select key, id from series"))
+        ids = self.remembered(_SERIES_IDS)
         parts = [_records(delivery, ids) for delivery in deliveries]
         if not sum(map(len, parts)):
             return [(0, 0, 0)] * len(parts)
@@ -243,6 +252,7 @@ class ReadingWriter(Session):
             columns,
         )
         self.expect_after_commit("last_ingest_id", deliveries[-1].ingest_id)
+        self.expect_after_commit("readings", 0)
         refused = [(d.ingest_id, d.file.path, row) for d in deliveries for row in d.file.rejected]
         if refused:
             columns = _text_columns(

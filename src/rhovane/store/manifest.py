@@ -10,20 +10,22 @@ from __future__ import annotations
 
 import json
 import os
-from dataclasses import asdict, dataclass, fields
+from collections.abc import Callable, Collection
+from dataclasses import asdict, dataclass, fields, replace
 from pathlib import Path
 
 from rhovane.model import RhovaneError, StoreDamaged
 
-# One row a table: highest number, count, rows read.
-HELD_SQL = """
-select coalesce(max(id), 0), count(*), coalesce(sum(rows_read), 0)::bigint, 1 as place from ingest
-union all select 0, count(*), 0, 2 from reading
-union all select 0, count(*), 0, 3 from night
-union all select 0, count(*), 0, 4 from alert
-union all select 0, count(*), 0, 5 from alert_event
-order by place
-"""
+# What counts the fields of Manifest, by the fields that one query answers.
+COUNTS_SQL = {
+    ("last_ingest_id", "ingest_rows", "rows_read"): (
+        "select coalesce(max(id), 0), count(*), coalesce(sum(rows_read), 0)::bigint from ingest"
+    ),
+    ("readings",): "select count(*) from reading",
+    ("nights",): "select count(*) from night",
+    ("alerts",): "select count(*) from alert",
+    ("alert_events",): "select count(*) from alert_event",
+}
 
 # What each count is called in a message.
 _WORDS = {
@@ -35,6 +37,9 @@ _WORDS = {
     "alerts": "alerts",
     "alert_events": "events in the alert log",
 }
+
+
+COUNT_NAMES = tuple(_WORDS)
 
 
 @dataclass(frozen=True)
@@ -50,10 +55,17 @@ class Manifest:
     alert_events: int = 0
 
     @classmethod
-    def from_rows(cls, rows: list[tuple[int, ...]]) -> Manifest:
-        """From the result of HELD_SQL."""
-        ingests, *others = rows
-        return cls(*ingests[:3], *(count for _, count, *_ in others))
+    def counted(cls, row: Callable[[str], tuple[int, ...]]) -> Manifest:
+        """What a store holds, from the only row of each counting query."""
+        return cls().recounted(row, COUNT_NAMES)
+
+    def recounted(self, row: Callable[[str], tuple[int, ...]], among: Collection[str]) -> Manifest:
+        """The same manifest with the fields ``among`` (and those of the same query) counted anew."""
+        counts: dict[str, int] = {}
+        for names, sql in COUNTS_SQL.items():
+            if not set(names).isdisjoint(among):
+                counts |= zip(names, row(sql), strict=True)
+        return replace(self, **counts)
 
 
 def manifest_path(store: Path) -> Path:

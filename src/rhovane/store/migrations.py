@@ -69,12 +69,12 @@ create table window_result_history (
 );
 create table evidence (
     pair integer, recipe integer, day date, innovation double, innovation_hours double, shape double,
-    shape_hours double, later_minus_2 double, later_minus_1 double, later_0 double, later_plus_1 double,
+    shape_hours double, course double, course_hours double, later_minus_2 double, later_minus_1 double, later_0 double, later_plus_1 double,
     later_plus_2 double, night_id integer
 );
 create table evidence_history (
     pair integer, recipe integer, day date, innovation double, innovation_hours double, shape double,
-    shape_hours double, later_minus_2 double, later_minus_1 double, later_0 double, later_plus_1 double,
+    shape_hours double, course double, course_hours double, later_minus_2 double, later_minus_1 double, later_0 double, later_plus_1 double,
     later_plus_2 double, night_id integer, superseded_by integer
 );
 """

@@ -57,7 +57,6 @@ class NightLedger(Session):
                 """,
                 [number, kind, as_of, naive_utc(now), settings_hash, program_version],
             )
-            self.expect_after_commit("nights", number)
         return number
 
     def finish_night(
@@ -69,8 +68,11 @@ class NightLedger(Session):
         steps: Sequence[Mapping[str, Any]],
         counts: Mapping[str, Any],
         data_version: int | None = None,
+        checkpoint: bool = True,
     ) -> None:
         """Record how a night ended; ``data_version`` is by default the last ingest of the store.
+
+        ``checkpoint`` folds the write-ahead log into the file afterwards; False leaves that to a later night.
 
         Raises
         ------
@@ -101,7 +103,9 @@ class NightLedger(Session):
                     int(night_id),
                 ],
             )
-            self.checkpoint_after_commit()
+            self.expect_after_commit("nights", int(night_id))
+            if checkpoint:
+                self.checkpoint_after_commit()
 
     def nights(self, limit: int = 30) -> list[NightRecord]:
         """The latest nights, newest first."""
@@ -117,7 +121,9 @@ class NightLedger(Session):
 
     def last_finished_night(self) -> NightRecord | None:
         """The latest night that ended complete or incomplete, of any kind; None before the first."""
-        found = self.rows(f"{_SELECT} where outcome in ('complete', 'incomplete') order by id desc limit 1")
+        found = self.rows(
+            f"{_SELECT} where id = (select max(id) from night where outcome in ('complete', 'incomplete'))"
+        )
         return _record(found[0]) if found else None
 
 

@@ -31,7 +31,15 @@ WINDOW_COLUMNS = (
     "reason",
 )
 LATER_COLUMNS = ("later_minus_2", "later_minus_1", "later_0", "later_plus_1", "later_plus_2")
-_SCORE_COLUMNS = ("innovation", "innovation_hours", "shape", "shape_hours", *LATER_COLUMNS)
+_SCORE_COLUMNS = (
+    "innovation",
+    "innovation_hours",
+    "shape",
+    "shape_hours",
+    "course",
+    "course_hours",
+    *LATER_COLUMNS,
+)
 EVIDENCE_COLUMNS = ("pair_key", "recipe_hash", "day", *_SCORE_COLUMNS)
 
 
@@ -53,6 +61,9 @@ _EVIDENCE = _Table(
     ("pair", "recipe", "day"),
     ("pair", "recipe", "day", *_SCORE_COLUMNS),
 )
+
+
+_LABELS = "select text, id from label order by id"
 
 
 class Results(Session):
@@ -145,8 +156,8 @@ class Results(Session):
         Parameters
         ----------
         columns : the EVIDENCE_COLUMNS by name, each one array of equal length, or one value for all rows.
-            ``pair_key``, ``recipe_hash`` str; ``day`` date or datetime64; ``innovation`` and ``shape`` the day's
-            scores (atanh of a correlation), NaN where there is none, with their joint ``…_hours``; the
+            ``pair_key``, ``recipe_hash`` str; ``day`` date or datetime64; ``innovation``, ``shape`` and ``course`` the
+            day's scores (atanh of a correlation), NaN where there is none, with their joint ``…_hours``; the
             ``later_…`` the innovation correlation with the second series that many hours later.
 
         Raises
@@ -210,23 +221,21 @@ class Results(Session):
 
     def _replace(self, table: _Table, what: str, night_id: int, staged: Mapping[str, NDArray[Any]]) -> None:
         """Insert staged rows as current; rows of the same key move to the history."""
-        key = ", ".join(table.key)
         same = " and ".join(f"old.{name} = staged.{name}" for name in table.key)
-        repeated = self.value(
-            f"select count(*) from (select 1 from staged group by {key} having count(*) > 1)", staged=staged
-        )
+        repeated = _repeated_keys([staged[name] for name in table.key])
         if repeated:
             raise RhovaneError(
-                f"{repeated} keys ({key}) occur more than once among the {what} of night {night_id}; each may occur "
-                "once. Nothing was kept."
+                f"{repeated} keys ({', '.join(table.key)}) occur more than once among the {what} of night {night_id}; "
+                "each may occur once. Nothing was kept."
             )
         night = [int(night_id)]
-        self.execute(
+        moved = self.rows(
             f"insert into {table.name}_history select old.*, ? from {table.name} old semi join staged on {same}",
             night,
             staged,
         )
-        self.execute(f"delete from {table.name} old using staged where {same}", staged=staged)
+        if moved[0][0]:
+            self.execute(f"delete from {table.name} old using staged where {same}", staged=staged)
         self.execute(
             f"insert into {table.name} select {', '.join(table.columns)}, ? from staged", night, staged
         )
@@ -234,7 +243,7 @@ class Results(Session):
     def _label_ids(self, texts: NDArray[Any]) -> NDArray[np.int32]:
         """The number of each text; texts not met before get one."""
         words = _texts(texts)
-        ids = {text: number for number, text in self.rows("select id, text from label")}
+        ids = self.remembered(_LABELS)
         fresh = sorted(set(words) - ids.keys())
         if fresh:
             numbers = np.arange(len(ids), len(ids) + len(fresh), dtype=np.int32)
@@ -242,12 +251,12 @@ class Results(Session):
                 "insert into label select id, text from staged",
                 staged={"id": numbers, "text": np.array(fresh, dtype=object)},
             )
-            ids |= zip(fresh, numbers.tolist(), strict=True)
+            ids.update(zip(fresh, numbers.tolist(), strict=True))
         return np.fromiter((ids[word] for word in words), np.int32, len(words))
 
     def _labels(self) -> NDArray[np.object_]:
         """All texts, each at the index that is its number."""
-        return np.array([text for (text,) in self.rows("select text from label order by id")], dtype=object)
+        return np.array(list(self.remembered(_LABELS)), dtype=object)
 
 
 def _checked(what: str, columns: Mapping[str, Any], expected: Sequence[str]) -> dict[str, NDArray[Any]]:
@@ -265,6 +274,16 @@ def _checked(what: str, columns: Mapping[str, Any], expected: Sequence[str]) -> 
         raise RhovaneError(f"Columns of {what} have different lengths: {lengths}; give arrays of one length.")
     n = next(iter(lengths.values()))
     return {name: a if a.ndim else np.broadcast_to(a, n) for name, a in arrays.items()}
+
+
+def _repeated_keys(keys: Sequence[NDArray[Any]]) -> int:
+    """How many rows have the same key as another row before them."""
+    order = np.lexsort(keys[::-1])
+    same = np.ones(max(0, len(order) - 1), dtype=bool)
+    for key in keys:
+        ordered = key[order]
+        same &= ordered[1:] == ordered[:-1]
+    return int(same.sum())
 
 
 def _array(values: Any) -> NDArray[Any]:

@@ -17,7 +17,7 @@ import duckdb
 import numpy as np
 
 from rhovane.model import RhovaneError, StoreDamaged
-from rhovane.store.manifest import HELD_SQL, Manifest, losses, read_manifest, write_manifest
+from rhovane.store.manifest import Manifest, losses, read_manifest, write_manifest
 
 Parameters = Sequence[Any] | Mapping[str, Any]
 Columns = Mapping[str, np.ndarray]
@@ -51,6 +51,8 @@ class Session:
         self._connection = connection
         self._depth = 0
         self._doomed = False
+        self._remembered: dict[str, dict[Any, Any]] = {}
+        self._counted: Manifest | None = None
         self._checkpoint_due = False
         self._written: dict[str, int] = {}
         self._open = True
@@ -115,6 +117,16 @@ class Session:
             self._doomed = True
             raise failure(error, self.path) from error
 
+    def remembered(self, sql: str) -> dict[Any, Any]:
+        """The rows of a query with two columns as a dict, read once and kept; whoever adds rows adds them here.
+
+        Only for tables that are never changed but by adding. An open store has no other writer; a rollback
+        forgets everything.
+        """
+        if sql not in self._remembered:
+            self._remembered[sql] = dict(self.rows(sql))
+        return self._remembered[sql]
+
     # -- transactions ---------------------------------------------------------------------------
 
     @contextlib.contextmanager
@@ -151,13 +163,15 @@ class Session:
             self.execute("commit")
         except BaseException:
             # After a fatal error there is nothing left to roll back; the first error is the one to show.
+            self._remembered.clear()
+            self._counted = None
             with contextlib.suppress(duckdb.Error):
                 self._connection.execute("rollback")
             raise
         finally:
             self._depth = 0
-        held = self._read_back()
-        write_manifest(self.path, held)
+        if self._written:
+            write_manifest(self.path, self._read_back())
         if self._checkpoint_due:
             self._checkpoint()
 
@@ -193,8 +207,11 @@ class Session:
             ) from error
 
     def _read_back(self) -> Manifest:
-        """How much the store holds after a commit, which must be what was written."""
-        held = self.holds()
+        """How much the store holds after a commit, which must be what was written; counts what was written to."""
+        if self._counted is None:
+            held = self.holds()
+        else:
+            held = self._counted = self._counted.recounted(lambda sql: self.rows(sql)[0], self._written)
         for count, number in self._written.items():
             if getattr(held, count) < number:
                 raise StoreDamaged(
@@ -206,8 +223,9 @@ class Session:
     # -- manifest -------------------------------------------------------------------------------
 
     def holds(self) -> Manifest:
-        """How much the store holds now."""
-        return Manifest.from_rows(self.rows(HELD_SQL))
+        """How much the store holds now, counted anew."""
+        self._counted = Manifest.counted(lambda sql: self.rows(sql)[0])
+        return self._counted
 
     def compare_with_manifest(self) -> None:
         """Refuse a store that has lost something; bring a manifest that lags behind up to date.

@@ -8,7 +8,7 @@ import duckdb
 
 from rhovane.model import RhovaneError, StoreDamaged
 from rhovane.store.alert_log import AlertLog
-from rhovane.store.manifest import HELD_SQL, Manifest, losses, write_manifest
+from rhovane.store.manifest import Manifest, losses, write_manifest
 from rhovane.store.session import failure
 
 _LAWS = (
@@ -105,6 +105,6 @@ class Upkeep(AlertLog):
 def _held_by(path: Path) -> Manifest:
     try:
         with duckdb.connect(str(path), read_only=True) as connection:
-            return Manifest.from_rows(connection.execute(HELD_SQL).fetchall())
+            return Manifest.counted(lambda sql: connection.execute(sql).fetchall()[0])
     except duckdb.Error as error:
         raise failure(error, path) from error

@@ -45,7 +45,7 @@ def score_world(seed: int, events: bool, settings: Settings | None = None) -> Wo
     keys, members, choice, scores = [], [], [], []
     for pair in settings.pair:
         mask = kept_hours(
-            pair, grid, civil_zone=settings.network.civil_zone, other_days=settings.calendar.dates()
+            pair, grid, civil_zone=settings.network.civil_zone, other_days=settings.calendar.dates
         )
         keys.append(pair.key)
         members.append((pair.first, pair.second))

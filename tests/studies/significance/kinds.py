@@ -85,11 +85,15 @@ DAILY_SWING = ((2.0 * RADIUS * np.cos(2.0 * np.pi / PERIOD), -(RADIUS**2)), ())
 
 @dataclass(frozen=True)
 class Kind:
-    """One kind of data: how to draw it, and the margins that change the true rank correlation through ties."""
+    """One kind of data: how to draw it, and what tells its true rank correlation.
+
+    Margins with ties change it; so does a recipe, whose ``limit`` a very long window shows.
+    """
 
     draw: Callable[..., tuple[np.ndarray, np.ndarray]]
     margin: Callable[[np.ndarray], np.ndarray] | None = None
     margin_y: Callable[[np.ndarray], np.ndarray] | None = None
+    limit: bool = False
 
 
 def plain(first, second=None):
@@ -107,14 +111,14 @@ def marked(margin, margin_y=None):
     return Kind(draw, margin, other)
 
 
-def changed(change_x, change_y):
+def changed(change_x, change_y, limit=False):
     """Latent AR(1), .8, changed by functions of (rng, x)."""
 
     def draw(rng, reps, n, rho):
         x, y = latent_pair(rng, reps, n, rho, SLOW)
         return change_x(rng, x), change_y(rng, y)
 
-    return Kind(draw)
+    return Kind(draw, limit=limit)
 
 
 def causally_removed(rng, reps, n, rho):
@@ -141,12 +145,14 @@ KINDS = {
     "hour medians removed inside": changed(
         lambda rng, x: less_hour_medians(x + daily_cycle(x.shape[1], 8)),  # noqa: ARG005
         lambda rng, y: less_hour_medians(y + daily_cycle(y.shape[1], 14)),  # noqa: ARG005
+        limit=True,
     ),
     "uneven cycle, medians removed": changed(
         lambda rng, x: less_hour_medians(x + uneven_cycle(rng, *x.shape, 8)),
         lambda rng, y: less_hour_medians(y + uneven_cycle(rng, *y.shape, 14)),
+        limit=True,
     ),
-    "cycle removed causally": Kind(causally_removed),
+    "cycle removed causally": Kind(causally_removed, limit=True),
     "rounded": marked(lambda z: np.round(2.0 * z) / 2.0),
     "40 % censored": marked(lambda z: np.maximum(z, ndtri(0.4))),
     "80 % zeros": marked(lambda z: np.maximum(z, ndtri(0.8)), lambda z: z),

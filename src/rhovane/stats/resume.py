@@ -1,0 +1,145 @@
+"""The watch goes on from where it was: a night judges its new days, not the whole history.
+
+A :class:`WatchMemory` keeps the state of the watch as it stood at the end of some recent days. When the
+scores up to one of these days are unchanged, judging goes on from it; the result is that of a full replay
+to the last bit (tested). Whatever else differs (pairs, budget, a revised day further back), the history is
+replayed from the beginning.
+"""
+
+from __future__ import annotations
+
+import copy
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rhovane.stats.incident import Incident
+from rhovane.stats.network import Structure
+from rhovane.stats.replay import SETTLING_DAYS, Replay, Spans
+
+Floats = NDArray[np.float64]
+
+SPARE_DAYS = 120
+"""Days of room for new days in a kept state; after them the history is replayed once."""
+RECENT = 10
+"""The states of this many latest days are kept,"""
+WEEKS = 10
+"""and those of one day a week for this many weeks: readings arrive or are revised that late."""
+
+
+class ResumableReplay(Replay):
+    """A replay with room for days to come; :meth:`advance` judges those it has not judged yet."""
+
+    def __init__(
+        self,
+        score: Floats,
+        weight: Floats,
+        lagged: Floats,
+        ready: NDArray[np.int64],
+        structure: Structure,
+        spans: Spans,
+        false_alarms_per_year: float,
+    ) -> None:
+        room = ((0, 0), (0, SPARE_DAYS + SETTLING_DAYS))
+        super().__init__(
+            np.pad(score, room, constant_values=np.nan),
+            np.pad(weight, room, constant_values=1.0),
+            np.pad(lagged, (*room, (0, 0)), constant_values=np.nan),
+            ready,
+            structure,
+            spans,
+            false_alarms_per_year,
+        )
+        self.n_judged = 0
+        self.n_known = score.shape[1]
+
+    def set_ready(self, ready: NDArray[np.int64]) -> None:
+        """Take over the first judged days, where those still to come have moved."""
+        self.ready = ready
+        self.first = int(ready.min(initial=self.score.shape[1]))
+
+    def takes(self, n_days: int) -> bool:
+        """Whether there is room for a history of this many days."""
+        return n_days <= self.score.shape[1] - SETTLING_DAYS
+
+    def learn(self, score: Floats, weight: Floats, lagged: Floats) -> None:
+        """Replace the days that are not judged yet by those of a longer (or revised) history."""
+        begin, end = self.n_judged, score.shape[1]
+        known = slice(begin, max(end, self.n_known))
+        self.score[:, known], self.weight[:, known], self.lagged[:, known] = np.nan, 1.0, np.nan
+        fresh = slice(begin, end)
+        self.score[:, fresh], self.weight[:, fresh] = score[:, fresh], weight[:, fresh]
+        self.lagged[:, fresh] = lagged[:, fresh]
+        self.usable[:, known] = np.isfinite(self.score[:, known])
+        for incident in self.open:
+            if incident.settled:  # days of a change never enter a reference
+                self.usable[incident.pairs, known] = False
+        self.n_known = end
+
+    def advance(self) -> tuple[Incident, ...]:
+        """Judge the days known but not judged; all incidents so far in order of their alarm day."""
+        for day in range(self.n_judged, self.n_known):
+            self.judge(day)
+        self.n_judged = self.n_known
+        return self.incidents()
+
+
+@dataclass
+class WatchMemory:
+    """States of the watch at the ends of recent days, for the nights of one process."""
+
+    states: list[ResumableReplay] = field(default_factory=list)
+    key: tuple[object, ...] = ()
+
+    def resume(
+        self,
+        score: Floats,
+        weight: Floats,
+        lagged: Floats,
+        ready: NDArray[np.int64],
+        structure: Structure,
+        spans: Spans,
+        false_alarms_per_year: float,
+    ) -> ResumableReplay:
+        """A replay of this history, judged as far as a kept state allows, with all its days known."""
+        key = (structure.members, tuple(structure.classes.tolist()), spans, false_alarms_per_year)
+        if key != self.key:
+            self.states, self.key = [], key
+        n_days = score.shape[1]
+        for state in reversed(self.states):
+            n = state.n_judged
+            if (
+                n <= n_days
+                and state.takes(n_days)
+                and _decided(ready, n) == _decided(state.ready, n)
+                and _same(state.score[:, :n], score[:, :n])
+                and _same(state.weight[:, :n], weight[:, :n])
+                and _same(state.lagged[:, :n], lagged[:, :n])
+            ):
+                going = copy.deepcopy(state)
+                going.set_ready(ready)
+                going.learn(score, weight, lagged)
+                return going
+        return ResumableReplay(score, weight, lagged, ready, structure, spans, false_alarms_per_year)
+
+    def keep(self, state: ResumableReplay) -> None:
+        """Remember where a replay stands; older states are thinned out."""
+        later = [s for s in self.states if s.n_judged < state.n_judged]
+        later.append(copy.deepcopy(state))
+        newest = state.n_judged
+        self.states = [
+            s
+            for s in later
+            if newest - s.n_judged < RECENT or (s.n_judged % 7 == 0 and newest - s.n_judged < 7 * WEEKS)
+        ]
+
+
+def _decided(ready: NDArray[np.int64], n_days: int) -> Sequence[int]:
+    """First judged days as far as they concern the first days: later ones only need to stay later."""
+    return np.minimum(ready, n_days).tolist()
+
+
+def _same(ours: Floats, theirs: Floats) -> bool:
+    return np.array_equal(ours, theirs, equal_nan=True)
