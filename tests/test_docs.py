@@ -5,6 +5,7 @@ from pathlib import Path
 
 import click
 import pytest
+
 from rhovane.cli import main
 from rhovane.model import AlertState, ExitCode, Outcome
 
@@ -53,7 +54,12 @@ def test_every_package_is_on_the_map():
 
 
 def test_the_cautions_are_shown_in_the_readme():
-    for words in ("Association is not cause", "does not measure exposure", "licensed", "Demo data are invented"):
+    for words in (
+        "Association is not cause",
+        "does not measure exposure",
+        "licensed",
+        "Demo data are invented",
+    ):
         assert words in README
 
 

@@ -3,6 +3,7 @@
 import datetime as dt
 
 import pytest
+
 from rhovane.alerts import refusal, standing_of
 from rhovane.model import AlertEvent, AlertState, EventKind, Outcome
 

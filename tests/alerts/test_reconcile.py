@@ -21,9 +21,25 @@ def found(pair: str = "A.x~B.x", alarm: dt.date = ONSET + 4 * DAY, **changes) ->
     return dataclasses.replace(base, **changes)
 
 
-def logged(alert_id: int, pair: str = "A.x~B.x", alarm: dt.date = ONSET + 4 * DAY, recipe: str = "r1") -> Alert:
+def logged(
+    alert_id: int, pair: str = "A.x~B.x", alarm: dt.date = ONSET + 4 * DAY, recipe: str = "r1"
+) -> Alert:
     return Alert(
-        alert_id, pair, recipe, "strength", "weaker", alarm, ONSET, alarm, 1, 1, "s", 9.0, 8.0, estimate(), estimate()
+        alert_id,
+        pair,
+        recipe,
+        "strength",
+        "weaker",
+        alarm,
+        ONSET,
+        alarm,
+        1,
+        1,
+        "s",
+        9.0,
+        8.0,
+        estimate(),
+        estimate(),
     )
 
 
@@ -34,7 +50,12 @@ def raised(alert: Alert) -> AlertEvent:
 def bring(episodes, alerts, events=None, judged=None, night=NIGHT):
     events = events or {a.id: [raised(a)] for a in alerts}
     return reconcile(
-        episodes, alerts, events, at=AT, night_as_of=night, judged=judged or {"A.x~B.x": "r1", "C.x~D.x": "r1"}
+        episodes,
+        alerts,
+        events,
+        at=AT,
+        night_as_of=night,
+        judged=judged or {"A.x~B.x": "r1", "C.x~D.x": "r1"},
     )
 
 

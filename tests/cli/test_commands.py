@@ -9,6 +9,7 @@ from pathlib import Path
 
 import pytest
 from click.testing import CliRunner, Result
+
 from flow.small_network import HEADER, SETTINGS, related_series, row
 from rhovane.cli import main
 from rhovane.model import ExitCode
@@ -43,7 +44,7 @@ def config(folder: Path) -> str:
     return path
 
 
-def test_check_says_what_would_happen_and_writes_nothing(folder: Path, tmp_path: Path):
+def test_check_says_what_would_happen_and_writes_nothing(tmp_path: Path):
     (tmp_path / "feed").mkdir()
     (tmp_path / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
     (tmp_path / "feed" / "a.csv").write_text(HEADER + row(0, "A", 1.5) + row(1, "A", "?"), encoding="utf-8")
@@ -93,7 +94,7 @@ def test_an_alert_that_does_not_exist_ends_with_a_message(config: str):
     assert "alert 99: no such alert" in result.output
 
 
-def test_a_person_acknowledges_decides_and_the_log_keeps_all_of_it(folder: Path, config: str):
+def test_a_person_acknowledges_decides_and_the_log_keeps_all_of_it(config: str):
     assert run("acknowledge", "1", "--note", "seen", "--who", "ana", "--config", config).exit_code == 0
     twice = run("acknowledge", "1", "--who", "bo", "--config", config)
     assert twice.exit_code == ExitCode.FAILED
@@ -119,7 +120,9 @@ def test_status_tells_missed_nights_and_ends_with_its_code(config: str):
     assert "11 NIGHTS MISSED" in result.output
     well = run("status", "--config", config, "--as-of", LAST)
     assert well.exit_code == ExitCode.WELL
-    assert json.loads(run("status", "--config", config, "--as-of", LAST, "--json").output)["nights_missed"] == 0
+    assert (
+        json.loads(run("status", "--config", config, "--as-of", LAST, "--json").output)["nights_missed"] == 0
+    )
 
 
 def test_status_before_any_night_says_that_silence_means_nothing(tmp_path: Path):

@@ -81,9 +81,7 @@ def test_smoke_concerns_pairs_of_particles_only():
     during = date(2025, 6, 18)
     assert "D5" in answers("DOR.PM25~PEL.PM25", during, during)
     assert "D5" not in answers("DOR.PM25~DOR.NO2", during, during)
-    assert "T5" in answers(
-        "SKA.lorries~SKA.PM10[20-90deg]", date(2025, 7, 22), date(2025, 7, 25)
-    )
+    assert "T5" in answers("SKA.lorries~SKA.PM10[20-90deg]", date(2025, 7, 22), date(2025, 7, 25))
 
 
 def test_alert_before_its_onset_is_refused():

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pytest
+
 from flow.small_network import SETTINGS
 from rhovane.settings import Settings, load_settings
 

@@ -7,6 +7,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pytest
+
 from flow.small_network import HEADER, SETTINGS, START, row
 from rhovane.model import SettingsError
 from rhovane.pipeline import STEPS, run_night

@@ -11,6 +11,7 @@ import time
 from pathlib import Path
 
 import numpy as np
+
 from flow.small_network import HEADER, SETTINGS, START, related_series, row
 from rhovane.review import alert_entries
 from rhovane.settings import Settings, load_settings

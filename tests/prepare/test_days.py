@@ -3,6 +3,7 @@
 import datetime as dt
 
 import pytest
+
 from rhovane.prepare import days_of
 
 DAYS = days_of(dt.timedelta(hours=1))
@@ -13,7 +14,9 @@ def test_a_day_begins_at_midnight_of_standard_time():
     assert start == dt.datetime(2025, 2, 9, 23, tzinfo=dt.UTC)
 
 
-@pytest.mark.parametrize("day", [dt.date(2025, 3, 30), dt.date(2025, 10, 26), dt.date(2024, 2, 29), dt.date(2024, 12, 31)])
+@pytest.mark.parametrize(
+    "day", [dt.date(2025, 3, 30), dt.date(2025, 10, 26), dt.date(2024, 2, 29), dt.date(2024, 12, 31)]
+)
 def test_every_day_has_24_hours_also_when_the_civil_clock_changes(day: dt.date):
     assert DAYS.end_of(day) - DAYS.start_of(day) == 24 * 3600
     assert DAYS.end_of(day) == DAYS.start_of(day + dt.timedelta(days=1))

@@ -5,6 +5,7 @@ from zoneinfo import ZoneInfo
 
 import numpy as np
 import pytest
+
 from rhovane.model import Series
 from rhovane.prepare import Grid, kept_hours, to_grid
 from rhovane.prepare.masks import civil_calendar, in_sector, offsets_s

@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+
 import rhovane_demo
 from rhovane.model import ExitCode, Flag, SettingsError
 from rhovane.settings import Settings, load_settings, parse_offset, settings_from
@@ -156,7 +157,10 @@ def test_recipes_that_differ_in_numbers_differ_in_hash_and_labels_do_not():
     labelled["pair"][0]["label"] = "neighbours"
     lagged["pair"][0]["lags"] = [0, 1]
     windowed["correlation"] = {"window_hours": 336}
-    hashes = [s.pair_of(s.pair[0]).recipe_hash for s in (settings_from(r, PLACE) for r in (labelled, lagged, windowed))]
+    hashes = [
+        s.pair_of(s.pair[0]).recipe_hash
+        for s in (settings_from(r, PLACE) for r in (labelled, lagged, windowed))
+    ]
     own = base.pair_of(base.pair[0]).recipe_hash
     assert hashes[0] == own
     assert len({own, *hashes[1:]}) == 3

@@ -4,6 +4,7 @@ import dataclasses
 
 import numpy as np
 import pytest
+
 from rhovane.stats.daily_scores import DailyScores
 from rhovane.stats.resume import RECENT, WatchMemory
 from rhovane.stats.watch import Watch, watch
@@ -52,7 +53,9 @@ def assert_equal(ours: Watch, theirs: Watch, what: str) -> None:
     assert ours.incidents == theirs.incidents, what
     for f in dataclasses.fields(Watch):
         if f.name not in ("incidents", "recipe"):
-            np.testing.assert_array_equal(getattr(ours, f.name), getattr(theirs, f.name), err_msg=f"{what} {f.name}")
+            np.testing.assert_array_equal(
+                getattr(ours, f.name), getattr(theirs, f.name), err_msg=f"{what} {f.name}"
+            )
 
 
 @pytest.mark.parametrize("seed", [1, 2])

@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+
 from rhovane.stats import window_scan, window_table
 
 
@@ -32,7 +33,9 @@ def test_every_window_is_that_of_the_one_window_scan(seed: int, method: str):
             x[: end + 1], y[: end + 1], window=window, lags=lags, method=method, min_pairs=int(fewest[row])
         )
         for name in ("statistic", "n_pairs", "n_effective", "p_value"):
-            np.testing.assert_array_equal(getattr(table, name)[row], getattr(scan, name), err_msg=f"{name} {end}")
+            np.testing.assert_array_equal(
+                getattr(table, name)[row], getattr(scan, name), err_msg=f"{name} {end}"
+            )
         assert table.reason[row] == list(scan.reason)
         np.testing.assert_array_equal(table.low[row, 1], scan.low[1])
         np.testing.assert_array_equal(table.high[row, 1], scan.high[1])

@@ -47,4 +47,6 @@ def hints_for(first: str, second: str, direction: str) -> tuple[str, ...]:
         return (
             f"consistent with a fault of one {q1} sensor or its logger's clock; compare both with a third",
         )
-    return ("consistent with a new or vanished source, a sensor fault, or a change of season; compare both series",)
+    return (
+        "consistent with a new or vanished source, a sensor fault, or a change of season; compare both series",
+    )

@@ -95,10 +95,10 @@ def reconcile(
         match = matched.get(alert.id)
         if match is None:
             if not standing.superseded and alert.night_as_of < night_as_of:
-                note = "the evidence as it stands now (readings revised since, or settings) no longer shows it"
-                written.append(
-                    AlertEvent(alert.id, EventKind.SUPERSEDED, at, "rhovane", note, last_of_night)
+                note = (
+                    "the evidence as it stands now (readings revised since, or settings) no longer shows it"
                 )
+                written.append(AlertEvent(alert.id, EventKind.SUPERSEDED, at, "rhovane", note, last_of_night))
             continue
         if standing.superseded:
             note = "the evidence as it stands now shows this change again"

@@ -14,7 +14,6 @@ from rhovane.cli.wording import short_state
 from rhovane.model import EventKind, Outcome
 
 if TYPE_CHECKING:
-    from rhovane.settings import Settings
     from rhovane.store import Store
 
 
@@ -37,7 +36,7 @@ def _record(
 @main.command()
 @by_a_person
 @writes_store
-def acknowledge(settings: Settings, store: Store, alert_id: int, who: str, note: str) -> None:
+def acknowledge(store: Store, alert_id: int, who: str, note: str) -> None:
     """Record that you have seen an alert and are dealing with it."""
     _record(store, alert_id, EventKind.ACKNOWLEDGED, who, note, {})
 
@@ -45,12 +44,13 @@ def acknowledge(settings: Settings, store: Store, alert_id: int, who: str, note:
 @main.command()
 @by_a_person
 @click.option(
-    "--until", type=click.DateTime(formats=["%Y-%m-%d"]), required=True, help="When it comes back, YYYY-MM-DD."
+    "--until",
+    type=click.DateTime(formats=["%Y-%m-%d"]),
+    required=True,
+    help="When it comes back, YYYY-MM-DD.",
 )
 @writes_store
-def shelve(
-    settings: Settings, store: Store, alert_id: int, who: str, note: str, until: dt.datetime
-) -> None:
+def shelve(store: Store, alert_id: int, who: str, note: str, until: dt.datetime) -> None:
     """Put an alert aside until a date; it comes back by itself."""
     _record(store, alert_id, EventKind.SHELVED, who, note, {"until": until.date().isoformat()})
 
@@ -68,7 +68,7 @@ def _outcome(_ctx: click.Context, _param: click.Parameter, text: str) -> str:
 @by_a_person
 @click.argument("found", metavar="OUTCOME", callback=_outcome)
 @writes_store
-def outcome(settings: Settings, store: Store, alert_id: int, who: str, note: str, found: str) -> None:
+def outcome(store: Store, alert_id: int, who: str, note: str, found: str) -> None:
     """Record what was behind an alert.
 
     OUTCOME is one of: instrument, data-handling, real-change, weather-or-season, false, undetermined.

@@ -21,7 +21,7 @@ from rhovane.stats.compile_ahead import PARTS
 from rhovane.store import Store
 from rhovane_demo import settings_text
 from rhovane_demo.feed import deliveries, write_files
-from rhovane_demo.planted import BY_ID, TABLE, answers
+from rhovane_demo.planted import TABLE, answers
 from rhovane_demo.world import make_world
 
 NIGHT_HOUR = dt.time(3, 40)
@@ -100,7 +100,6 @@ class Demonstration:
         *,
         nights: int | None,
         tell: Callable[[dt.date, int, int], None],
-        now: Callable[[], dt.datetime],
     ) -> Walked:
         """Deliver each day's files and run its night, oldest first; goes on where an earlier demo stopped.
 
@@ -130,9 +129,7 @@ class Demonstration:
         for process in compiling:
             process.wait()
         walked = Walked()
-        for report in walk_nights(
-            self.settings, store, archive, last, moment_of=moment, before_each=deliver
-        ):
+        for report in walk_nights(self.settings, store, archive, last, moment_of=moment, before_each=deliver):
             walked.nights += 1
             walked.incomplete += report.outcome != "complete"
             walked.new += report.counts.get("readings new", 0)
@@ -199,7 +196,9 @@ def planted_lines(
         elif mine:
             first = min(mine, key=lambda e: e.alert.alarm_day)
             after = (first.alert.alarm_day - event.first).days + 1
-            told = f"alert {first.alert.id} on day {after}" + (f", {len(mine)} alerts" if len(mine) > 1 else "")
+            told = f"alert {first.alert.id} on day {after}" + (
+                f", {len(mine)} alerts" if len(mine) > 1 else ""
+            )
         else:
             told = "no alert" + (" (as it should be)" if event.kind != "change" else "")
         lines.append(f"  {event.id:<4} {event.kind:<10} {event.first}  {told:<26} {event.what}"[:118])

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import functools
+import inspect
 import json
 from collections.abc import Callable
 from pathlib import Path
@@ -68,22 +69,26 @@ def with_json(command: Callable[..., Any]) -> Callable[..., Any]:
 
 
 def reads_store(command: Callable[..., Any]) -> Callable[..., Any]:
-    """Load the settings, open the store for reading, and pass both to the command."""
+    """Load the settings, open the store for reading, and pass it (and ``settings`` if asked for) on."""
     return _opens_store(command, read_only=True)
 
 
 def writes_store(command: Callable[..., Any]) -> Callable[..., Any]:
-    """Load the settings, open the store for writing, and pass both to the command."""
+    """Load the settings, open the store for writing, and pass it (and ``settings`` if asked for) on."""
     return _opens_store(command, read_only=False)
 
 
 def _opens_store(command: Callable[..., Any], *, read_only: bool) -> Callable[..., Any]:
+    wants_settings = "settings" in inspect.signature(command).parameters
+
     @with_settings
     @functools.wraps(command)
     def run(config: Path, **options: Any) -> Any:
         settings = settings_at(config)
+        if wants_settings:
+            options["settings"] = settings
         with store_of(settings, read_only=read_only) as store:
-            return command(settings=settings, store=store, **options)
+            return command(store=store, **options)
 
     return run
 

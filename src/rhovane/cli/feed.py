@@ -54,7 +54,9 @@ def check(config: Path, as_json: bool) -> None:
 
 @main.command()
 @click.argument("files", nargs=-1, type=click.Path(path_type=Path, dir_okay=False))
-@click.option("--source", "source_name", default=None, help="Source the FILES belong to; default: by its pattern.")
+@click.option(
+    "--source", "source_name", default=None, help="Source the FILES belong to; default: by its pattern."
+)
 @writes_store
 @with_json
 def ingest(

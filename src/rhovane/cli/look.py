@@ -37,7 +37,7 @@ def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool) ->
 @click.argument("alert_id", metavar="ID", type=int)
 @reads_store
 @with_json
-def alert(settings: Settings, store: Store, alert_id: int, as_json: bool) -> None:
+def alert(store: Store, alert_id: int, as_json: bool) -> None:
     """Show one alert in full: before and after, evidence, what it rests on, its log."""
     from rhovane.review import alert_entry
 

@@ -52,12 +52,8 @@ def nightly(settings: Settings, store: Store, as_of: dt.datetime | None) -> None
     default=None,
     help="First day to compute again, YYYY-MM-DD; default: the first day with readings.",
 )
-@click.option(
-    "--as-of", type=DATE, default=None, help="Last day; default: the last day of the newest night."
-)
-def recompute(
-    settings: Settings, store: Store, since: dt.datetime | None, as_of: dt.datetime | None
-) -> None:
+@click.option("--as-of", type=DATE, default=None, help="Last day; default: the last day of the newest night.")
+def recompute(settings: Settings, store: Store, since: dt.datetime | None, as_of: dt.datetime | None) -> None:
     """Compute windows, evidence and alerts again from the stored readings, reading no files."""
     from rhovane.pipeline import STEPS, run_night
     from rhovane.prepare import days_of
@@ -117,4 +113,4 @@ def _with_progress(show: Any, store: Store, nights: int | None) -> Any:
         def tell(day: dt.date, done: int, total: int) -> None:
             bar.update(task, description=f"night {day}", completed=done, total=total)
 
-        return show.walk(store, nights=nights, tell=tell, now=utc_now)
+        return show.walk(store, nights=nights, tell=tell)

@@ -152,7 +152,8 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
     if status.silent_series:
         lines.append("Series behind:")
         lines += [
-            f"  {s['series']}: " + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
+            f"  {s['series']}: "
+            + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
             for s in status.silent_series
         ]
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")

@@ -4,7 +4,6 @@ from rhovane.model.alerts import Alert, AlertEvent, AlertState, CorrelationEstim
 from rhovane.model.errors import (
     ExitCode,
     FeedError,
-    NightIncomplete,
     NotFound,
     RhovaneError,
     SettingsError,
@@ -24,7 +23,6 @@ __all__ = [
     "FeedError",
     "Flag",
     "IngestOutcome",
-    "NightIncomplete",
     "NotFound",
     "Outcome",
     "Pair",

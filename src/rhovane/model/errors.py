@@ -3,7 +3,6 @@
 RhovaneError
 ├── SettingsError       a mistake in the settings file          exit 2
 ├── FeedError           a feed file that cannot be read at all  exit 1 (the night goes on without it)
-├── NightIncomplete     a night ended with failed parts         exit 4
 ├── StoreLocked         another process holds the store         exit 5
 ├── StoreDamaged        the store contradicts itself            exit 6
 └── NotFound            an alert, pair or series is not known   exit 1
@@ -40,12 +39,6 @@ class SettingsError(RhovaneError):
 
 class FeedError(RhovaneError):
     """A feed file cannot be read at all (missing, empty, wrong form)."""
-
-
-class NightIncomplete(RhovaneError):
-    """A night ended, but parts of it failed; the night ledger says which."""
-
-    exit_code = ExitCode.NIGHT_INCOMPLETE
 
 
 class StoreLocked(RhovaneError):

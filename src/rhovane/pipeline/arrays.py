@@ -43,8 +43,7 @@ def load_grid(
     days: Days = days_of(settings.network.standard_offset)
     start, end = days.start_of(first), days.end_of(last)
     names = sorted(set(keys))
-    found = store.read_readings(
-        names, days.moment(start), days.moment(end), max_ingest_id=max_ingest_id)
+    found = store.read_readings(names, days.moment(start), days.moment(end), max_ingest_id=max_ingest_id)
     known = {s.key: s for s in settings.domain_series()}
     return to_grid(
         [known[name] for name in names],

@@ -131,7 +131,9 @@ def run_night(
         outcome = "failed"
         step = steps[len(outcomes)][0] if len(outcomes) < len(steps) else "ledger"
         night.failed(step, "the whole step", f"{type(error).__name__}: {error}")
-        outcomes.append(StepOutcome(step, 0.0, "failed; nothing of the night's results was kept", tuple(night.troubles)))
+        outcomes.append(
+            StepOutcome(step, 0.0, "failed; nothing of the night's results was kept", tuple(night.troubles))
+        )
         _finish(night, outcome, outcomes)
     return NightReport(night.id, as_of, outcome, tuple(outcomes), tuple(night.troubles), night.counts)
 
@@ -146,7 +148,9 @@ def _run_steps(steps: list[Step], night: Night, outcomes: list[StepOutcome]) -> 
         outcomes.append(StepOutcome(name, seconds, summary, tuple(night.troubles[known:])))
 
 
-def _finish(night: Night, outcome: Literal["complete", "incomplete", "failed"], outcomes: list[StepOutcome]) -> None:
+def _finish(
+    night: Night, outcome: Literal["complete", "incomplete", "failed"], outcomes: list[StepOutcome]
+) -> None:
     night.store.finish_night(
         night.id,
         now=night.now,

@@ -11,8 +11,8 @@ from rhovane.pipeline.arrays import PairArrays
 from rhovane.pipeline.context import HOUR_S, Night, WatchedPair
 from rhovane.prepare import Grid
 from rhovane.settings import CorrelationSettings
+from rhovane.stats.pair_windows import WindowTable, window_table
 from rhovane.stats.partial import partial_window
-from rhovane.stats.window_table import WindowTable, window_table
 
 STEP = "windows"
 FEWEST_PAIRS = 24  # hours; below one day's worth a window of a masked pair is not computed

@@ -25,9 +25,7 @@ def logged_events(store: Store) -> dict[int, list[AlertEvent]]:
 def log_alerts(store: Store, alerts: Sequence[Alert]) -> None:
     """Record the facts of new alerts; they must carry the next numbers of the log."""
     new = [
-        NewAlert(
-            a.pair_key, a.alarm_day, a.night_id, {k: v for k, v in a.as_json().items() if k != "id"}
-        )
+        NewAlert(a.pair_key, a.alarm_day, a.night_id, {k: v for k, v in a.as_json().items() if k != "id"})
         for a in alerts
     ]
     numbers = store.append_alerts(new)

@@ -30,7 +30,9 @@ def load_settings(path: Path) -> Settings:
     except OSError as error:
         raise SettingsError(f"{path}: cannot be read ({error.strerror}).") from error
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
-        raise SettingsError(f"{path}: not valid TOML: {error}. Nothing was run. Edit the file and retry.") from error
+        raise SettingsError(
+            f"{path}: not valid TOML: {error}. Nothing was run. Edit the file and retry."
+        ) from error
     return settings_from(raw, path)
 
 
@@ -90,7 +92,9 @@ def _key(loc: tuple[Any, ...], raw: dict[str, Any]) -> str:
         except (KeyError, IndexError, TypeError):
             here = None
         if isinstance(part, int):
-            name = here.get("name") or here.get("key") or here.get("first") if isinstance(here, dict) else None
+            name = (
+                here.get("name") or here.get("key") or here.get("first") if isinstance(here, dict) else None
+            )
             text += f"[{part}]" + (f" ({name})" if name else "")
         else:
             text += ("." if text else "") + str(part)

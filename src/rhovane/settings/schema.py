@@ -109,7 +109,9 @@ class SourceSettings(Section):
     form: Literal["long csv", "wide csv", "long parquet", "wide parquet"]
     files: str = Field(min_length=1, description="Glob pattern relative to work_folder.")
     clock: str = Field(description='"UTC", a fixed offset "+01:00", or "civil ZONE"; must be declared.')
-    label: Literal["start", "end"] = Field(description="Whether a label names the start or end of its interval.")
+    label: Literal["start", "end"] = Field(
+        description="Whether a label names the start or end of its interval."
+    )
     step: str = Field("1h", description="Interval of the readings.")
     time_format: str = Field("%Y-%m-%d %H:%M", description="strptime pattern of the time column.")
     delimiter: str = Field(",", min_length=1, max_length=1)
@@ -174,7 +176,9 @@ class SourceSettings(Section):
         else:
             for name in ("station", "quantity", "value", "unit"):
                 if getattr(self.columns, name):
-                    raise ValueError(f"columns.{name} is for long forms; form {self.form!r} names series by column")
+                    raise ValueError(
+                        f"columns.{name} is for long forms; form {self.form!r} names series by column"
+                    )
         for code in self.units:
             if code not in self.series:
                 raise ValueError(f"units.{code}: not a code listed under series")
@@ -208,7 +212,6 @@ class SeriesSettings(Section):
     def quantity(self) -> str:
         """What is measured: the part of the key after the first dot."""
         return self.key.partition(".")[2]
-
 
 
 class SectorMask(Section):
@@ -364,7 +367,9 @@ class Settings(Section):
 
     def accepted_flags(self) -> frozenset[int]:
         """Flags of the readings that count as observations."""
-        return frozenset(int(Flag[word.upper().replace(" ", "_")]) for word in self.correlation.accepted_flags)
+        return frozenset(
+            int(Flag[word.upper().replace(" ", "_")]) for word in self.correlation.accepted_flags
+        )
 
     def mistakes(self) -> list[tuple[str, str]]:
         """Contradictions between sections, as (key, what is wrong and what to do)."""
@@ -380,10 +385,17 @@ class Settings(Section):
                 if key not in known:
                     found.append((where, f"series {key!r} is not defined; add a [[series]] with this key"))
                 if delivered.setdefault(key, source.step) != source.step:
-                    found.append((where, f"{key} comes with a step of {delivered[key]} elsewhere; one series has one step"))
+                    found.append(
+                        (
+                            where,
+                            f"{key} comes with a step of {delivered[key]} elsewhere; one series has one step",
+                        )
+                    )
         for i, one in enumerate(self.series):
             if one.key not in delivered:
-                found.append((f"series[{i}] ({one.key})", "no source delivers it; add it to a source's series table"))
+                found.append(
+                    (f"series[{i}] ({one.key})", "no source delivers it; add it to a source's series table")
+                )
         for i, pair in enumerate(self.pair):
             found += self._pair_mistakes(f"pair[{i}] ({pair.key})", pair, known)
         return found
@@ -406,7 +418,9 @@ class Settings(Section):
             found.append((where, "a series cannot be paired with itself"))
         for key in pair.adjusted_for:
             if key in (pair.first, pair.second):
-                found.append((f"{where}.adjusted_for", f"{key} is a member of the pair and cannot be its control"))
+                found.append(
+                    (f"{where}.adjusted_for", f"{key} is a member of the pair and cannot be its control")
+                )
             elif key not in known:
                 found.append((f"{where}.adjusted_for", f"series {key!r} is not defined"))
             elif known[key].kind == "circular":
@@ -414,7 +428,9 @@ class Settings(Section):
         if pair.sector is not None:
             direction = known.get(pair.sector.direction)
             if direction is None:
-                found.append((f"{where}.sector.direction", f"series {pair.sector.direction!r} is not defined"))
+                found.append(
+                    (f"{where}.sector.direction", f"series {pair.sector.direction!r} is not defined")
+                )
             elif direction.kind != "circular":
                 found.append((f"{where}.sector.direction", f'{direction.key} is not of kind "circular"'))
         lags = pair.lags or self.correlation.lags
@@ -422,7 +438,9 @@ class Settings(Section):
             found.append((f"{where}.lags", f"first lag {lags[0]} is after last lag {lags[1]}"))
         if max(abs(lags[0]), abs(lags[1])) > self.correlation.window_hours // 4:
             limit = self.correlation.window_hours // 4
-            found.append((f"{where}.lags", f"lags reach beyond a quarter of the window; stay within ±{limit} hours"))
+            found.append(
+                (f"{where}.lags", f"lags reach beyond a quarter of the window; stay within ±{limit} hours")
+            )
         return found
 
 

@@ -19,7 +19,7 @@ _HOME = {
     "RollingCorrelation": "rolling",
     "WindComponents": "wind",
     "WindowScan": "scan_window",
-    "WindowTable": "window_table",
+    "WindowTable": "pair_windows",
     "constancy_test": "constancy",
     "correlate_network": "correlation_network",
     "false_discovery": "multiplicity",
@@ -35,7 +35,7 @@ _HOME = {
     "wind_along": "wind",
     "wind_components": "wind",
     "window_scan": "scan_window",
-    "window_table": "window_table",
+    "window_table": "pair_windows",
 }
 
 __all__ = sorted(_HOME)

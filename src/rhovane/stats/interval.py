@@ -8,6 +8,10 @@ series the variance of rho is another one. With standardised midranks u, v let
 atanh(rho) is half the logarithm of the ratio of the variances of u + v and u - v, so its influence is
 (p² - q²)/2 and Bartlett's full variance becomes sums of squares of the autocorrelations P, Q of p, q and of
 their cross-correlations X, Y.
+
+Measured (tests/studies/significance, 19 kinds of data, n = 168, 336, 720, rho = 0 to .95): mean coverage 95.4 %,
+98.9 % of 285 cells within 91-98 %, 92.3 % within 93-97 %, median width 1.04 times that of an oracle. It fails
+where hour medians were removed inside the window and rho is .95 (86-90 %): remove cycles causally.
 """
 
 from __future__ import annotations

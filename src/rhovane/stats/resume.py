@@ -62,7 +62,7 @@ class ResumableReplay(Replay):
 
     def takes(self, n_days: int) -> bool:
         """Whether there is room for a history of this many days."""
-        return n_days <= self.score.shape[1] - SETTLING_DAYS
+        return n_days <= int(self.score.shape[1]) - SETTLING_DAYS
 
     def learn(self, score: Floats, weight: Floats, lagged: Floats) -> None:
         """Replace the days that are not judged yet by those of a longer (or revised) history."""
@@ -138,7 +138,7 @@ class WatchMemory:
 
 def _decided(ready: NDArray[np.int64], n_days: int) -> Sequence[int]:
     """First judged days as far as they concern the first days: later ones only need to stay later."""
-    return np.minimum(ready, n_days).tolist()
+    return [min(int(day), n_days) for day in ready]
 
 
 def _same(ours: Floats, theirs: Floats) -> bool:

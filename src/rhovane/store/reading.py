@@ -195,7 +195,9 @@ def _parquet_columns(connection: duckdb.DuckDBPyConnection, path: Path) -> dict[
 def _parquet_column(values: np.ndarray, kind: str) -> np.ndarray:
     if kind.startswith("DECIMAL"):
         return values.astype(float)
-    if kind == "TIMESTAMP WITH TIME ZONE":  # fetched as naive UTC; without its offset it would be taken for local
+    if (
+        kind == "TIMESTAMP WITH TIME ZONE"
+    ):  # fetched as naive UTC; without its offset it would be taken for local
         moments = values.astype("datetime64[us]").tolist()
         return np.array([t and t.replace(tzinfo=UTC) for t in moments], dtype=object)
     return values

@@ -1,7 +1,7 @@
 """Thresholds of the change chart on independent normal days: the tables of rhovane.stats.budget.
 
 Run from the repository root with src on the path: ``python tests/studies/alerting/thresholds.py [paths] [seed]``;
-about two minutes for 40,000 paths. Each path is one chart over a baseline and one year of nights, through the
+about one minute for 40,000 paths. Each path is one chart over a baseline and one year of nights, through the
 very functions that the watch uses; the threshold for a rate is the quantile exp(-rate) of the year's highest
 evidence.
 """

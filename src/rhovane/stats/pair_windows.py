@@ -106,15 +106,18 @@ def window_table(
         )
     fewest = np.broadcast_to(np.asarray(min_pairs, dtype=np.int64), ends.shape)
     if len(fewest) and (fewest.min() < 2 or fewest.max() > length):
-        raise ValueError(f"min_pairs reaches from {fewest.min()} to {fewest.max()}; 2 to {length} is allowed.")
+        raise ValueError(
+            f"min_pairs reaches from {fewest.min()} to {fewest.max()}; 2 to {length} is allowed."
+        )
     if chosen == "kendall":
         return _scanned(first, second, length, ends, fewest, leads, min_effective)
     reach = length + int(np.abs(leads).max(initial=0))
-    ranks = [np.concatenate((np.full(reach, -1, np.int32), dense_ranks(side)[0])) for side in (first, second)]
+    before = np.full(reach, -1, np.int32)
+    ranks_x, ranks_y = (np.concatenate((before, dense_ranks(side)[0])) for side in (first, second))
     shape = (len(ends), len(leads))
     sums = np.zeros((*shape, 4), dtype=np.int64)
-    tops = [int(side.max(initial=0)) + 1 for side in ranks]
-    fill_lag_sums(*ranks, *tops, ends + reach, length, leads, sums)
+    n_x, n_y = int(ranks_x.max(initial=0)) + 1, int(ranks_y.max(initial=0)) + 1
+    fill_lag_sums(ranks_x, ranks_y, n_x, n_y, ends + reach, length, leads, sums)
     n_pairs, xx, yy, xy = (sums[:, :, i] for i in range(4))
     code = np.select(
         [n_pairs < fewest[:, None], xx == 0, yy == 0], [TOO_FEW_PAIRS, CONSTANT_X, CONSTANT_Y], COMPUTED
@@ -126,7 +129,7 @@ def window_table(
     low, high = np.full(shape, np.nan), np.full(shape, np.nan)
     for row in np.flatnonzero(computed.any(axis=1)).tolist():
         base = _base_lag(leads, n_pairs[row], computed[row])
-        sides = _aligned(*ranks, int(ends[row]) + reach, length, int(leads[base]))
+        sides = _aligned(ranks_x, ranks_y, int(ends[row]) + reach, length, int(leads[base]))
         joint = joint_ranks(*sides)
         acf = autocorrelation(joint)
         factor = inflation(acf)
@@ -212,15 +215,16 @@ def _scanned(
         for end, few in zip(ends.tolist(), fewest.tolist(), strict=True)
     ]
 
-    def stacked(name: str) -> NDArray[np.generic]:
-        return np.array([getattr(scan, name) for scan in scans]).reshape(len(ends), len(lags))
+    def stacked(name: str) -> Floats:
+        rows = [getattr(scan, name) for scan in scans]
+        return np.array(rows, dtype=np.float64).reshape(len(ends), len(lags))
 
     at_zero = lags[None, :] == 0
     return WindowTable(
         ends,
         lags,
         stacked("statistic"),
-        stacked("n_pairs"),
+        stacked("n_pairs").astype(np.int64),
         stacked("n_effective"),
         stacked("p_value"),
         np.where(at_zero, stacked("low"), np.nan),
