@@ -7,21 +7,45 @@ GASES = frozenset({"NO2", "NO", "NOX", "O3", "SO2", "CO"})
 PARTICLES = frozenset({"PM10", "PM25", "PM2.5"})
 
 
-def hints_for(first: str, second: str, direction: str) -> tuple[str, ...]:
-    """Short sentences "consistent with …" for an alert on a pair.
+def hints_for(
+    first: str, second: str, direction: str, *, suspect: str = "", kind: str = "strength"
+) -> tuple[str, ...]:
+    """Short sentences "consistent with …" for an alert.
 
     Parameters
     ----------
     first, second : str
-        Series keys ``STATION.quantity``.
+        Series keys ``STATION.quantity`` of the pair whose evidence crossed.
     direction : str
         "weaker" or "stronger".
+    suspect : str
+        What is likeliest to have changed: "series KEY", "station NAME", or a pair.
+    kind : str
+        "strength", or "timing" where the best lag moved.
 
     Notes
     -----
     Drawn from common practice of the trade (which change leaves which mark on a pair); association is not
     cause, so every sentence names what to check.
     """
+    what, _, name = suspect.partition(" ")
+    if kind == "timing":
+        where = f" of {suspect}" if what in ("series", "station") else " of one of the two loggers"
+        return (
+            f"consistent with a clock{where} that slipped by a whole hour; check its time setting, also summer time",
+        )
+    if what == "series":
+        hints = [
+            f"consistent with the instrument behind {name} drifting or failing: its pairs changed, its partners' others held"
+        ]
+        if name.partition(".")[2] in PARTICLES:
+            hints.append("consistent with a blocked inlet or low flow; check the flow log")
+        return (*hints, "consistent with a source near that station only; check the site log")
+    if what == "station":
+        return (
+            f"consistent with something that concerns all of station {name}: logger, power, clock, or a source beside it; "
+            "check the site log",
+        )
     q1, q2 = first.partition(".")[2], second.partition(".")[2]
     sides = {q1, q2}
     if direction != "weaker":

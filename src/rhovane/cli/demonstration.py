@@ -21,10 +21,12 @@ from rhovane.stats.compile_ahead import PARTS
 from rhovane.store import Store
 from rhovane_demo import settings_text
 from rhovane_demo.feed import deliveries, write_files
-from rhovane_demo.planted import TABLE, answers
+from rhovane_demo.planted import BY_ID, TABLE, answers
 from rhovane_demo.world import make_world
 
 NIGHT_HOUR = dt.time(3, 40)
+LONGEST_LINE = 110
+LONGEST_EVENT_DAYS = 200  # a turning of the seasons lasts longer than any planted change
 ARCHIVE_DAYS = 90  # days taken in at once at the start: a reference is learnt on them, no alert is possible
 
 
@@ -154,7 +156,7 @@ class Demonstration:
         ]
         if self.events:
             answered = {e.alert.id: answer_of(e) for e in entries}
-            lines += alert_table(entries, {k: ", ".join(v) or "nothing planted" for k, v in answered.items()})
+            lines += alert_table(entries, {k: answer_words(v) for k, v in answered.items()})
             lines += ["", "Planted changes and what answers to them:"]
             lines += planted_lines(entries, answered, last.as_of if last else None)
         else:
@@ -179,9 +181,29 @@ class Demonstration:
 
 
 def answer_of(entry: AlertEntry) -> list[str]:
-    """Ids of the planted changes and decoys that an alert may answer to."""
+    """Id of the planted change or decoy that an alert answers to best; empty when there is none.
+
+    Changes come before decoys, the one that began nearest to the onset first; a turning of the seasons,
+    which lasts all the time, counts only where nothing else does.
+    """
     alert = entry.alert
-    return answers(alert.pair_key, alert.onset_day, alert.alarm_day)
+    pairs = (alert.pair_key, *alert.members)
+    found = {one for pair in pairs for one in answers(pair, alert.onset_day, alert.alarm_day)}
+    events = sorted(
+        (event for event in TABLE if event.id in found), key=lambda e: abs((e.first - alert.onset_day).days)
+    )
+    dated = [event for event in events if (event.last - event.first).days < LONGEST_EVENT_DAYS]
+    planted = [event for event in dated if event.kind in ("change", "blind spot")]
+    return [event.id for event in planted or dated or events][:1]
+
+
+def answer_words(ids: list[str]) -> str:
+    """What an alert answers to, in a few words."""
+    if not ids:
+        return "nothing planted"
+    return (
+        ", ".join(ids) if BY_ID[ids[0]].kind in ("change", "blind spot") else f"nothing planted ({ids[0]}?)"
+    )
 
 
 def planted_lines(
@@ -191,15 +213,17 @@ def planted_lines(
     lines = []
     for event in TABLE:
         mine = [e for e in entries if event.id in answered[e.alert.id]]
+        wanted = event.kind == "change"
         if last_day is not None and event.first > last_day:
             told = "not reached"
         elif mine:
             first = min(mine, key=lambda e: e.alert.alarm_day)
             after = (first.alert.alarm_day - event.first).days + 1
-            told = f"alert {first.alert.id} on day {after}" + (
-                f", {len(mine)} alerts" if len(mine) > 1 else ""
-            )
+            told = f"alert {first.alert.id} on day {after}" if wanted else f"alert {first.alert.id}"
+            told += f" (+{len(mine) - 1})" if len(mine) > 1 else ""
         else:
-            told = "no alert" + (" (as it should be)" if event.kind != "change" else "")
-        lines.append(f"  {event.id:<4} {event.kind:<10} {event.first}  {told:<26} {event.what}"[:118])
+            told = "MISSED" if wanted else "no alert, rightly"
+        lines.append(
+            f"  {event.id:<3} {event.kind:<10} {event.first}  {told:<20} {event.what}"[:LONGEST_LINE]
+        )
     return lines

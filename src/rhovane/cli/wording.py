@@ -68,16 +68,25 @@ def alert_table(entries: Sequence[AlertEntry], answers: dict[int, str] | None = 
     if not entries:
         return ["No alerts in the log."]
     last = "answers to" if answers is not None else "state"
-    head = f"{'id':>4}  {'alarm day':<10}  {'onset':<10}  {'pair':<27} {'before':>6} {'after':>6}  {last}"
+    head = f"{'id':>4}  {'alarm day':<10}  {'onset':<10}  {'what':<27} {'before':>6} {'after':>6}  {last}"
     lines = [head, "-" * min(WIDTH, len(head))]
     for entry in entries:
         a = entry.alert
         tail = answers.get(a.id, "-") if answers is not None else short_state(entry)
-        pair = a.pair_key if len(a.pair_key) <= 27 else a.pair_key[:26] + "…"
+        what = what_changed(entry)
+        what = what if len(what) <= 27 else what[:26] + "…"
         lines.append(
-            f"{a.id:>4}  {a.alarm_day}  {a.onset_day}  {pair:<27} {rho(a.before):>6} {rho(a.after):>6}  {tail}"
+            f"{a.id:>4}  {a.alarm_day}  {a.onset_day}  {what:<27} {rho(a.before):>6} {rho(a.after):>6}  {tail}"
         )
     return lines
+
+
+def what_changed(entry: AlertEntry) -> str:
+    """The suspect: a series or station with its number of pairs, or the pair itself."""
+    alert = entry.alert
+    if alert.suspect and not alert.suspect.startswith("pair "):
+        return f"{alert.suspect} ({len(alert.members)} pairs)"
+    return alert.pair_key
 
 
 def short_state(entry: AlertEntry) -> str:
@@ -95,8 +104,7 @@ def alert_lines(entry: AlertEntry) -> list[str]:
     a, standing = entry.alert, entry.standing
     facts = [
         ("state", short_state(entry) + (", change lasts" if standing.changed else "")),
-        ("suspect", a.suspect),
-        ("members", ", ".join(a.members) if len(a.members) > 1 else ""),
+        ("pairs", ", ".join(a.members) if len(a.members) > 1 else ""),
         ("alarm day", f"{a.alarm_day} (night of {a.night_as_of})"),
         ("onset", f"{a.onset_day} is the likeliest first day"),
         ("before", rho_in_full(a.before)),
@@ -108,7 +116,9 @@ def alert_lines(entry: AlertEntry) -> list[str]:
         ),
         *(("hint", hint) for hint in a.hints),
     ]
-    lines = [f"Alert {a.id}: {a.pair_key} became {a.direction}"]
+    lead = "" if a.suspect.startswith("pair ") or not a.suspect else f"{a.suspect}; "
+    timing = ", best lag moved" if a.kind == "timing" else ""
+    lines = [f"Alert {a.id}: {lead}{a.pair_key} became {a.direction}{timing}"]
     for name, text in facts:
         if text:
             lines += textwrap.wrap(text, WIDTH, initial_indent=f"  {name:<11}", subsequent_indent=" " * 13)

@@ -47,37 +47,42 @@ def judge_days(night: Night) -> str:
     return f"{n_days} days of {len(stale)} pairs, {n_days - n_scored} without enough joint hours"
 
 
-def _series_scores(
-    stale: list[WatchedPair], grid: Grid, first: dt.date, last: int
-) -> Mapping[str, SeriesScores]:
-    """Hourly scores once a series, all from the earliest day that any pair needs."""
-    begin = last
-    keys: set[str] = set()
+Shared = Mapping[tuple[str, bool], SeriesScores]
+
+
+def _series_scores(stale: list[WatchedPair], grid: Grid, first: dt.date, last: int) -> Shared:
+    """Hourly scores by series, and apart for pairs with and without controls: the former look back further.
+
+    Made once for all pairs that need them, from the earliest day that any of them needs, on all cores.
+    """
+    begin: dict[bool, int] = {}
+    needed: set[tuple[str, bool]] = set()
     for watched in stale:
         assert watched.stale_from is not None
         recipe = watched.recipe
-        before = lookback_days(0, controls=bool(recipe.adjusted_for))
-        begin = min(begin, max(0, (watched.stale_from - first).days - before))
-        keys.update((recipe.first, recipe.second, *recipe.adjusted_for))
-    names = sorted(keys)
+        adjusted = bool(recipe.adjusted_for)
+        day = max(0, (watched.stale_from - first).days - lookback_days(0, controls=adjusted))
+        begin[adjusted] = min(day, begin.get(adjusted, day))
+        needed.update((key, adjusted) for key in (recipe.first, recipe.second, *recipe.adjusted_for))
+    order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
 
-    def score(key: str) -> SeriesScores:
-        return series_scores(grid.column(key), range(begin, last + 1))
+    def score(one: tuple[str, bool]) -> SeriesScores:
+        key, adjusted = one
+        return series_scores(grid.column(key), range(begin[adjusted], last + 1))
 
-    with ThreadPoolExecutor(max_workers=min(len(names), available_threads())) as pool:
-        return dict(zip(names, pool.map(score, names), strict=True))
+    with ThreadPoolExecutor(max_workers=min(len(order), available_threads())) as pool:
+        return dict(zip(order, pool.map(score, order), strict=True))
 
 
-def _pair_days(
-    night: Night, watched: WatchedPair, shared: Mapping[str, SeriesScores], days: range
-) -> DailyScores:
+def _pair_days(night: Night, watched: WatchedPair, shared: Shared, days: range) -> DailyScores:
     recipe = watched.recipe
     mask = night.arrays(watched).mask
+    adjusted = bool(recipe.adjusted_for)
     return pair_scores(
-        shared[recipe.first],
-        shared[recipe.second],
+        shared[recipe.first, adjusted],
+        shared[recipe.second, adjusted],
         days=days,
-        controls=[shared[k] for k in recipe.adjusted_for],
+        controls=[shared[key, adjusted] for key in recipe.adjusted_for],
         keep=None if mask.everything else mask.kept,
     )
 

@@ -166,13 +166,14 @@ def _alert(night: Night, alert_id: int, found: Found, recipe: PairSettings) -> A
         after=after,
         members=found.members,
         suspect=found.suspect,
-        hints=hints_for(recipe.first, recipe.second, found.direction),
+        hints=hints_for(recipe.first, recipe.second, found.direction, suspect=found.suspect, kind=found.kind),
     )
 
 
 def _headline(alert: Alert) -> str:
+    lead = "" if alert.suspect.startswith("pair ") else f"{alert.suspect}: "
     return (
-        f"{alert.pair_key} became {alert.direction} from about {alert.onset_day}: "
+        f"{lead}{alert.pair_key} became {alert.direction} from about {alert.onset_day}: "
         f"evidence {alert.evidence:.2f} crossed {alert.threshold:.2f} on {alert.alarm_day}"
     )
 

@@ -78,11 +78,14 @@ class ResumableReplay(Replay):
                 self.usable[incident.pairs, known] = False
         self.n_known = end
 
-    def advance(self) -> tuple[Incident, ...]:
-        """Judge the days known but not judged; all incidents so far in order of their alarm day."""
+    def advance(self, memory: WatchMemory) -> tuple[Incident, ...]:
+        """Judge the days known but not judged, leaving their states in memory; all incidents so far."""
+        memory.forget_after(self.n_judged)
         for day in range(self.n_judged, self.n_known):
             self.judge(day)
-        self.n_judged = self.n_known
+            self.n_judged = day + 1
+            if _worth_keeping(self.n_judged, self.n_known):
+                memory.states.append(copy.deepcopy(self))
         return self.incidents()
 
 
@@ -124,16 +127,17 @@ class WatchMemory:
                 return going
         return ResumableReplay(score, weight, lagged, ready, structure, spans, false_alarms_per_year)
 
-    def keep(self, state: ResumableReplay) -> None:
-        """Remember where a replay stands; older states are thinned out."""
-        later = [s for s in self.states if s.n_judged < state.n_judged]
-        later.append(copy.deepcopy(state))
-        newest = state.n_judged
+    def forget_after(self, n_judged: int) -> None:
+        """Keep the states up to a number of judged days; older ones are thinned out."""
         self.states = [
-            s
-            for s in later
-            if newest - s.n_judged < RECENT or (s.n_judged % 7 == 0 and newest - s.n_judged < 7 * WEEKS)
+            s for s in self.states if s.n_judged <= n_judged and _worth_keeping(s.n_judged, n_judged)
         ]
+
+
+def _worth_keeping(n_judged: int, newest: int) -> bool:
+    """Whether a later night may go on from here: the last days, and once a week further back."""
+    age = newest - n_judged
+    return age < RECENT or (n_judged % 7 == 0 and age < 7 * WEEKS)
 
 
 def _decided(ready: NDArray[np.int64], n_days: int) -> Sequence[int]:

@@ -148,8 +148,7 @@ def watch(
         incidents = replay.run()
     else:
         replay = memory.resume(*history)
-        incidents = replay.advance()
-        memory.keep(replay)
+        incidents = replay.advance(memory)
     days = slice(0, len(day))
     return Watch(
         day,
