@@ -5,8 +5,12 @@ import numpy as np
 import pytest
 
 from ingest.small_network import NETWORK, long_source, only_reason, read_parquet, wide_source
-from rhovane.ingest import describe_rejections, find_files, parse_file
+from rhovane.ingest import describe_rejections, list_files, parse_file
 from rhovane.model import FeedError
+
+
+def paths_of(source, folder):
+    return [folder / file.place for file in list_files(source, folder)]
 
 
 def touch(folder: Path, *names: str) -> None:
@@ -18,39 +22,39 @@ def touch(folder: Path, *names: str) -> None:
 def test_files_are_found_sorted_and_folders_are_not_files(tmp_path):
     touch(tmp_path, "feed/b.csv", "feed/a.csv", "feed/c.txt", "feed/sub/d.csv", "other/e.csv")
     (tmp_path / "feed/folder.csv").mkdir()
-    assert find_files(long_source(), tmp_path) == [tmp_path / "feed/a.csv", tmp_path / "feed/b.csv"]
-    deep = find_files(long_source(files="feed/**/*.csv"), tmp_path)
+    assert paths_of(long_source(), tmp_path) == [tmp_path / "feed/a.csv", tmp_path / "feed/b.csv"]
+    deep = paths_of(long_source(files="feed/**/*.csv"), tmp_path)
     assert deep == [tmp_path / "feed/a.csv", tmp_path / "feed/b.csv", tmp_path / "feed/sub/d.csv"]
-    assert find_files(long_source(files="feed/c.txt"), tmp_path) == [tmp_path / "feed/c.txt"]
-    assert len(find_files(long_source(files="*/*.csv"), tmp_path)) == 3
+    assert paths_of(long_source(files="feed/c.txt"), tmp_path) == [tmp_path / "feed/c.txt"]
+    assert len(paths_of(long_source(files="*/*.csv"), tmp_path)) == 3
 
 
 def test_a_work_folder_with_wildcard_characters_in_its_name(tmp_path):
     folder = tmp_path / "net [1]*"
     touch(folder, "feed/a.csv")
-    assert find_files(long_source(), folder) == [folder / "feed/a.csv"]
+    assert paths_of(long_source(), folder) == [folder / "feed/a.csv"]
 
 
 def test_an_absolute_pattern(tmp_path):
     touch(tmp_path, "drop/a.csv")
     source = long_source(files=str(tmp_path / "drop" / "*.csv"))
-    assert find_files(source, tmp_path / "elsewhere") == [tmp_path / "drop/a.csv"]
+    assert paths_of(source, tmp_path / "elsewhere") == [tmp_path / "drop/a.csv"]
 
 
 @pytest.mark.parametrize("files", ["feed/*.csv", "feed/2024/*.csv", "feed/a.csv", "feed/**/*.csv"])
 def test_a_missing_folder_is_named_with_the_remedy(tmp_path, files):
     folder = (tmp_path / files).parent if "**" not in files else tmp_path / "feed"
     with pytest.raises(FeedError) as caught:
-        find_files(long_source(files=files), tmp_path)
+        paths_of(long_source(files=files), tmp_path)
     assert f"Source lab: there is no folder {folder}. Create it, or correct files" in str(caught.value)
 
 
 def test_a_folder_without_a_match_is_named(tmp_path):
     touch(tmp_path, "feed/a.txt")
     with pytest.raises(FeedError, match=r"no file in .*feed matches files = 'feed/\*\.csv'"):
-        find_files(long_source(), tmp_path)
+        paths_of(long_source(), tmp_path)
     with pytest.raises(FeedError, match="there is no folder"):
-        find_files(long_source(files="feed/a.txt/*.csv"), tmp_path)
+        paths_of(long_source(files="feed/a.txt/*.csv"), tmp_path)
 
 
 def test_a_folder_that_cannot_be_listed_is_not_an_empty_one(tmp_path, monkeypatch):
@@ -61,7 +65,7 @@ def test_a_folder_that_cannot_be_listed_is_not_an_empty_one(tmp_path, monkeypatc
 
     monkeypatch.setattr(os, "scandir", refuse)
     with pytest.raises(FeedError, match="cannot be listed \\(Permission denied\\)"):
-        find_files(long_source(), tmp_path)
+        paths_of(long_source(), tmp_path)
 
 
 def test_a_file_that_vanished_is_an_error(tmp_path):

@@ -27,7 +27,9 @@ from rhovane_demo.world import make_world
 NIGHT_HOUR = dt.time(3, 40)
 LONGEST_LINE = 110
 LONGEST_EVENT_DAYS = 200  # a turning of the seasons lasts longer than any planted change
-ARCHIVE_DAYS = 90  # days taken in at once at the start: a reference is learnt on them, no alert is possible
+ARCHIVE_DAYS = (
+    184  # days taken in at once at the start: the second half of 2024, as a network brings its archive
+)
 
 
 @dataclass

@@ -30,7 +30,7 @@ def caution_lines() -> list[str]:
 def night_lines(report: NightReport) -> list[str]:
     """What a night did."""
     lines = [f"Night of {report.as_of} (ledger {report.id}): {report.outcome}"]
-    lines += [f"  {step.name:<9} {step.seconds:6.2f} s  {step.summary}" for step in report.steps]
+    lines += [f"  {step.name:<13} {step.seconds:6.2f} s  {step.summary}" for step in report.steps]
     for trouble in report.troubles:
         lines += textwrap.wrap(
             f"failed: {trouble.part} ({trouble.step}): {trouble.reason}",
@@ -139,7 +139,7 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
         lines.append("NO NIGHT HAS RUN. Run `rhovane nightly`; until then silence means nothing.")
     else:
         lines.append(f"Last night: {last['as_of']}, {last['outcome']} (ledger {last['id']})")
-        lines += [f"  {step['step']:<9} {step['summary']}" for step in last["steps"]]
+        lines += [f"  {step['step']:<13} {step['summary']}" for step in last["steps"]]
         for step in last["steps"]:
             for failed in step["failed"]:
                 lines += textwrap.wrap(

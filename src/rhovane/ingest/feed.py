@@ -11,7 +11,6 @@ from typing import Any
 
 from rhovane.ingest.clock import whole_seconds
 from rhovane.ingest.csv_table import read_csv_table
-from rhovane.ingest.listing import list_files
 from rhovane.ingest.long_form import read_long
 from rhovane.ingest.parquet_table import check_parquet_bytes, read_parquet_table
 from rhovane.ingest.readings import Readings
@@ -22,24 +21,6 @@ from rhovane.settings import SeriesSettings, SourceSettings
 
 ReadParquet = Callable[[Path], Mapping[str, Sequence[Any]]]
 NEVER = datetime(1970, 1, 1, tzinfo=UTC)
-
-
-def find_files(source: SourceSettings, work_folder: Path) -> list[Path]:
-    """The paths of the files of a source, sorted.
-
-    Parameters
-    ----------
-    source : SourceSettings
-        Its ``files`` is a glob pattern relative to ``work_folder``; ``**`` crosses folders.
-    work_folder : Path
-
-    Raises
-    ------
-    FeedError
-        The folder does not exist or cannot be listed, or nothing in it matches. It concerns this source
-        alone: a caller with several sources notes it and goes on to the next.
-    """
-    return [work_folder / file.place for file in list_files(source, work_folder)]
 
 
 def parse_file(

@@ -74,12 +74,13 @@ def list_files(source: SourceSettings, work_folder: Path) -> list[ListedFile]:
 def _in_folder(folder: Path, prefix: str, name_pattern: str) -> Iterator[ListedFile]:
     """Files of one folder; hidden ones only where the pattern asks for them, as with glob."""
     fits = re.compile(fnmatch.translate(name_pattern)).match
+    before = "" if prefix == "." else f"{prefix}/"
+    hidden_too = name_pattern.startswith(".")
     with os.scandir(folder) as entries:
         for entry in entries:
-            if entry.name.startswith(".") and not name_pattern.startswith("."):
-                continue
-            if fits(entry.name) and entry.is_file():
-                yield _listed(entry.stat(), f"{prefix}/{entry.name}" if prefix != "." else entry.name)
+            name = entry.name
+            if fits(name) and (hidden_too or name[0] != ".") and entry.is_file():
+                yield _listed(entry.stat(), before + name)
 
 
 def _below(work_folder: Path, pattern: str) -> Iterator[ListedFile]:

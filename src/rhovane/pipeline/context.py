@@ -4,15 +4,20 @@ from __future__ import annotations
 
 import datetime as dt
 from collections.abc import Callable
+from concurrent.futures import Future
 from dataclasses import dataclass, field
 from typing import Any
 
+import numpy as np
+from numpy.typing import NDArray
+
 from rhovane.model import IngestOutcome, Pair
 from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
+from rhovane.pipeline.memory import NightMemory
 from rhovane.prepare import Days, Grid, days_of
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import HISTORY_DAYS
-from rhovane.stats.watch import WatchMemory
+from rhovane.stats.hourly_scores import SeriesScores
 from rhovane.store import NightRecord, Store
 
 HOUR_S = 3600
@@ -63,7 +68,8 @@ class Night:
     moment it runs (aware, UTC); only entry points read the clock. ``previous`` is the newest night that
     finished before; ``checkpoint_ingest`` whether reading the feed folds the write-ahead log into the
     file by itself (a whole night does so at its end, where ``checkpoint_night`` says so).
-    ``memory`` lets the watch go on from the night before in the same process; the result is the same.
+    ``memory`` lets a night go on from the one before in the same process; the result is the same.
+    ``scored`` is the evidence that this night computed.
     """
 
     settings: Settings
@@ -76,12 +82,14 @@ class Night:
     previous: NightRecord | None = None
     checkpoint_ingest: bool = True
     checkpoint_night: bool = True
-    memory: WatchMemory | None = None
+    memory: NightMemory | None = None
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
     watched: list[WatchedPair] = field(default_factory=list)
     counts: dict[str, Any] = field(default_factory=dict)
+    scored: dict[str, NDArray[np.generic]] = field(default_factory=dict)
+    hourly: dict[tuple[str, bool], Future[SeriesScores]] = field(default_factory=dict)
     _grid: Grid | None = None
     _arrays: dict[str, PairArrays] = field(default_factory=dict)
 
@@ -100,9 +108,13 @@ class Night:
             stale = [w for w in self.watched if w.stale_from is not None]
             lags = [abs(lag) for w in stale for lag in settings.lags_of(w.recipe)]
             reach = max(HISTORY_DAYS, (settings.correlation.window_hours + max(lags)) // 24 + 1)
-            first = min(w.stale_from for w in stale if w.stale_from) - dt.timedelta(days=reach)
-            keys = {k for w in stale for k in settings.series_of(w.recipe)}
-            self._grid = load_grid(settings, self.store, keys, first, self.as_of)
+            stale_from = min(w.stale_from for w in stale if w.stale_from)
+            first = stale_from - dt.timedelta(days=reach)
+            if self.memory is not None:
+                self._grid = self.memory.grid(settings, self.store, first, self.as_of, stale_from)
+            else:
+                keys = {k for w in stale for k in settings.series_of(w.recipe)}
+                self._grid = load_grid(settings, self.store, keys, first, self.as_of)
         return self._grid
 
     def arrays(self, watched: WatchedPair) -> PairArrays:

@@ -1,4 +1,8 @@
-"""Step "evidence": one number a day for every pair that is not up to date, from that day's readings on."""
+"""Steps "hourly scores" and "evidence": one number a day for every pair that is not up to date.
+
+The hourly scores of the series are compiled work without the interpreter lock: they are begun in threads of
+their own before the windows are computed, and collected by the evidence.
+"""
 
 from __future__ import annotations
 
@@ -10,7 +14,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.pipeline.context import Night, WatchedPair
-from rhovane.prepare import Grid
 from rhovane.stats.compiled import available_threads
 from rhovane.stats.daily_scores import DailyScores, lookback_days, pair_scores
 from rhovane.stats.hourly_scores import SeriesScores, series_scores
@@ -19,15 +22,44 @@ from rhovane.store import LATER_COLUMNS
 STEP = "evidence"
 
 
+def begin_hourly_scores(night: Night) -> str:
+    """Begin the hourly scores of every series that a stale pair needs, on all cores.
+
+    Once a series for the pairs with controls, which look back further, and once for those without; from
+    the earliest day that any of them needs.
+    """
+    stale = [w for w in night.watched if w.stale_from is not None]
+    if not stale:
+        return "nothing to begin"
+    grid = night.grid()
+    first = night.days.day_of(grid.start)
+    last = (night.as_of - first).days
+    begin: dict[bool, int] = {}
+    needed: set[tuple[str, bool]] = set()
+    for watched in stale:
+        assert watched.stale_from is not None
+        recipe = watched.recipe
+        adjusted = bool(recipe.adjusted_for)
+        day = max(0, (watched.stale_from - first).days - lookback_days(0, controls=adjusted))
+        begin[adjusted] = min(day, begin.get(adjusted, day))
+        needed.update((key, adjusted) for key in (recipe.first, recipe.second, *recipe.adjusted_for))
+    order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
+    workers = ThreadPoolExecutor(max_workers=min(len(order), available_threads()))
+    for key, adjusted in order:
+        days = range(begin[adjusted], last + 1)
+        night.hourly[key, adjusted] = workers.submit(series_scores, grid.column(key), days)
+    workers.shutdown(wait=False)
+    return f"{len(order)} series begun"
+
+
 def judge_days(night: Night) -> str:
     """Daily scores of every stale pair and day; written as evidence."""
     stale = [w for w in night.watched if w.stale_from is not None]
     if not stale:
         return "nothing to judge"
-    grid = night.grid()
-    first = night.days.day_of(grid.start)
+    first = night.days.day_of(night.grid().start)
     last = (night.as_of - first).days
-    shared = _series_scores(stale, grid, first, last)
+    shared = {key: scores.result() for key, scores in night.hourly.items()}
     columns: dict[str, list[NDArray[np.generic]]] = {}
     n_days = n_scored = 0
     for watched in stale:
@@ -43,38 +75,14 @@ def judge_days(night: Night) -> str:
         for name, values in _columns(watched, scores, first).items():
             columns.setdefault(name, []).append(values)
     if n_days:
-        night.store.write_evidence(night.id, {name: np.concatenate(parts) for name, parts in columns.items()})
+        night.scored = {name: np.concatenate(parts) for name, parts in columns.items()}
+        night.store.write_evidence(night.id, night.scored)
     return f"{n_days} days of {len(stale)} pairs, {n_days - n_scored} without enough joint hours"
 
 
-Shared = Mapping[tuple[str, bool], SeriesScores]
-
-
-def _series_scores(stale: list[WatchedPair], grid: Grid, first: dt.date, last: int) -> Shared:
-    """Hourly scores by series, and apart for pairs with and without controls: the former look back further.
-
-    Made once for all pairs that need them, from the earliest day that any of them needs, on all cores.
-    """
-    begin: dict[bool, int] = {}
-    needed: set[tuple[str, bool]] = set()
-    for watched in stale:
-        assert watched.stale_from is not None
-        recipe = watched.recipe
-        adjusted = bool(recipe.adjusted_for)
-        day = max(0, (watched.stale_from - first).days - lookback_days(0, controls=adjusted))
-        begin[adjusted] = min(day, begin.get(adjusted, day))
-        needed.update((key, adjusted) for key in (recipe.first, recipe.second, *recipe.adjusted_for))
-    order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
-
-    def score(one: tuple[str, bool]) -> SeriesScores:
-        key, adjusted = one
-        return series_scores(grid.column(key), range(begin[adjusted], last + 1))
-
-    with ThreadPoolExecutor(max_workers=min(len(order), available_threads())) as pool:
-        return dict(zip(order, pool.map(score, order), strict=True))
-
-
-def _pair_days(night: Night, watched: WatchedPair, shared: Shared, days: range) -> DailyScores:
+def _pair_days(
+    night: Night, watched: WatchedPair, shared: Mapping[tuple[str, bool], SeriesScores], days: range
+) -> DailyScores:
     recipe = watched.recipe
     mask = night.arrays(watched).mask
     adjusted = bool(recipe.adjusted_for)

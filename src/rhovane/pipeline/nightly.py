@@ -16,13 +16,13 @@ from typing import Any, Literal
 import rhovane
 from rhovane.model import ExitCode
 from rhovane.pipeline.context import Night, StepOutcome, Trouble
-from rhovane.pipeline.evidence import judge_days
+from rhovane.pipeline.evidence import begin_hourly_scores, judge_days
 from rhovane.pipeline.ingesting import read_feed
+from rhovane.pipeline.memory import NightMemory
 from rhovane.pipeline.raising import raise_alerts
 from rhovane.pipeline.stale import find_stale
 from rhovane.pipeline.windows import compute_windows
 from rhovane.settings import Settings
-from rhovane.stats.watch import WatchMemory
 from rhovane.store import Store
 
 Step = tuple[str, Callable[[Night], str]]
@@ -32,6 +32,7 @@ OWN_TRANSACTION = ("ingest",)  # commits by itself; all later steps share one tr
 STEPS: tuple[Step, ...] = (
     ("ingest", read_feed),
     ("stale", find_stale),
+    ("hourly scores", begin_hourly_scores),
     ("windows", compute_windows),
     ("evidence", judge_days),
     ("alerts", raise_alerts),
@@ -70,7 +71,7 @@ def run_night(
     kind: str = "nightly",
     recompute_from: dt.date | None = None,
     checkpoint: bool = True,
-    memory: WatchMemory | None = None,
+    memory: NightMemory | None = None,
 ) -> NightReport:
     """Run the steps of one night and write it to the ledger.
 
@@ -90,8 +91,8 @@ def run_night(
         Treat every pair as stale from this day on, whatever the ledger says.
     checkpoint : bool
         Fold the write-ahead log into the store file at the end; False only for one of many nights in a row.
-    memory : WatchMemory, optional
-        Handed from night to night of one process; saves replaying the watch from the beginning.
+    memory : NightMemory, optional
+        Handed from night to night of one process; saves reading and judging again what has not changed.
 
     Returns
     -------

@@ -9,12 +9,14 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rhovane import stats
 from rhovane.alerts import Found, hints_for, reconcile
 from rhovane.model import Alert, AlertEvent, CorrelationEstimate, EventKind
 from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
 from rhovane.pipeline.context import Night, WatchedPair
+from rhovane.pipeline.memory import Columns
 from rhovane.review import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import DailyScores
@@ -23,6 +25,7 @@ from rhovane.store import LATER_COLUMNS, Store
 
 STEP = "alerts"
 DAY = dt.timedelta(days=1)
+DAYS_APART = 1_000_000  # more days than any evidence spans; keeps the pairs apart in one number
 PROGRAM = "rhovane"
 FEWEST_PAIRS = 8  # hours; fewest pairs for the correlation after an onset that is only days old
 
@@ -33,10 +36,10 @@ def raise_alerts(night: Night) -> str:
     if newest is not None and newest.as_of > night.as_of:
         return f"the night of {newest.as_of} has judged later days; the log is left as it is"
     judged = [w for w in night.watched if w.pair.key not in night.counts.get("left", {})]
-    first_day, scores = stored_scores(night.store, judged, night.as_of)
+    first_day, scores = daily_scores(judged, all_evidence(night, judged), night.as_of)
     if first_day is None:
         return "no evidence yet"
-    seen = replay(night.settings, judged, scores, night.memory)
+    seen = replay(night.settings, judged, scores, None if night.memory is None else night.memory.watch)
     found = [_found(i, judged, first_day) for i in seen.incidents]
     alerts, events = logged_alerts(night.store), logged_events(night.store)
     change = reconcile(
@@ -60,15 +63,33 @@ def raise_alerts(night: Night) -> str:
     return f"{len(new)} new, {len(change.events) + len(ended)} changes of earlier ones"
 
 
-def stored_scores(
-    store: Store, watched: Sequence[WatchedPair], as_of: dt.date
+def all_evidence(night: Night, watched: Sequence[WatchedPair]) -> Columns:
+    """The evidence of the pairs up to the night's last day: from the store, or remembered with tonight's put in."""
+    recipes = [w.pair.recipe_hash for w in watched]
+    known = None if night.memory is None else night.memory.evidence(recipes)
+    if known is None:
+        known = night.store.read_evidence(
+            pair_keys=[w.pair.key for w in watched], recipe_hashes=recipes, end=night.as_of + DAY
+        )
+    elif night.scored:
+        place = {key: i for i, key in enumerate(w.pair.key for w in watched)}
+
+        def rows(columns: Columns) -> NDArray[np.int64]:
+            numbers = np.array([place[key] for key in columns["pair_key"]], dtype=np.int64)
+            return numbers * DAYS_APART + columns["day"].astype("datetime64[D]").astype(np.int64)
+
+        keep = ~np.isin(rows(known), rows(night.scored))
+        names = [name for name in known if name != "night_id"]
+        known = {name: np.concatenate((known[name][keep], night.scored[name])) for name in names}
+    if night.memory is not None:
+        night.memory.remember_evidence(recipes, known)
+    return known
+
+
+def daily_scores(
+    watched: Sequence[WatchedPair], found: Columns, as_of: dt.date
 ) -> tuple[dt.date | None, list[DailyScores]]:
-    """Daily scores of the pairs as the store holds them, on common days from the first with evidence on."""
-    found = store.read_evidence(
-        pair_keys=[w.pair.key for w in watched],
-        recipe_hashes=[w.pair.recipe_hash for w in watched],
-        end=as_of + DAY,
-    )
+    """Daily scores of the pairs from their evidence, on common days from the first with evidence on."""
     if len(found["day"]) == 0:
         return None, []
     first = found["day"].min().astype("datetime64[D]")

@@ -5,9 +5,9 @@ from __future__ import annotations
 import datetime as dt
 from collections.abc import Callable, Iterator
 
+from rhovane.pipeline.memory import NightMemory
 from rhovane.pipeline.nightly import NightReport, run_night
 from rhovane.settings import Settings
-from rhovane.stats.watch import WatchMemory
 from rhovane.store import Store
 
 DAY = dt.timedelta(days=1)
@@ -39,7 +39,7 @@ def walk_nights(
         Called with the date before its night, to deliver what arrived that day.
     """
     done = store.last_finished_night()
-    memory = WatchMemory()
+    memory = NightMemory()
     for day in nights_between(first, last):
         if done is not None and day <= done.as_of:
             continue

@@ -20,6 +20,7 @@ from rhovane.store.precedence import (
     group_by_hour,
     settle,
 )
+from rhovane.store.reading import KNOWN_FILES
 from rhovane.store.session import Session
 
 _COLUMNS = ("series_key", "hour_start", "value", "flag", "stage", "result_time", "line")
@@ -274,6 +275,10 @@ class ReadingWriter(Session):
         latest = {f.path: (f, o) for f, o in zip(files, outcomes, strict=True)}
         if not latest:
             return
+        if KNOWN_FILES in self._remembered:
+            self._remembered[KNOWN_FILES].update(
+                {path: (f.size_bytes, microseconds(f.modified) * 1000) for path, (f, _) in latest.items()}
+            )
         pairs = list(latest.values())
         columns = _text_columns(
             path=list(latest),

@@ -25,6 +25,9 @@ AS_OF_READINGS = """
 """
 
 
+KNOWN_FILES = "select path, size_bytes, mtime_ns from feed_file"
+
+
 @dataclass(frozen=True)
 class Readings:
     """Readings of some series as columns; the order of the rows is not defined.
@@ -114,10 +117,16 @@ class ReadingReader(Session):
 
         Only files of sources whose name begins with ``source_prefix``.
         """
-        found = self.rows(
-            "select path, size_bytes, mtime_ns from feed_file where starts_with(source, ?)", [source_prefix]
-        )
-        return {path: (size, mtime) for path, size, mtime in found}
+        if source_prefix:
+            found = self.rows(
+                "select path, size_bytes, mtime_ns from feed_file where starts_with(source, ?)",
+                [source_prefix],
+            )
+            return {path: (size, mtime) for path, size, mtime in found}
+        if KNOWN_FILES not in self._remembered:
+            found = self.rows(KNOWN_FILES)
+            self._remembered[KNOWN_FILES] = {path: (size, mtime) for path, size, mtime in found}
+        return self._remembered[KNOWN_FILES]
 
     def span_of(self, keys: Sequence[str]) -> dict[str, tuple[datetime, datetime]]:
         """First and last hour stored of each series that has readings."""

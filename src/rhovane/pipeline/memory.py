@@ -1,0 +1,59 @@
+"""What the nights of one process remember of each other, to save reading and judging it again.
+
+Nothing here changes a result: what is remembered is the store's own content up to the first stale day, and
+the state of the watch there. A night without memory reads and judges everything, to the same end.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rhovane.pipeline.arrays import load_grid
+from rhovane.prepare import Grid, days_of
+from rhovane.settings import Settings
+from rhovane.stats.watch import WatchMemory
+from rhovane.store import Store
+
+Columns = dict[str, NDArray[np.generic]]
+
+
+@dataclass
+class NightMemory:
+    """Grid and evidence as the night before left them, and the states of the watch."""
+
+    watch: WatchMemory = field(default_factory=WatchMemory)
+    _grid: Grid | None = None
+    _evidence: Columns | None = None
+    _recipes: tuple[str, ...] = ()
+
+    def grid(
+        self, settings: Settings, store: Store, first: dt.date, last: dt.date, stale_from: dt.date
+    ) -> Grid:
+        """Observations of all series from ``first`` to ``last``; only from ``stale_from`` on read anew."""
+        keys = sorted(s.key for s in settings.series)
+        known = self._grid
+        days = days_of(settings.network.standard_offset)
+        start, fresh = days.start_of(first), days.start_of(stale_from)
+        if known is None or known.keys != tuple(keys) or start < known.start or fresh <= start:
+            self._grid = load_grid(settings, store, keys, first, last)
+            return self._grid
+        kept = known.values[known.row_of(start) : known.row_of(fresh)]
+        if len(kept) != (fresh - start) // 3600:  # the night before ended earlier than the first stale day
+            self._grid = load_grid(settings, store, keys, first, last)
+            return self._grid
+        new = load_grid(settings, store, keys, stale_from, last)
+        self._grid = Grid(start, tuple(keys), np.concatenate((kept, new.values)))
+        return self._grid
+
+    def evidence(self, recipes: Sequence[str]) -> Columns | None:
+        """The evidence of these recipes as the night before left it; None when others were asked for."""
+        return self._evidence if tuple(recipes) == self._recipes else None
+
+    def remember_evidence(self, recipes: Sequence[str], columns: Columns) -> None:
+        """Keep the evidence of a night for the next one."""
+        self._recipes, self._evidence = tuple(recipes), columns
