@@ -121,10 +121,9 @@ class Demonstration:
         total = (last - archive).days + 1
         zone = dt.timezone(self.settings.network.standard_offset)
 
-        def deliver(day: dt.date) -> None:
+        def deliver(day: dt.date) -> list[Path]:
             days = nights_between(first, day) if day == archive else [day]
-            for one in days:
-                write_files(arriving[one], self.folder / "feed")
+            return [path for one in days for path in write_files(arriving[one], self.folder / "feed")]
 
         def moment(day: dt.date) -> dt.datetime:
             run_at = dt.datetime.combine(day + dt.timedelta(days=1), NIGHT_HOUR, zone)
@@ -133,7 +132,7 @@ class Demonstration:
         for process in compiling:
             process.wait()
         walked = Walked()
-        for report in walk_nights(self.settings, store, archive, last, moment_of=moment, before_each=deliver):
+        for report in walk_nights(self.settings, store, archive, last, moment_of=moment, arrivals=deliver):
             walked.nights += 1
             walked.incomplete += report.outcome != "complete"
             walked.new += report.counts.get("readings new", 0)

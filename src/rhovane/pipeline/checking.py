@@ -11,9 +11,16 @@ from pathlib import Path
 from typing import Any
 
 from rhovane.ingest import describe_rejections, list_files
-from rhovane.model import FeedError, IngestOutcome, RhovaneError
+from rhovane.model import FeedError, IngestOutcome
 from rhovane.pipeline.context import Night, Trouble
-from rhovane.pipeline.ingesting import append, parse_feed_file, parse_or_note, read_feed, shown_path
+from rhovane.pipeline.ingesting import (
+    append,
+    parse_feed_file,
+    parse_or_note,
+    read_feed,
+    shown_path,
+    source_of,
+)
 from rhovane.settings import Settings, SourceSettings
 from rhovane.store import Store
 
@@ -165,26 +172,9 @@ def ingest_now(
     else:
         parsed = []
         for path in files:
-            source = source_of(path, settings, source_name)
+            source = source_of(path.resolve(), settings, source_name)
             one = parse_or_note(night, path.resolve(), source, shown_path(path.resolve(), settings))
             if one is not None:
                 parsed.append(one)
         append(night, parsed)
     return Ingested(tuple(night.ingested), tuple(night.rejections), tuple(night.troubles))
-
-
-def source_of(path: Path, settings: Settings, source_name: str | None) -> SourceSettings:
-    """The source a file belongs to: the named one, or the one whose pattern it matches."""
-    names = [s.name for s in settings.source]
-    if source_name is not None:
-        for source in settings.source:
-            if source.name == source_name:
-                return source
-        raise RhovaneError(f"source {source_name!r} is not in the settings; known: {', '.join(names)}")
-    shown = Path(shown_path(path.resolve(), settings))
-    for source in settings.source:
-        if shown.match(source.files):
-            return source
-    raise RhovaneError(
-        f"{path}: matches the files of no source; name one with --source ({', '.join(names)}). Nothing was read."
-    )

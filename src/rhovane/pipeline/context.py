@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from concurrent.futures import Future
 from dataclasses import dataclass, field
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -69,7 +70,7 @@ class Night:
     finished before; ``checkpoint_ingest`` whether reading the feed folds the write-ahead log into the
     file by itself (a whole night does so at its end, where ``checkpoint_night`` says so).
     ``memory`` lets a night go on from the one before in the same process; the result is the same.
-    ``scored`` is the evidence that this night computed.
+    ``arrived`` are the feed files to look at; None: whatever the feed folders hold. ``scored`` is the evidence that this night computed.
     """
 
     settings: Settings
@@ -83,6 +84,7 @@ class Night:
     checkpoint_ingest: bool = True
     checkpoint_night: bool = True
     memory: NightMemory | None = None
+    arrived: Sequence[Path] | None = None
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)

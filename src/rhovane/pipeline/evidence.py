@@ -23,7 +23,7 @@ STEP = "evidence"
 
 
 def begin_hourly_scores(night: Night) -> str:
-    """Begin the hourly scores of every series that a stale pair needs, on all cores.
+    """Begin the hourly scores of every series that a stale pair needs, on all cores but one.
 
     Once a series for the pairs with controls, which look back further, and once for those without; from
     the earliest day that any of them needs.
@@ -44,7 +44,7 @@ def begin_hourly_scores(night: Night) -> str:
         begin[adjusted] = min(day, begin.get(adjusted, day))
         needed.update((key, adjusted) for key in (recipe.first, recipe.second, *recipe.adjusted_for))
     order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
-    workers = ThreadPoolExecutor(max_workers=min(len(order), available_threads()))
+    workers = ThreadPoolExecutor(max_workers=max(1, available_threads() - 1))
     for key, adjusted in order:
         days = range(begin[adjusted], last + 1)
         night.hourly[key, adjusted] = workers.submit(series_scores, grid.column(key), days)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 
 from rhovane.ingest import describe_rejections, list_files, parse_file
@@ -18,6 +18,21 @@ def read_feed(night: Night) -> str:
     """Read what arrived since the last look and append it to the store."""
     parsed: list[ParsedFile] = []
     known = night.store.known_files()
+    for source, place in _new_files(night, known):
+        one = parse_or_note(night, night.settings.work_folder / place, source, place)
+        if one is not None:
+            parsed.append(one)
+    append(night, parsed)
+    new, revised, rejected = (night.counts[k] for k in ("readings new", "readings revised", "rows rejected"))
+    return f"{len(parsed)} files: {new} readings new, {revised} revised, {rejected} rows rejected"
+
+
+def _new_files(night: Night, known: dict[str, tuple[int, int]]) -> Iterator[tuple[SourceSettings, str]]:
+    """Source and place of every file that arrived or changed since it was read last."""
+    if night.arrived is not None:
+        for path in night.arrived:
+            yield source_of(path, night.settings), shown_path(path, night.settings)
+        return
     for source in night.settings.source:
         try:
             listed = list_files(source, night.settings.work_folder)
@@ -25,14 +40,31 @@ def read_feed(night: Night) -> str:
             night.failed(STEP, f"source {source.name}", str(error))
             continue
         for file in listed:
-            if known.get(file.place) == (file.size_bytes, file.modified_ns):
-                continue
-            one = parse_or_note(night, night.settings.work_folder / file.place, source, file.place)
-            if one is not None:
-                parsed.append(one)
-    append(night, parsed)
-    new, revised, rejected = (night.counts[k] for k in ("readings new", "readings revised", "rows rejected"))
-    return f"{len(parsed)} files: {new} readings new, {revised} revised, {rejected} rows rejected"
+            if known.get(file.place) != (file.size_bytes, file.modified_ns):
+                yield source, file.place
+
+
+def source_of(path: Path, settings: Settings, source_name: str | None = None) -> SourceSettings:
+    """The source a file belongs to: the named one, or the one whose pattern it matches.
+
+    Raises
+    ------
+    RhovaneError
+        There is no such source, or the file matches the pattern of none.
+    """
+    names = [s.name for s in settings.source]
+    if source_name is not None:
+        for source in settings.source:
+            if source.name == source_name:
+                return source
+        raise RhovaneError(f"source {source_name!r} is not in the settings; known: {', '.join(names)}")
+    shown = Path(shown_path(path, settings))
+    for source in settings.source:
+        if shown.match(source.files):
+            return source
+    raise RhovaneError(
+        f"{path}: matches the files of no source; name one with --source ({', '.join(names)}). Nothing was read."
+    )
 
 
 def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) -> ParsedFile | None:

@@ -9,8 +9,9 @@ from __future__ import annotations
 
 import datetime as dt
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any, Literal
 
 import rhovane
@@ -72,6 +73,7 @@ def run_night(
     recompute_from: dt.date | None = None,
     checkpoint: bool = True,
     memory: NightMemory | None = None,
+    arrived: Sequence[Path] | None = None,
 ) -> NightReport:
     """Run the steps of one night and write it to the ledger.
 
@@ -93,6 +95,8 @@ def run_night(
         Fold the write-ahead log into the store file at the end; False only for one of many nights in a row.
     memory : NightMemory, optional
         Handed from night to night of one process; saves reading and judging again what has not changed.
+    arrived : sequence of Path, optional
+        The feed files to look at; default: whatever is new in the feed folders.
 
     Returns
     -------
@@ -112,6 +116,7 @@ def run_night(
         checkpoint_ingest=False,
         checkpoint_night=checkpoint,
         memory=memory,
+        arrived=arrived,
     )
     night.id = store.begin_night(
         kind=kind,

@@ -25,6 +25,8 @@ from rhovane.store import LATER_COLUMNS, Store
 
 STEP = "alerts"
 DAY = dt.timedelta(days=1)
+EPOCH = dt.date(1970, 1, 1)
+SCORES = ("innovation", "innovation_hours", "shape", "shape_hours", "course", "course_hours")
 DAYS_APART = 1_000_000  # more days than any evidence spans; keeps the pairs apart in one number
 PROGRAM = "rhovane"
 FEWEST_PAIRS = 8  # hours; fewest pairs for the correlation after an onset that is only days old
@@ -64,26 +66,36 @@ def raise_alerts(night: Night) -> str:
 
 
 def all_evidence(night: Night, watched: Sequence[WatchedPair]) -> Columns:
-    """The evidence of the pairs up to the night's last day: from the store, or remembered with tonight's put in."""
+    """The evidence of the pairs up to the night's last day: from the store, or remembered with tonight's put in.
+
+    The columns of the store, with ``pair`` (the position in ``watched``) in place of keys and recipes, and
+    ``day`` as days since 1970.
+    """
     recipes = [w.pair.recipe_hash for w in watched]
+    place = {w.pair.key: i for i, w in enumerate(watched)}
     known = None if night.memory is None else night.memory.evidence(recipes)
     if known is None:
-        known = night.store.read_evidence(
-            pair_keys=[w.pair.key for w in watched], recipe_hashes=recipes, end=night.as_of + DAY
-        )
+        found = night.store.read_evidence(pair_keys=list(place), recipe_hashes=recipes, end=night.as_of + DAY)
+        known = _numbered(found, place)
     elif night.scored:
-        place = {key: i for i, key in enumerate(w.pair.key for w in watched)}
-
-        def rows(columns: Columns) -> NDArray[np.int64]:
-            numbers = np.array([place[key] for key in columns["pair_key"]], dtype=np.int64)
-            return numbers * DAYS_APART + columns["day"].astype("datetime64[D]").astype(np.int64)
-
-        keep = ~np.isin(rows(known), rows(night.scored))
-        names = [name for name in known if name != "night_id"]
-        known = {name: np.concatenate((known[name][keep], night.scored[name])) for name in names}
+        fresh = _numbered(night.scored, place)
+        keep = ~np.isin(_row_numbers(known), _row_numbers(fresh))
+        known = {name: np.concatenate((known[name][keep], fresh[name])) for name in known}
     if night.memory is not None:
         night.memory.remember_evidence(recipes, known)
     return known
+
+
+def _numbered(columns: Columns, place: dict[str, int]) -> Columns:
+    return {
+        "pair": np.array([place[key] for key in columns["pair_key"]], dtype=np.int64),
+        "day": columns["day"].astype("datetime64[D]").astype(np.int64),
+        **{name: columns[name] for name in (*SCORES, *LATER_COLUMNS)},
+    }
+
+
+def _row_numbers(columns: Columns) -> NDArray[np.int64]:
+    return columns["pair"].astype(np.int64) * DAYS_APART + columns["day"].astype(np.int64)
 
 
 def daily_scores(
@@ -92,32 +104,23 @@ def daily_scores(
     """Daily scores of the pairs from their evidence, on common days from the first with evidence on."""
     if len(found["day"]) == 0:
         return None, []
-    first = found["day"].min().astype("datetime64[D]")
-    n_days = (np.datetime64(as_of, "D") - first).astype(int) + 1
-    row = (found["day"].astype("datetime64[D]") - first).astype(int)
-    scores = []
-    for watched_pair in watched:
-        mine = found["pair_key"] == watched_pair.pair.key
-        at = row[mine]
+    first = int(found["day"].min())
+    n_days = (as_of - EPOCH).days - first + 1
+    at = (found["pair"], found["day"] - first)
 
-        def column(name: str, empty: float, at=at, mine=mine) -> np.ndarray:
-            out = np.full(n_days, empty)
-            out[at] = found[name][mine]
-            return out
+    def table(name: str, empty: float) -> NDArray[np.float64]:
+        out = np.full((len(watched), n_days), empty)
+        out[at] = found[name]
+        return out
 
-        scores.append(
-            DailyScores(
-                np.arange(n_days, dtype=np.int64),
-                column("innovation", np.nan),
-                column("innovation_hours", 0.0),
-                column("shape", np.nan),
-                column("shape_hours", 0.0),
-                np.column_stack([column(name, np.nan) for name in LATER_COLUMNS]),
-                course=column("course", np.nan),
-                course_hours=column("course_hours", 0.0),
-            )
-        )
-    return first.astype(object), scores
+    tables = {name: table(name, 0.0 if name.endswith("_hours") else np.nan) for name in SCORES}
+    lagged = np.stack([table(name, np.nan) for name in LATER_COLUMNS], axis=-1)
+    day = np.arange(n_days, dtype=np.int64)
+    scores = [
+        DailyScores(day=day, lagged=lagged[i], **{name: values[i] for name, values in tables.items()})
+        for i in range(len(watched))
+    ]
+    return EPOCH + first * DAY, scores
 
 
 def replay(

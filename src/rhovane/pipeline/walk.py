@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
+from pathlib import Path
 
 from rhovane.pipeline.memory import NightMemory
 from rhovane.pipeline.nightly import NightReport, run_night
@@ -27,7 +28,7 @@ def walk_nights(
     last: dt.date,
     *,
     moment_of: Callable[[dt.date], dt.datetime],
-    before_each: Callable[[dt.date], None] = lambda _day: None,
+    arrivals: Callable[[dt.date], Sequence[Path]] | None = None,
 ) -> Iterator[NightReport]:
     """Run every night from the first to the last date that the ledger does not hold yet.
 
@@ -35,14 +36,16 @@ def walk_nights(
     ----------
     moment_of : callable
         The moment (aware) at which the night of a date is taken to run.
-    before_each : callable
-        Called with the date before its night, to deliver what arrived that day.
+    arrivals : callable, optional
+        The feed files that arrived for the night of a date; default: whatever is new in the feed folders.
     """
     done = store.last_finished_night()
     memory = NightMemory()
     for day in nights_between(first, last):
         if done is not None and day <= done.as_of:
             continue
-        before_each(day)
+        arrived = None if arrivals is None else arrivals(day)
         fold = day == last or day.toordinal() % NIGHTS_A_CHECKPOINT == 0
-        yield run_night(settings, store, as_of=day, now=moment_of(day), checkpoint=fold, memory=memory)
+        yield run_night(
+            settings, store, as_of=day, now=moment_of(day), checkpoint=fold, memory=memory, arrived=arrived
+        )
