@@ -128,7 +128,11 @@ def scales(z: Floats, day: int, guard_days: int) -> Floats:
                 if not np.isnan(product):
                     sums[h, lag] += product
                     counts[h, lag] += 1.0
-    pool, pool_counts = sums.sum(axis=0), counts.sum(axis=0)
+    pool, pool_counts = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1)
+    for h in range(n_charts):
+        for lag in range(SCALE_LAGS + 1):
+            pool[lag] += sums[h, lag]
+            pool_counts[lag] += counts[h, lag]
     out = np.empty(n_charts)
     for h in range(n_charts):
         out[h] = scale_from(sums[h], counts[h], pool, pool_counts)

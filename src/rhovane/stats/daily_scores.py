@@ -12,6 +12,7 @@ controls, and for the shape too keep the daily cycle: there the controls stand f
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, fields
 from typing import Any
@@ -27,6 +28,7 @@ from rhovane.stats.hourly_scores import (
     SeriesScores,
     checked_days,
     series_scores,
+    sort_present,
 )
 
 Floats = NDArray[np.float64]
@@ -250,6 +252,29 @@ def _day_scales(scores: SeriesScores, delay: int, controls: Sequence[SeriesScore
 
 
 @compiled
+def solve_positive(matrix: Floats, right: Floats) -> None:
+    """Solve a small positive definite system by Cholesky's method, in place; ``right`` becomes the solution.
+
+    Only the lower triangle of ``matrix`` is read.
+    """
+    n = len(right)
+    for i in range(n):
+        for j in range(i + 1):
+            total = matrix[i, j]
+            for m in range(j):
+                total -= matrix[i, m] * matrix[j, m]
+            matrix[i, j] = math.sqrt(max(total, 1e-300)) if i == j else total / matrix[j, j]
+    for i in range(n):
+        for m in range(i):
+            right[i] -= matrix[i, m] * right[m]
+        right[i] /= matrix[i, i]
+    for i in range(n - 1, -1, -1):
+        for m in range(i + 1, n):
+            right[i] -= matrix[m, i] * right[m]
+        right[i] /= matrix[i, i]
+
+
+@compiled
 def residuals(
     y: Floats, design: Floats, use: NDArray[np.bool_], begin: int, end: int, steps: int, fit_days: int
 ) -> Floats:
@@ -280,13 +305,11 @@ def residuals(
             continue
         for i in range(k):
             gram[i, i] += 1e-9 * n  # a control that stands still is left out rather than divided by
-            for j in range(i):
-                gram[j, i] = gram[i, j]
-        slope = np.linalg.solve(gram, moment)
+        solve_positive(gram, moment)
         for t in range(day * steps, (day + 1) * steps):
-            fitted = slope[0]
+            fitted = moment[0]
             for i in range(1, k):
-                fitted += slope[i] * design[i - 1, t]
+                fitted += moment[i] * design[i - 1, t]
             out[t] = y[t] - fitted
     return out
 
@@ -294,13 +317,14 @@ def residuals(
 @compiled
 def tied_share(values: Floats) -> float:
     """Share of the most frequent value."""
-    ordered = np.sort(values)
+    ordered = np.empty(len(values))
+    n = sort_present(values, ordered)
     longest = 1
     run = 1
-    for i in range(1, len(ordered)):
+    for i in range(1, n):
         run = run + 1 if ordered[i] == ordered[i - 1] else 1
         longest = max(longest, run)
-    return longest / len(ordered)
+    return longest / n
 
 
 @compiled

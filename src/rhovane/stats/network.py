@@ -137,19 +137,30 @@ def quantity_of(key: str) -> str:
     return key.partition(".")[2]
 
 
-@compiled
 def unrest(deviation: Floats, touches: Flags) -> Floats:
     """How restless the rest of the network is today, for each chart: 1 is usual.
 
     The median absolute deviation of the pairs that a chart does not touch, over that of a normal variable;
     NaN with fewer than six of them. ``deviation`` has shape (n_pairs,), ``touches`` (n_charts, n_pairs).
     """
-    out = np.full(len(touches), np.nan)
     size = np.abs(deviation)
+    order = np.argsort(size)[: int(np.isfinite(size).sum())]  # NaN sorts last
+    return medians_of_others(size, order, touches) / NORMAL_MEDIAN
+
+
+@compiled
+def medians_of_others(size: Floats, order: NDArray[np.int64], touches: Flags) -> Floats:
+    """Median of ``size`` (ascending in ``order``) over the pairs that each chart does not touch."""
+    out = np.full(len(touches), np.nan)
+    others = np.empty(len(order))
     for h in range(len(touches)):
-        others = size[~touches[h] & ~np.isnan(size)]
-        if len(others) >= LEAST_OTHER_PAIRS:
-            out[h] = np.median(others) / NORMAL_MEDIAN
+        n = 0
+        for p in order:
+            if not touches[h, p]:
+                others[n] = size[p]
+                n += 1
+        if n >= LEAST_OTHER_PAIRS:
+            out[h] = 0.5 * (others[(n - 1) // 2] + others[n // 2])
     return out
 
 
@@ -225,7 +236,7 @@ def add_class_movement(
     ``variance[k]`` is that of a class with *k* pairs observed (the last entry for larger ones), where the
     movement is scaled to a mean square of one over them.
     """
-    for number in np.unique(classes):
+    for number in range(classes.max() + 1):
         count = 0
         squares = 0.0
         for i in range(len(classes)):

@@ -138,9 +138,10 @@ def lag_products(
     x = np.zeros(n + BLOCK, np.int16)
     y = np.zeros(n + BLOCK, np.int16)
     seen = np.zeros(n + BLOCK, np.int16)
-    x[:n] = centred_x
-    y[:n] = centred_y
-    seen[:n] = joint
+    for t in range(n):  # a slice assignment would take seconds to compile
+        x[t] = centred_x[t]
+        y[t] = centred_y[t]
+        seen[t] = joint[t]
     xx = np.zeros(own_lags + 1, np.int64)
     yy = np.zeros(own_lags + 1, np.int64)
     count = np.zeros(own_lags + 1, np.int64)
