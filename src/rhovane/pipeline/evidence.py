@@ -44,12 +44,21 @@ def begin_hourly_scores(night: Night) -> str:
         begin[adjusted] = min(day, begin.get(adjusted, day))
         needed.update((key, adjusted) for key in (recipe.first, recipe.second, *recipe.adjusted_for))
     order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
+    fresh = (min(w.stale_from for w in stale if w.stale_from) - first).days
     workers = ThreadPoolExecutor(max_workers=max(1, available_threads() - 1))
-    for key, adjusted in order:
-        days = range(begin[adjusted], last + 1)
-        night.hourly[key, adjusted] = workers.submit(series_scores, grid.column(key), days)
+    for one in order:
+        days = range(begin[one[1]], last + 1)
+        known = None if night.memory is None else night.memory.scores(one, first, range(days.start, fresh))
+        night.hourly[one] = workers.submit(_hourly_scores, grid.column(one[0]), days, known)
     workers.shutdown(wait=False)
     return f"{len(order)} series begun"
+
+
+def _hourly_scores(values: NDArray[np.float64], days: range, known: SeriesScores | None) -> SeriesScores:
+    """Scores of a series; the days that are known already are not computed again."""
+    if known is None:
+        return series_scores(values, days)
+    return known.followed_by(series_scores(values, range(days.start + known.n_days, days.stop)))
 
 
 def judge_days(night: Night) -> str:
@@ -60,6 +69,8 @@ def judge_days(night: Night) -> str:
     first = night.days.day_of(night.grid().start)
     last = (night.as_of - first).days
     shared = {key: scores.result() for key, scores in night.hourly.items()}
+    if night.memory is not None:
+        night.memory.remember_scores(first, shared)
     columns: dict[str, list[NDArray[np.generic]]] = {}
     n_days = n_scored = 0
     for watched in stale:

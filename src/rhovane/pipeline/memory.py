@@ -7,7 +7,7 @@ the state of the watch there. A night without memory reads and judges everything
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -16,10 +16,12 @@ from numpy.typing import NDArray
 from rhovane.pipeline.arrays import load_grid
 from rhovane.prepare import Grid, days_of
 from rhovane.settings import Settings
+from rhovane.stats.hourly_scores import SeriesScores
 from rhovane.stats.watch import WatchMemory
 from rhovane.store import Store
 
 Columns = dict[str, NDArray[np.generic]]
+SeriesUse = tuple[str, bool]  # key, and whether for pairs with controls
 
 
 @dataclass
@@ -30,6 +32,8 @@ class NightMemory:
     _grid: Grid | None = None
     _evidence: Columns | None = None
     _recipes: tuple[str, ...] = ()
+    _findings: object = None
+    _scores: dict[SeriesUse, tuple[dt.date, SeriesScores]] = field(default_factory=dict)
 
     def grid(
         self, settings: Settings, store: Store, first: dt.date, last: dt.date, stale_from: dt.date
@@ -49,6 +53,25 @@ class NightMemory:
         new = load_grid(settings, store, keys, stale_from, last)
         self._grid = Grid(start, tuple(keys), np.concatenate((kept, new.values)))
         return self._grid
+
+    def scores(self, one: SeriesUse, first: dt.date, days: range) -> SeriesScores | None:
+        """Hourly scores of a series for days numbered from ``first``, if the nights before made all of them."""
+        if not days or one not in self._scores:
+            return None
+        known_first, known = self._scores[one]
+        begin = (first - known_first).days + days.start - known.first_day
+        end = begin + len(days)
+        return known.part(begin, end, first_day=days.start) if begin >= 0 and end <= known.n_days else None
+
+    def remember_scores(self, first: dt.date, scores: Mapping[SeriesUse, SeriesScores]) -> None:
+        """Keep hourly scores for the next night; their days are numbered from ``first``."""
+        self._scores.update({one: (first, known) for one, known in scores.items()})
+
+    def same_findings(self, findings: object) -> bool:
+        """Whether the watch found what it found the night before: then the log is in step already."""
+        same = findings == self._findings
+        self._findings = findings
+        return same
 
     def evidence(self, recipes: Sequence[str]) -> Columns | None:
         """The evidence of these recipes as the night before left it; None when others were asked for."""

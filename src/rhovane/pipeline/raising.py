@@ -43,6 +43,9 @@ def raise_alerts(night: Night) -> str:
         return "no evidence yet"
     seen = replay(night.settings, judged, scores, None if night.memory is None else night.memory.watch)
     found = [_found(i, judged, first_day) for i in seen.incidents]
+    recipes = {w.pair.key: w.pair.recipe_hash for w in judged}
+    if night.memory is not None and night.memory.same_findings((found, recipes)):
+        return "0 new, 0 changes of earlier ones"
     alerts, events = logged_alerts(night.store), logged_events(night.store)
     change = reconcile(
         found,
@@ -50,11 +53,11 @@ def raise_alerts(night: Night) -> str:
         events,
         at=night.now,
         night_as_of=night.as_of,
-        judged={w.pair.key: w.pair.recipe_hash for w in judged},
+        judged=recipes,
     )
     next_id = max((a.id for a in alerts), default=0) + 1
-    recipes = {w.pair.key: w.recipe for w in judged}
-    new = [_alert(night, next_id + i, f, recipes[f.pair_key]) for i, f in enumerate(change.new)]
+    recipe_of = {w.pair.key: w.recipe for w in judged}
+    new = [_alert(night, next_id + i, f, recipe_of[f.pair_key]) for i, f in enumerate(change.new)]
     if new:
         log_alerts(night.store, new)
     raised = [AlertEvent(a.id, EventKind.RAISED, night.now, PROGRAM, _headline(a)) for a in new]

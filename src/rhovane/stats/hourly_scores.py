@@ -15,7 +15,7 @@ that day alone or a study computes years at once.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 from numpy.typing import NDArray
@@ -83,6 +83,24 @@ class SeriesScores:
     def n_days(self) -> int:
         """How many days are scored."""
         return len(self.shape_sd)
+
+    def part(self, begin: int, end: int, *, first_day: int) -> SeriesScores:
+        """Rows ``begin`` to ``end``, the first of them numbered ``first_day``."""
+        arrays = (getattr(self, f.name)[begin:end] for f in fields(self) if f.name != "first_day")
+        return SeriesScores(first_day, *arrays)
+
+    def followed_by(self, later: SeriesScores) -> SeriesScores:
+        """These days and the ones right after them."""
+        if self.first_day + self.n_days != later.first_day:
+            raise ValueError(
+                f"days {later.first_day} on do not follow day {self.first_day + self.n_days - 1}; join neighbours only."
+            )
+        arrays = (
+            np.concatenate((getattr(self, f.name), getattr(later, f.name)))
+            for f in fields(self)
+            if f.name != "first_day"
+        )
+        return SeriesScores(self.first_day, *arrays)
 
 
 def series_scores(values: Floats, days: range | None = None, *, steps_per_day: int = 24) -> SeriesScores:
