@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import gc
 import shutil
 import subprocess
 import sys
@@ -130,10 +131,16 @@ class Demonstration:
             run_at = dt.datetime.combine(day + dt.timedelta(days=1), NIGHT_HOUR, zone)
             return run_at.astimezone(dt.UTC)
 
-        for process in compiling:
-            process.wait()
+        def before_step(step: str) -> None:
+            if step != "ingest":  # the first night needs compiled code from here on
+                while compiling:
+                    compiling.pop().wait()
+
+        gc.freeze()  # the feed's thousands of files need not be looked through again and again
         walked = Walked()
-        for report in walk_nights(self.settings, store, archive, last, moment_of=moment, arrivals=deliver):
+        for report in walk_nights(
+            self.settings, store, archive, last, moment_of=moment, arrivals=deliver, progress=before_step
+        ):
             walked.nights += 1
             walked.incomplete += report.outcome != "complete"
             walked.new += report.counts.get("readings new", 0)

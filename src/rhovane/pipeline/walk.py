@@ -12,7 +12,7 @@ from rhovane.settings import Settings
 from rhovane.store import Store
 
 DAY = dt.timedelta(days=1)
-NIGHTS_A_CHECKPOINT = 10  # nights of a walk after which the write-ahead log is folded into the store file
+NIGHTS_A_CHECKPOINT = 28  # nights of a walk after which the write-ahead log is folded into the store file
 
 
 def nights_between(first: dt.date, last: dt.date) -> Iterator[dt.date]:
@@ -29,6 +29,7 @@ def walk_nights(
     *,
     moment_of: Callable[[dt.date], dt.datetime],
     arrivals: Callable[[dt.date], Sequence[Path]] | None = None,
+    progress: Callable[[str], None] = lambda _step: None,
 ) -> Iterator[NightReport]:
     """Run every night from the first to the last date that the ledger does not hold yet.
 
@@ -38,6 +39,8 @@ def walk_nights(
         The moment (aware) at which the night of a date is taken to run.
     arrivals : callable, optional
         The feed files that arrived for the night of a date; default: whatever is new in the feed folders.
+    progress : callable
+        Called with the name of each step of each night as it begins.
     """
     done = store.last_finished_night()
     memory = NightMemory()
@@ -47,5 +50,12 @@ def walk_nights(
         arrived = None if arrivals is None else arrivals(day)
         fold = day == last or day.toordinal() % NIGHTS_A_CHECKPOINT == 0
         yield run_night(
-            settings, store, as_of=day, now=moment_of(day), checkpoint=fold, memory=memory, arrived=arrived
+            settings,
+            store,
+            as_of=day,
+            now=moment_of(day),
+            checkpoint=fold,
+            memory=memory,
+            arrived=arrived,
+            progress=progress,
         )

@@ -55,6 +55,16 @@ class ResumableReplay(Replay):
         self.n_judged = 0
         self.n_known = score.shape[1]
 
+    def copied(self) -> ResumableReplay:
+        """An independent copy; what never changes is shared."""
+        other = copy.copy(self)
+        for name, value in vars(self).items():
+            if isinstance(value, np.ndarray):
+                setattr(other, name, value.copy())
+        other.open = copy.deepcopy(self.open)
+        other.closed = list(self.closed)
+        return other
+
     def set_ready(self, ready: NDArray[np.int64]) -> None:
         """Take over the first judged days, where those still to come have moved."""
         self.ready = ready
@@ -85,7 +95,7 @@ class ResumableReplay(Replay):
             self.judge(day)
             self.n_judged = day + 1
             if _worth_keeping(self.n_judged, self.n_known):
-                memory.states.append(copy.deepcopy(self))
+                memory.states.append(self.copied())
         return self.incidents()
 
 
@@ -121,7 +131,7 @@ class WatchMemory:
                 and _same(state.weight[:, :n], weight[:, :n])
                 and _same(state.lagged[:, :n], lagged[:, :n])
             ):
-                going = copy.deepcopy(state)
+                going = state.copied()
                 going.set_ready(ready)
                 going.learn(score, weight, lagged)
                 return going
