@@ -77,9 +77,9 @@ def test_series_and_units_are_those_of_the_world(settings):
     assert {s.key for s in settings.series if s.kind == "accumulated"} == {"DOR.rain", "UVE.rain"}
 
 
-def test_pairs_are_25_and_distinct(settings):
+def test_pairs_are_24_and_distinct(settings):
     keys = [pair.key for pair in settings.pair]
-    assert len(keys) == len(set(keys)) == 25
+    assert len(keys) == len(set(keys)) == 24
     assert "KEL.traffic~KEL.NO2[adjusted]" in keys
     assert "SKA.lorries~SKA.PM10[20-90deg]" in keys
     assert "UVE.rain~DOR.rain[wet]" in keys
