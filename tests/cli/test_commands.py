@@ -7,6 +7,8 @@ import subprocess
 import sys
 from pathlib import Path
 
+import duckdb
+import pandas as pd
 import pytest
 from click.testing import CliRunner, Result
 
@@ -160,8 +162,16 @@ def test_exports_are_written_and_counted(config: str, tmp_path: Path, what: str,
     target = tmp_path / f"{what}{suffix}"
     result = run("export", what, str(target), "--config", config)
     assert result.exit_code == ExitCode.WELL
-    assert int(result.output.split()[0]) > 0
-    assert target.stat().st_size > 0
+    n = int(result.output.split()[0])
+    frame = pd.read_csv(target, comment="#") if suffix == ".csv" else None
+    table = duckdb.sql(f"from '{target}'").fetchall() if frame is None else frame.values.tolist()
+    assert len(table) == n > 0
+    if frame is not None:
+        assert target.read_text("utf-8").startswith("# Two stations")
+        assert "Association is not cause" in target.read_text("utf-8")[:600]
+    else:
+        about = duckdb.sql(f"select value from parquet_kv_metadata('{target}')").fetchall()
+        assert any("Association is not cause" in bytes(value).decode() for (value,) in about)
 
 
 def test_recompute_changes_no_result(config: str, tmp_path: Path):

@@ -12,8 +12,9 @@ from rhovane.settings import Settings
 from rhovane.store import Store
 
 CAUTION = (
-    "rhovane looks for changes in how series move together; it does not judge compliance or exposure. Association "
-    "is not cause. Results from unverified readings may change when readings are revised."
+    "rhovane looks for changes in how series move together; it does not measure exposure, judge compliance, forecast or warn "
+    "the public. Association is not cause. Results from unverified readings may change when readings are revised. Reference "
+    "methods, the network's quality system, local rules and competent judgement come first."
 )
 
 
@@ -44,10 +45,11 @@ def export_table(settings: Settings, store: Store, what: str, path: Path, now: d
         part.write_text(json.dumps(content, indent=2, ensure_ascii=False), encoding="utf-8")
         part.replace(path)
         return len(entries)
+    about = f"{settings.network.name}, written {now:%Y-%m-%dT%H:%MZ}. Times are UTC.\n{CAUTION}"
     match what:
         case "readings":
-            return store.export_readings(path)
+            return store.export_readings(path, about=about)
         case "windows":
-            return store.export_windows(path)
+            return store.export_windows(path, about=about)
         case _:
-            return store.export_alerts(path)
+            return store.export_alerts(path, about=about)

@@ -39,10 +39,11 @@ from alert a left join alert_event e on e.alert_id = a.id order by a.id, e.seq
 class Exports(Session):
     """Writing of whole tables to files; the name's ending (.csv, .parquet) decides the form.
 
-    Times are naive UTC. A file that exists is replaced in one step; a failure leaves it as it was.
+    ``about`` stands before the header of a CSV file, in lines that begin with "# ", and under the key
+    ``about`` in the metadata of a Parquet file. Times are naive UTC. A file that exists is replaced in one step; a failure leaves it as it was.
     """
 
-    def export_readings(self, path: Path, *, max_ingest_id: int | None = None) -> int:
+    def export_readings(self, path: Path, *, max_ingest_id: int | None = None, about: str = "") -> int:
         """Write all readings, current or as after ingest ``max_ingest_id``; return the number of rows.
 
         As of an earlier ingest, value and flag are those of that time; stage and result time are those of
@@ -51,17 +52,17 @@ class Exports(Session):
         upto = (
             self.value("select coalesce(max(id), 0) from ingest") if max_ingest_id is None else max_ingest_id
         )
-        return self._export(path, _READINGS, {"upto": int(upto)})
+        return self._export(path, _READINGS, {"upto": int(upto)}, about)
 
-    def export_windows(self, path: Path) -> int:
+    def export_windows(self, path: Path, *, about: str = "") -> int:
         """Write all current window results; return the number of rows."""
-        return self._export(path, _WINDOWS, {})
+        return self._export(path, _WINDOWS, {}, about)
 
-    def export_alerts(self, path: Path) -> int:
+    def export_alerts(self, path: Path, *, about: str = "") -> int:
         """Write the alert log, one row an event; return the number of rows."""
-        return self._export(path, _ALERTS, {})
+        return self._export(path, _ALERTS, {}, about)
 
-    def _export(self, path: Path, query: str, parameters: Mapping[str, Any]) -> int:
+    def _export(self, path: Path, query: str, parameters: Mapping[str, Any], about: str) -> int:
         form = _FORMATS.get(path.suffix.lower())
         if form is None:
             raise RhovaneError(
@@ -71,8 +72,13 @@ class Exports(Session):
             raise RhovaneError(f"{path.parent}: no such folder; create it, or name another file.")
         part = path.with_name(f".{path.name}.part")
         target = str(part).replace("'", "''")
+        if about and path.suffix.lower() == ".parquet":
+            form += f", kv_metadata {{about: '{about.replace(chr(39), chr(39) * 2)}'}}"
         try:
             count: int = self.rows(f"copy ({query}) to '{target}' ({form})", parameters)[0][0]
+            if about and path.suffix.lower() == ".csv":
+                table = part.read_bytes()
+                part.write_bytes("".join(f"# {line}\n" for line in about.splitlines()).encode() + table)
             part.replace(path)
         except OSError as error:
             raise RhovaneError(f"{path} cannot be replaced ({error.strerror}); name another file.") from error
