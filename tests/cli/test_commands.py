@@ -147,6 +147,9 @@ def test_ingest_takes_files_by_name_and_refuses_strangers(tmp_path: Path):
     first = run("ingest", str(tmp_path / "feed" / "a.csv"), "--config", path)
     assert first.exit_code == ExitCode.WELL
     assert "1 rows: 1 new" in first.output
+    missing = run("ingest", str(tmp_path / "feed" / "none.csv"), "--config", path)
+    assert missing.exit_code == ExitCode.NIGHT_INCOMPLETE
+    assert "none.csv: there is no such file" in missing.output
     stranger = run("ingest", str(tmp_path / "other.txt"), "--config", path)
     assert stranger.exit_code == ExitCode.FAILED
     assert "--source" in stranger.output

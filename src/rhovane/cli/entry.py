@@ -131,8 +131,3 @@ def _finite(value: Any) -> Any:
     if isinstance(value, float) and (value != value or value in (float("inf"), float("-inf"))):
         return None
     return value
-
-
-from rhovane.cli import decide, feed, look, run  # noqa: E402  commands register themselves on the group
-
-__all__ = ["decide", "feed", "look", "main", "run"]

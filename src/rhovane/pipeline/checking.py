@@ -172,6 +172,11 @@ def ingest_now(
     else:
         parsed = []
         for path in files:
+            if not path.is_file():
+                night.failed(
+                    "ingest", str(path), "there is no such file; check the name. The others were read"
+                )
+                continue
             source = source_of(path.resolve(), settings, source_name)
             one = parse_or_note(night, path.resolve(), source, shown_path(path.resolve(), settings))
             if one is not None:
