@@ -190,3 +190,19 @@ def test_a_mistake_is_refused(change: dict[str, Any], message: str) -> None:
 def test_two_series_of_different_length_are_refused() -> None:
     with pytest.raises(ValueError, match="same shape"):
         monitor_pair(np.zeros(48), np.zeros(24), start=START)
+
+
+def test_alarms_unpack_as_documented() -> None:
+    rng = np.random.default_rng(8)
+    x = rng.normal(size=24 * 160)
+    y = x + 0.3 * rng.normal(size=len(x))
+    y[24 * 130 :] = rng.normal(size=24 * 30)
+    start = np.datetime64("2025-01-01")
+    ((day, direction, kind),) = monitor_pair(x, y, start=start, false_alarms_per_year=0.1).alarms
+    assert day >= 130
+    assert (direction, kind) == ("weaker", "strength")
+    network = monitor_network(np.column_stack((x, y)), [(0, 1)], start=start, false_alarms_per_year=0.1)
+    ((day_too, _, _, pairs, suspect),) = network.alarms
+    assert day_too == day
+    assert pairs == ((0, 1),)
+    assert suspect == ("pair", (0, 1))

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,9 +19,8 @@ STEPS_PER_DAY = {"2h": 12, "1h": 24, "30min": 48, "15min": 96, "10min": 144, "5m
 """Known steps of the grid, and readings a day."""
 
 
-@dataclass(frozen=True)
-class PairAlarm:
-    """A pair's relationship changed.
+class PairAlarm(NamedTuple):
+    """A pair's relationship changed: (day, direction, kind).
 
     ``day`` counts from 0 at ``start``; ``direction`` is "weaker" or "stronger"; ``kind`` "strength", or
     "timing" where the best lag moved.
@@ -32,9 +31,8 @@ class PairAlarm:
     kind: str
 
 
-@dataclass(frozen=True)
-class NetworkAlarm:
-    """Relationships of a network changed.
+class NetworkAlarm(NamedTuple):
+    """Relationships of a network changed: (day, direction, kind, pairs, suspect).
 
     ``pairs`` are the pairs concerned as (i, j); ``suspect`` says where to look first: ("series", i),
     ("station", name), ("pair", (i, j)) or ("network", None).

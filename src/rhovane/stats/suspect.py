@@ -30,6 +30,8 @@ LEAST_LAG_GAIN = 0.1
 """A best lag away from the usual counts where its mean correlation is higher by more than this."""
 LEAST_LAGGED_RELATION = 0.3
 """Pairs with a smaller daily reference correlation say nothing about timing."""
+LEAST_MOVED_SHARE = 0.4
+"""and at least this share of the reference: a slipped clock moves a relation, it does not destroy it."""
 IMPOSSIBLE = -99.0
 
 
@@ -166,6 +168,7 @@ def lag_movement(structure: Structure, one: Hypothesis, lagged: Floats, mean: Fl
     """
     strong = [p for p in one.pairs if abs(np.tanh(mean[p])) > LEAST_LAGGED_RELATION] or list(one.pairs)
     profiles = []
+    usual = []
     for p in strong:
         seen = lagged[p][np.isfinite(lagged[p]).all(axis=1)]
         if not len(seen):
@@ -174,8 +177,10 @@ def lag_movement(structure: Structure, one: Hypothesis, lagged: Floats, mean: Fl
         first = structure.members[p][0]
         suspect_first = one.kind != "pair" and one.name in (first, first.partition(".")[0])
         profiles.append(profile[::-1] if suspect_first else profile)
+        usual.append(abs(np.tanh(mean[p])))
     if not profiles:
         return 0
     mixed = np.mean(profiles, axis=0)
     middle = len(mixed) // 2
-    return int(mixed.argmax()) - middle if mixed.max() - mixed[middle] > LEAST_LAG_GAIN else 0
+    moved = mixed.max() - mixed[middle] > LEAST_LAG_GAIN and mixed.max() > LEAST_MOVED_SHARE * np.mean(usual)
+    return int(mixed.argmax()) - middle if moved else 0
