@@ -13,6 +13,7 @@ import pytest
 from flow.small_network import HEADER, SETTINGS, START, related_series, row
 from rhovane.model import EventKind, ExitCode
 from rhovane.pipeline import STEPS, run_night, walk_nights
+from rhovane.pipeline.memory import NightMemory
 from rhovane.review import alert_entries, network_status
 from rhovane.settings import Settings, load_settings
 from rhovane.store import open_store
@@ -253,3 +254,22 @@ def test_a_step_that_breaks_leaves_the_reason_in_the_ledger_and_the_next_night_d
         whole = run_night(network, store, as_of=last, now=moment(last))
         assert whole.outcome == "complete"
         assert len(store.read_windows(PAIR)["lag"]) > 0
+
+
+def test_a_failed_night_of_a_walk_loses_no_alert(
+    network: Settings, deliver: Callable[[str, str], Path], changing
+):
+    deliver("all.csv", lines(range(24 * N_DAYS), *changing))
+    memory = NightMemory()
+
+    def breaks(_night):
+        raise OSError("disk full")
+
+    with open_store(network.store_path) as store:
+        for number in range(CHANGE_DAY - 2, N_DAYS):
+            day = FIRST + number * DAY
+            failing = CHANGE_DAY <= number < CHANGE_DAY + 10  # the nights on which the alert would be raised
+            steps = (*STEPS, ("report", breaks)) if failing else STEPS
+            report = run_night(network, store, as_of=day, now=moment(day), steps=steps, memory=memory)
+            assert (report.outcome == "failed") == failing
+    assert len(facts(network)) == 1

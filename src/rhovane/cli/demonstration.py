@@ -28,9 +28,7 @@ NIGHT_HOUR = dt.time(3, 40)
 LONGEST_LINE = 110
 COMPILED_TOGETHER = (("scores",), ("windows", "watch"))  # about equally long
 LONGEST_EVENT_DAYS = 200  # a turning of the seasons lasts longer than any planted change
-ARCHIVE_DAYS = (
-    184  # days taken in at once at the start: the second half of 2024, as a network brings its archive
-)
+ARCHIVE_DAYS = 215  # days taken in at once at the start, to the end of January: an archive
 
 
 @dataclass

@@ -67,6 +67,13 @@ class NightMemory:
         """Keep hourly scores for the next night; their days are numbered from ``first``."""
         self._scores.update({one: (first, known) for one, known in scores.items()})
 
+    def forget(self) -> None:
+        """Remember nothing: what a failed night computed was not kept by the store."""
+        self.watch = WatchMemory()
+        self._grid = self._evidence = self._findings = None
+        self._recipes = ()
+        self._scores = {}
+
     def same_findings(self, findings: object) -> bool:
         """Whether the watch found what it found the night before: then the log is in step already."""
         same = findings == self._findings

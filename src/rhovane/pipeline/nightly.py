@@ -135,6 +135,8 @@ def run_night(
             _finish(night, outcome, outcomes)
     except Exception as error:  # noqa: BLE001  the one place: what stopped a night is written to its ledger
         outcome = "failed"
+        if memory is not None:
+            memory.forget()
         step = steps[len(outcomes)][0] if len(outcomes) < len(steps) else "ledger"
         night.failed(step, "the whole step", f"{type(error).__name__}: {error}")
         outcomes.append(
