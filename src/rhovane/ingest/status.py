@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
+from enum import IntEnum
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -39,32 +42,27 @@ def read_status(table: Table, source: SourceSettings, *, modified_s: int, faults
     """
     n_rows = len(table.line)
     names = source.columns
-    flag = np.full(n_rows, Flag.NOT_EVALUATED, dtype=np.int8)
-    if names.flag:
-        cells = table.column(names.flag)
 
-        def flag_of(cell: Cell) -> Flag | Fault:
+    def meant(
+        name: str, meaning: Callable[[str], IntEnum | None], where: str, what: str, default: IntEnum
+    ) -> Any:
+        """What the codes of a column mean, by row; the default where there is no column or no meaning."""
+        if not name:
+            return np.full(n_rows, default, dtype=np.int8)
+        cells = table.column(name)
+
+        def of(cell: Cell) -> IntEnum | Fault:
             code = code_of(cell)
-            found = source.flag_of(code)
-            return _unmapped("flags", "quality", code) if found is None else found
+            found = meaning(code)
+            return _unmapped(where, what, code) if found is None else found
 
         column = distinct(cells)
-        flags, unknown = judged(column, flag_of, Flag.NOT_EVALUATED)
-        flag = np.array(flags, dtype=np.int8)[column.index]
-        faults.add(names.flag, cells, unknown)
-    stage = np.full(n_rows, Stage.NOT_VERIFIED, dtype=np.int8)
-    if names.stage:
-        cells = table.column(names.stage)
+        meanings, unknown = judged(column, of, default)
+        faults.add(name, cells, unknown)
+        return np.array(meanings, dtype=np.int8)[column.index]
 
-        def stage_of(cell: Cell) -> Stage | Fault:
-            code = code_of(cell)
-            found = source.stage_of(code)
-            return _unmapped("stages", "stage", code) if found is None else found
-
-        column = distinct(cells)
-        stages, unknown = judged(column, stage_of, Stage.NOT_VERIFIED)
-        stage = np.array(stages, dtype=np.int8)[column.index]
-        faults.add(names.stage, cells, unknown)
+    flag = meant(names.flag, source.flag_of, "flags", "quality", Flag.NOT_EVALUATED)
+    stage = meant(names.stage, source.stage_of, "stages", "stage", Stage.NOT_VERIFIED)
     result_time = np.full(n_rows, modified_s, dtype=np.int64)
     if names.issued:
         cells = table.column(names.issued)
