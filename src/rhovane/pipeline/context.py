@@ -22,15 +22,17 @@ from rhovane.stats.hourly_scores import SeriesScores
 from rhovane.store import NightRecord, Store
 
 HOUR_S = 3600
+DAY = dt.timedelta(days=1)
 
 
 @dataclass(frozen=True)
 class WatchedPair:
-    """A pair with its recipe and the first day whose results are not up to date (None: all are)."""
+    """A pair with its recipe and the first days whose evidence and windows are not up to date (None: all are)."""
 
     recipe: PairSettings
     pair: Pair
     stale_from: dt.date | None = None
+    windows_from: dt.date | None = None
 
 
 @dataclass(frozen=True)
@@ -108,10 +110,11 @@ class Night:
         if self._grid is None:
             settings = self.settings
             stale = [w for w in self.watched if w.stale_from is not None]
-            lags = [abs(lag) for w in stale for lag in settings.lags_of(w.recipe)]
-            reach = max(HISTORY_DAYS, (settings.correlation.window_hours + max(lags)) // 24 + 1)
+            lags = [abs(lag) for w in self.watched for lag in settings.lags_of(w.recipe)]
+            window_days = (settings.correlation.window_hours + max(lags)) // 24 + 1
             stale_from = min(w.stale_from for w in stale if w.stale_from)
-            first = stale_from - dt.timedelta(days=reach)
+            windows_from = min((w.windows_from for w in self.watched if w.windows_from), default=stale_from)
+            first = min(stale_from - HISTORY_DAYS * DAY, windows_from - window_days * DAY)
             if self.memory is not None:
                 self._grid = self.memory.grid(settings, self.store, first, self.as_of, stale_from)
             else:

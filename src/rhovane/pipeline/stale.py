@@ -21,14 +21,14 @@ def find_stale(night: Night) -> str:
     last = night.previous
     recipes = {} if last is None else dict(last.counts.get("recipes", {}))
     left = {} if last is None else dict(last.counts.get("left", {}))
+    windows_left = {} if last is None else dict(last.counts.get("windows left", {}))
     changed = store.changed_since(0 if last is None else last.data_version)
     known = {} if last is None else last.counts.get("first_hours", {})
     first_hours = {k: dt.datetime.fromisoformat(v) for k, v in known.items()}
     for key, moment in changed.items():
         first_hours[key] = min(moment, first_hours.get(key, moment))
     night.watched = []
-    for recipe in settings.pair:
-        pair = settings.pair_of(recipe)
+    for recipe, pair in settings.pairs:
         keys = settings.series_of(recipe)
         begin = max((_day(days, first_hours[k]) for k in keys[:2] if k in first_hours), default=None)
         if begin is None:
@@ -45,7 +45,10 @@ def find_stale(night: Night) -> str:
         if night.recompute_from is not None:
             since = min(since, night.recompute_from)
         since = max(since, begin)
-        night.watched.append(WatchedPair(recipe, pair, since if since <= night.as_of else None))
+        windows_since = max(begin, min(since, dt.date.fromisoformat(windows_left.get(pair.key, "9999-12-31"))))
+        night.watched.append(
+            WatchedPair(recipe, pair, *(day if day <= night.as_of else None for day in (since, windows_since)))
+        )
     stale = [w for w in night.watched if w.stale_from is not None]
     night.counts["first_hours"] = {k: v.isoformat() for k, v in sorted(first_hours.items())}
     night.counts["recipes"] = {w.pair.key: w.pair.recipe_hash for w in night.watched}

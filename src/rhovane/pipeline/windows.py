@@ -20,7 +20,7 @@ FEWEST_PAIRS = 24  # hours; below one day's worth a window of a masked pair is n
 
 def compute_windows(night: Night) -> str:
     """Windows that end with each stale day, for every pair and lag."""
-    stale = [w for w in night.watched if w.stale_from is not None]
+    stale = [w for w in night.watched if w.windows_from is not None]
     if not stale:
         return "nothing to compute"
     grid = night.grid()
@@ -37,18 +37,25 @@ def compute_windows(night: Night) -> str:
     return f"{len(columns['lag'])} correlations in {len(parts)} pairs"
 
 
+def leave_windows(night: Night) -> str:
+    """Leave the stale windows to a later night of a walk, which finds in the ledger since when they are stale."""
+    left = {w.pair.key: w.windows_from.isoformat() for w in night.watched if w.windows_from is not None}
+    night.counts["windows left"] = left
+    return f"left to a later night of the walk, in {len(left)} pairs"
+
+
 def pair_windows(night: Night, watched: WatchedPair, grid: Grid) -> dict[str, NDArray[Any]]:
     """The correlations of one pair in the windows that end with its stale days, as columns for the store.
 
     ``coverage`` is the number of joint observations over the hours that the recipe keeps in the window; a
     window is computed when it reaches ``min_coverage`` of them and at least a day's worth.
     """
-    assert watched.stale_from is not None
+    assert watched.windows_from is not None
     correlation = night.settings.correlation
     arrays = night.arrays(watched)
     window = correlation.window_hours
-    n_days = (night.as_of - watched.stale_from).days + 1
-    end = grid.row_of(night.days.last_hour_of(watched.stale_from)) + 24 * np.arange(n_days)
+    n_days = (night.as_of - watched.windows_from).days + 1
+    end = grid.row_of(night.days.last_hour_of(watched.windows_from)) + 24 * np.arange(n_days)
     kept_before = np.concatenate(([0], np.cumsum(arrays.mask.kept)))
     kept = kept_before[end + 1] - kept_before[np.maximum(end + 1 - window, 0)]
     min_pairs = np.clip(np.ceil(correlation.min_coverage * kept).astype(np.int64), FEWEST_PAIRS, window)

@@ -343,6 +343,11 @@ class Settings(Section):
         step = {key: source.step_minutes for source in self.source for key in source.series.values()}
         return [Series(s.key, s.unit, s.kind, step[s.key], s.label) for s in self.series]
 
+    @cached_property
+    def pairs(self) -> tuple[tuple[PairSettings, Pair], ...]:
+        """Every watched pair: its settings, and the pair as a word of the domain."""
+        return tuple((pair, self.pair_of(pair)) for pair in self.pair)
+
     def pair_of(self, pair: PairSettings) -> Pair:
         """A pair as a word of the domain; its recipe hash covers every setting that its numbers rest on."""
         parts = {
