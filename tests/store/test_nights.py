@@ -55,10 +55,15 @@ def test_last_finished_night_is_the_same_remembered_and_read_from_the_file(store
         remembered = store.last_finished_night()
         assert remembered.night_id == min(night, 2)
     night = begin(store, day=4)
-    with pytest.raises(RhovaneError, match="what stopped it"), store.transaction():
-        store.finish_night(night, now=NOW, outcome="complete", steps=[], counts={})
-        assert store.last_finished_night().night_id == night
-        raise RhovaneError("what stopped it")
+
+    def undone():
+        with store.transaction():
+            store.finish_night(night, now=NOW, outcome="complete", steps=[], counts={})
+            assert store.last_finished_night().night_id == night
+            raise RhovaneError("what stopped it")
+
+    with pytest.raises(RhovaneError, match="what stopped it"):
+        undone()
     assert store.last_finished_night() == remembered
     store.close()
     with open_store(path) as reopened:

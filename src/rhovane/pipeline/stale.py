@@ -45,9 +45,13 @@ def find_stale(night: Night) -> str:
         if night.recompute_from is not None:
             since = min(since, night.recompute_from)
         since = max(since, begin)
-        windows_since = max(begin, min(since, dt.date.fromisoformat(windows_left.get(pair.key, "9999-12-31"))))
+        windows_since = max(
+            begin, min(since, dt.date.fromisoformat(windows_left.get(pair.key, "9999-12-31")))
+        )
         night.watched.append(
-            WatchedPair(recipe, pair, *(day if day <= night.as_of else None for day in (since, windows_since)))
+            WatchedPair(
+                recipe, pair, *(day if day <= night.as_of else None for day in (since, windows_since))
+            )
         )
     stale = [w for w in night.watched if w.stale_from is not None]
     night.counts["first_hours"] = {k: v.isoformat() for k, v in sorted(first_hours.items())}

@@ -14,7 +14,9 @@ from rhovane.store import Store
 
 DAY = dt.timedelta(days=1)
 NIGHTS_A_CHECKPOINT = 28  # nights of a walk after which the write-ahead log is folded into the store file
-NIGHTS_A_WINDOW = 7  # nights of a walk after which their windows are computed, together at a fifth of the cost
+NIGHTS_A_WINDOW = (
+    7  # nights of a walk after which their windows are computed, together at a fifth of the cost
+)
 
 LEAVING_WINDOWS: tuple[Step, ...] = tuple(
     (name, leave_windows) if name == "windows" else (name, do) for name, do in STEPS

@@ -107,7 +107,11 @@ class NightLedger(Session):
                     raise NotFound(f"There is no night {night_id} in the ledger.")
                 raise RhovaneError(f"Night {night_id} is finished already ({found[0][0]}); begin a new one.")
             known = self._remembered.get(_LAST_FINISHED)
-            if known is not None and outcome != "failed" and (known[0] is None or known[0].night_id < night_id):
+            if (
+                known is not None
+                and outcome != "failed"
+                and (known[0] is None or known[0].night_id < night_id)
+            ):
                 known[0] = _record(kept[0])
             self.expect_after_commit("nights", int(night_id))
             if checkpoint:
