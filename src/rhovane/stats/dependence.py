@@ -158,9 +158,9 @@ def inflation(acf: Autocorrelation) -> float:
     return max(SMALLEST_INFLATION, 1.0 + 2.0 * float(np.dot(acf.weight, acf.xx * acf.yy)))
 
 
-def effective_pairs(n_pairs: float, factor: float) -> float:
-    """Return the effective sample size, between 3 and the number of pairs."""
-    return min(float(n_pairs), max(SMALLEST_EFFECTIVE, n_pairs / factor))
+def effective_pairs(n_pairs: Any, factor: float) -> Any:
+    """Return the effective sample size, between 3 and the number of pairs; elementwise."""
+    return np.minimum(n_pairs, np.maximum(SMALLEST_EFFECTIVE, n_pairs / factor))
 
 
 def spearman_p_value(rho: Any, n_effective: Any, spent: int = 0) -> Any:
