@@ -15,6 +15,7 @@ from rhovane.stats.pair_windows import WindowTable, window_table
 from rhovane.stats.partial import partial_window
 
 STEP = "windows"
+ROWS_AT_ONCE = 100_000  # correlations that are written together: some 50 MB on their way to the store
 FEWEST_PAIRS = 24  # hours; below one day's worth a window of a masked pair is not computed
 
 
@@ -25,16 +26,28 @@ def compute_windows(night: Night) -> str:
         return "nothing to compute"
     grid = night.grid()
     parts: list[dict[str, NDArray[Any]]] = []
+    n_pairs = n_correlations = waiting = 0
     for watched in stale:
         try:
             parts.append(pair_windows(night, watched, grid))
         except ValueError as error:
             night.pair_failed(STEP, watched, str(error))
-    if not parts:
-        return f"0 correlations in {len(stale)} pairs"
-    columns = {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
-    night.store.write_windows(night.id, columns)
-    return f"{len(columns['lag'])} correlations in {len(parts)} pairs"
+            continue
+        n_pairs += 1
+        waiting += len(parts[-1]["lag"])
+        n_correlations += len(parts[-1]["lag"])
+        if waiting >= ROWS_AT_ONCE:
+            _write(night, parts)
+            parts, waiting = [], 0
+    if parts:
+        _write(night, parts)
+    return f"{n_correlations} correlations in {n_pairs} pairs"
+
+
+def _write(night: Night, parts: list[dict[str, NDArray[Any]]]) -> None:
+    night.store.write_windows(
+        night.id, {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
+    )
 
 
 def leave_windows(night: Night) -> str:
