@@ -193,4 +193,4 @@ def test_ties_gaps_and_constant_stretches_give_what_scipy_gives(method, measure)
                 assert abs(statistic - measure(a, b).statistic) < 1e-12, f"seed {seed}"
                 computed += 1
     assert computed > 500
-    assert undefined > 50
+    assert undefined > 20
