@@ -147,6 +147,10 @@ def cores_and_significance() -> None:
     line("    reached of what that loop reaches", f"{100 * one / two * loop_two / loop_one:.0f} %", "")
     one, two = best_of_turns(time.process_time, network(1), network(2))
     line("    processor time that sharing the work adds", f"{100 * (two / one - 1):.0f} %", "")
+    # What the calling thread does while the others work is waiting: its own processor time is not shared.
+    (alone,) = best_of_turns(time.thread_time, network(2))
+    busier = (two - alone) * (1 / 2 + 1 / len(pairs))  # at worst one pair more than the other
+    line("    what two free cores would give, from processor times", f"{one / (alone + busier):.2f} x", "")
     plain, tested = best_of_turns(time.thread_time, network(1), network(1, True))
     line("significance of every correlation adds", f"{100 * (tested / plain - 1):.0f} %", "<= 50 %")
 
