@@ -330,6 +330,7 @@ def test_the_commands_show_and_steer(tmp_path: Path, feed: str):
 
     done = run(tmp_path, "outcome", "1", "instrument", "--until", str(day(CHANGE_DAY + 9)), "--who", "Ada")
     assert done.exit_code == ExitCode.WELL, done.output
+    assert f"acts from the night of {day(CHANGE_DAY + 9)}" in done.output
     (event,) = json.loads(run(tmp_path, "alert", "1", "--json").output)["events"][1:]
     assert event["payload"] == {
         "outcome": "instrument",

@@ -21,7 +21,10 @@ def test_entries_come_back_as_they_were_written_and_stay_when_withdrawn(tmp_path
         acts = dt.date(2025, 2, 28)
         assert store.add_to_site_log([VISIT, WORKS], who="Ada", now=NOW, acts_from=acts) == [1, 2]
         assert store.add_to_site_log([VISIT], who="Ben", now=NOW + DAY, acts_from=None) == [3]
+        before = store.site_log()
         store.withdraw_from_site_log(1, now=NOW + 2 * DAY, from_day=acts + 2 * DAY)
+        assert [s.stands for s in before] == [True, True, True]
+        assert [s.stands for s in store.site_log()] == [False, True, True]
     with open_store(tmp_path / "s.duckdb", read_only=True) as store:
         found = store.site_log()
     assert [(s.number, s.entry, s.who, s.written_at, s.acts_from) for s in found] == [
@@ -31,6 +34,20 @@ def test_entries_come_back_as_they_were_written_and_stay_when_withdrawn(tmp_path
     ]
     assert [s.stands for s in found] == [False, True, True]
     assert (found[0].withdrawn_at, found[0].withdrawn_from) == (NOW + 2 * DAY, acts + 2 * DAY)
+
+
+def test_entries_of_a_transaction_that_failed_are_not_remembered(tmp_path: Path):
+    with open_store(tmp_path / "s.duckdb") as store:
+
+        def undone() -> None:
+            with store.transaction():
+                store.add_to_site_log([VISIT], who="Ada", now=NOW, acts_from=None)
+                assert len(store.site_log()) == 1
+                raise InterruptedError
+
+        with pytest.raises(InterruptedError):
+            undone()
+        assert store.site_log() == []
 
 
 def test_an_entry_is_withdrawn_once_and_must_exist(tmp_path: Path):

@@ -30,7 +30,10 @@ def _record(
     from rhovane.review import record_decision
 
     entry = record_decision(store, alert_id, kind, now=utc_now(), who=who, note=note, payload=payload)
-    click.echo(f"Alert {alert_id}: {short_state(entry)}")
+    acts = entry.events[-1].payload.get("acts_from")
+    click.echo(
+        f"Alert {alert_id}: {short_state(entry)}" + (f"; acts from the night of {acts}" if acts else "")
+    )
 
 
 @main.command()

@@ -52,7 +52,10 @@ def what_is_known(night: Night, watched: Sequence[WatchedPair], first_day: dt.da
         *_from_site_log(night.store.site_log(), series, first_day, night.days),
     ]
     renewed: list[tuple[int, int]] = []
-    alerts, events = logged_alerts(night.store), logged_events(night.store)
+    if night.store.has_events_of(EventKind.OUTCOME.value):
+        alerts, events = logged_alerts(night.store), logged_events(night.store)
+    else:
+        alerts, events = [], {}
     for alert in alerts:
         pairs = tuple(sorted({place[k] for k in (alert.pair_key, *alert.members) if k in place}))
         if pairs:
@@ -138,11 +141,9 @@ def _from_outcomes(
 def _end_of(events: Sequence[AlertEvent], now: dt.datetime) -> dt.date | None:
     """The day on which an alert's change ended; None while it lasts."""
     ended = standing_of(events, now).ended
-    return (
-        None
-        if ended is None
-        else dt.date.fromisoformat(str(ended.payload.get("day", ended.payload["night"])))
-    )
+    if ended is None:
+        return None
+    return dt.date.fromisoformat(str(ended.payload.get("day") or ended.payload["night"]))
 
 
 def _number(day: dt.date | None, first_day: dt.date) -> int:

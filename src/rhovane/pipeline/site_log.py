@@ -25,7 +25,7 @@ def take_over_site_log(night: Night) -> str:
     known = {s.entry: s for s in standing if s.who == SITE_LOG_FILE}
     new = [entry for entry in written if entry not in known]
     gone = [stored for entry, stored in known.items() if entry not in set(written)]
-    acts_from = store.next_judged_day()
+    acts_from = store.next_judged_day() if new or gone else None
     if new:
         store.add_to_site_log(new, who=SITE_LOG_FILE, now=night.now, acts_from=acts_from)
     for stored in gone:

@@ -1,8 +1,8 @@
 """Step "stale": which pairs have results that are not up to date, and since which day.
 
-A pair is stale from the first hour of any of its series that is new, revised, or taken out of the statistics
-(or back in) since the last finished night; from the day after that night; from the day it was left at when it failed then; and from its first
-reading where its recipe has changed since.
+A pair is stale from the first hour of any of its series that is new, revised, or taken out of the
+statistics (or back in) since the last finished night; from the day after that night; from the day it was
+left at when it failed then; and from its first reading where its recipe has changed since.
 """
 
 from __future__ import annotations

@@ -12,6 +12,8 @@ from rhovane.store.session import Session
 
 SITE_LOG_FILE = "site log file"  # who wrote the entries that come from the file
 
+_ENTRIES = "site log"  # under which the entries are remembered
+
 
 @dataclass(frozen=True)
 class StoredSiteLogEntry:
@@ -40,7 +42,15 @@ class SiteLog(Session):
     """Writing and reading of the site log."""
 
     def site_log(self) -> list[StoredSiteLogEntry]:
-        """All entries there ever were, in the order in which they were written."""
+        """All entries there ever were, in the order in which they were written.
+
+        Read once and remembered: an open store has no other writer.
+        """
+        if _ENTRIES not in self._remembered:
+            self._remembered[_ENTRIES] = {stored.number: stored for stored in self._read_site_log()}
+        return list(self._remembered[_ENTRIES].values())
+
+    def _read_site_log(self) -> list[StoredSiteLogEntry]:
         found = self.rows(
             """
             select id, subject, from_ts, to_ts, what, readings, who, written_at, acts_from, withdrawn_at,
@@ -70,6 +80,7 @@ class SiteLog(Session):
         self, entries: Sequence[SiteLogEntry], *, who: str, now: datetime, acts_from: date | None
     ) -> list[int]:
         """Record entries, and return their numbers in the same order."""
+        self._remembered.pop(_ENTRIES, None)
         with self.transaction():
             first = self.value("select coalesce(max(id), 0) + 1 from site_log")
             for number, one in enumerate(entries, start=first):
@@ -102,6 +113,7 @@ class SiteLog(Session):
         RhovaneError
             It is withdrawn already.
         """
+        self._remembered.pop(_ENTRIES, None)
         with self.transaction():
             found = self.rows("select withdrawn_at from site_log where id = ?", [int(number)])
             if not found:
