@@ -174,17 +174,6 @@ def test_the_settings_hash_changes_with_any_setting_but_not_with_the_place():
     assert settings_from(raw, PLACE).settings_hash != base.settings_hash
 
 
-def test_calendar_spans_include_both_ends():
-    raw = plain()
-    raw["calendar"] = {"other_days": ["2024-12-30/2025-01-01", "2025-05-01"]}
-    assert settings_from(raw, PLACE).calendar.dates == {
-        dt.date(2024, 12, 30),
-        dt.date(2024, 12, 31),
-        dt.date(2025, 1, 1),
-        dt.date(2025, 5, 1),
-    }
-
-
 @pytest.mark.parametrize(("text", "minutes"), [("+01:00", 60), ("-05:30", -330), ("+00:00", 0)])
 def test_offsets_are_read_with_their_sign(text: str, minutes: int):
     assert parse_offset(text) == dt.timedelta(minutes=minutes)

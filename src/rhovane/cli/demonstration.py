@@ -19,7 +19,7 @@ from rhovane.pipeline import nights_between, walk_nights
 from rhovane.review import AlertEntry, alert_entries
 from rhovane.settings import Settings, load_settings
 from rhovane.store import Store
-from rhovane_demo import settings_text
+from rhovane_demo import SETTINGS_FILES, settings_text
 from rhovane_demo.feed import deliveries, write_files
 from rhovane_demo.planted import BY_ID, TABLE, answers
 from rhovane_demo.world import make_world
@@ -55,7 +55,10 @@ class Demonstration:
     def __init__(self, config: Path, *, seed: int, events: bool, fresh: bool) -> None:
         if not config.exists():
             config.parent.mkdir(parents=True, exist_ok=True)
-            config.write_text(settings_text(), encoding="utf-8")
+            for name in SETTINGS_FILES:
+                place = config if name == "monitor.toml" else config.parent / name
+                if not place.exists():
+                    place.write_text(settings_text(name), encoding="utf-8")
         self.config = config
         self.settings: Settings = load_settings(config)
         if self.settings.network.name != tomllib.loads(settings_text())["network"]["name"]:

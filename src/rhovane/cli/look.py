@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import click
 
 from rhovane.cli.entry import Ending, main, print_json, reads_store, utc_now, with_json
-from rhovane.cli.wording import alert_lines, alert_table, caution_lines, status_lines
+from rhovane.cli.wording import alert_lines, alert_table, caution_lines, count_lines, status_lines
 
 if TYPE_CHECKING:
     from rhovane.settings import Settings
@@ -20,11 +20,22 @@ if TYPE_CHECKING:
 @reads_store
 @with_json
 @click.option("--unreviewed", is_flag=True, help="Only alerts that nobody has acknowledged.")
-def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool) -> None:
+@click.option(
+    "--counts", is_flag=True, help="Counts by week, suspect and outcome; stale and chattering ones."
+)
+def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool, counts: bool) -> None:
     """List the alert log, newest alarm day first."""
-    from rhovane.review import alert_entries
+    from rhovane.review import alert_entries, log_counts
 
-    entries = [e for e in alert_entries(store, utc_now()) if e.needs_review or not unreviewed]
+    now = utc_now()
+    entries = [e for e in alert_entries(store, now) if e.needs_review or not unreviewed]
+    if counts:
+        counted = log_counts(entries, now)
+        if as_json:
+            print_json(counted.as_json())
+        else:
+            click.echo("\n".join([settings.network.name, *count_lines(counted)]))
+        return
     if as_json:
         print_json([e.as_json() for e in entries])
         return
@@ -37,15 +48,17 @@ def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool) ->
 @click.argument("alert_id", metavar="ID", type=int)
 @reads_store
 @with_json
-def alert(store: Store, alert_id: int, as_json: bool) -> None:
-    """Show one alert in full: before and after, evidence, what it rests on, its log."""
-    from rhovane.review import alert_entry
+def alert(settings: Settings, store: Store, alert_id: int, as_json: bool) -> None:
+    """Show one alert in full: before and after, evidence, what it rests on, what site log and calendar say, its log."""
+    from rhovane.review import alert_entry, nearby_entries
 
     entry = alert_entry(store, alert_id, utc_now())
+    around = nearby_entries(settings, store, entry.alert)
+    offset = settings.network.standard_offset
     if as_json:
-        print_json(entry.as_json())
+        print_json({**entry.as_json(), **around.as_json(offset)})
         return
-    click.echo("\n".join(alert_lines(entry)))
+    click.echo("\n".join(alert_lines(entry, around, offset)))
     click.echo("\n" + "\n".join(caution_lines()))
 
 

@@ -11,7 +11,8 @@ from rhovane.model import CorrelationEstimate
 
 if TYPE_CHECKING:
     from rhovane.pipeline import NightReport
-    from rhovane.review import AlertEntry, Status
+    from rhovane.review import AlertEntry, LogCounts, Nearby, Status
+    from rhovane.store import StoredSiteLogEntry
 
 WIDTH = 80
 CAUTION = (
@@ -99,8 +100,8 @@ def short_state(entry: AlertEntry) -> str:
     return state
 
 
-def alert_lines(entry: AlertEntry) -> list[str]:
-    """One alert in full."""
+def alert_lines(entry: AlertEntry, around: Nearby, standard_offset: dt.timedelta) -> list[str]:
+    """One alert in full, with what site log and calendar say about the days around its onset."""
     a, standing = entry.alert, entry.standing
     facts = [
         ("state", short_state(entry) + (", change lasts" if standing.changed else "")),
@@ -122,12 +123,62 @@ def alert_lines(entry: AlertEntry) -> list[str]:
     for name, text in facts:
         if text:
             lines += textwrap.wrap(text, WIDTH, initial_indent=f"  {name:<11}", subsequent_indent=" " * 13)
+    about = [span_text(stored, standard_offset) for stored in around.site_log]
+    if about:
+        lines.append("  site log within 14 days of the onset (standard time)")
+        for text in about:
+            lines += textwrap.wrap(text, WIDTH, initial_indent="    ", subsequent_indent=" " * 8)
+    if around.calendar:
+        lines.append("  calendar within 14 days of the onset")
+        for span in around.calendar:
+            days = f"{span.first}" if span.first == span.last else f"{span.first} to {span.last}"
+            lines.append(f"    {days}  {span.entry.title} ({span.entry.kind})")
     lines.append("  log")
     for event in entry.events:
-        extra = ", ".join(f"{k} {v}" for k, v in event.payload.items() if k in ("outcome", "until", "day"))
+        extra = ", ".join(
+            f"{k} {v}" for k, v in event.payload.items() if k in ("outcome", "until", "day", "acts_from")
+        )
         text = f"{event.at:%Y-%m-%d %H:%M} UTC  {event.kind.value}" + (f" ({extra})" if extra else "")
         text += f", {event.who}" + (f": {event.note}" if event.note else "")
         lines += textwrap.wrap(text, WIDTH, initial_indent="    ", subsequent_indent=" " * 8)
+    return lines
+
+
+def span_text(stored: StoredSiteLogEntry, standard_offset: dt.timedelta) -> str:
+    """An entry of the site log in one line."""
+    zone = dt.timezone(standard_offset)
+    one = stored.entry
+    end = "still going on" if one.end is None else f"to {one.end.astimezone(zone):%Y-%m-%d %H:%M}"
+    gone = "" if stored.stands else f"; withdrawn {stored.withdrawn_at:%Y-%m-%d}"
+    return (
+        f"{one.start.astimezone(zone):%Y-%m-%d %H:%M} {end}  {one.subject}: {one.what} "
+        f"(readings {one.readings.value}{gone})"
+    )
+
+
+def site_log_lines(entries: Sequence[StoredSiteLogEntry], standard_offset: dt.timedelta) -> list[str]:
+    """The site log, one entry after the other; times are standard time."""
+    lines = []
+    for stored in entries:
+        acts = "" if stored.acts_from is None else f", acts from the night of {stored.acts_from}"
+        text = f"{stored.number:>4}  {span_text(stored, standard_offset)}, {stored.who}{acts}"
+        lines += textwrap.wrap(text, WIDTH, subsequent_indent=" " * 6)
+    return lines or ["No entries in the site log."]
+
+
+def count_lines(counts: LogCounts) -> list[str]:
+    """Counts over the alert log."""
+    lines = [f"{counts.alerts} alerts in the log", "New alerts by ISO week:"]
+    lines += [f"  {n:>4}  {week}" for week, n in counts.by_week.items()]
+    lines.append("By what was named first to look at:")
+    lines += [f"  {n:>4}  {suspect}" for suspect, n in counts.by_suspect.items()]
+    share = counts.confirmed_share
+    told = "none decided yet" if share is None else f"something was behind {share:.0%} of those decided"
+    lines.append(f"By outcome ({told}):")
+    lines += [f"  {n:>4}  {outcome}" for outcome, n in counts.by_outcome.items()]
+    lines.append(f"Stale, not reviewed for 14 days: {', '.join(map(str, counts.stale)) or 'none'}")
+    lines.append("Chattering, 3 or more alerts within 30 days:" + ("" if counts.chattering else " none"))
+    lines += [f"  {c.alerts:>4}  {c.suspect}, {c.first} to {c.last}" for c in counts.chattering]
     return lines
 
 
@@ -166,5 +217,8 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
             + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
             for s in status.silent_series
         ]
+    if status.not_judged:
+        lines.append("Pairs not judged that night (set aside, so silence says nothing):")
+        lines += [f"  {pair}: {reason}" for pair, reason in status.not_judged.items()]
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

@@ -12,6 +12,7 @@ from rhovane.model.errors import (
 )
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
 from rhovane.model.series import Pair, Series, SeriesKind
+from rhovane.model.site_log import ReadingsUse, SiteLogEntry
 
 __all__ = [
     "Alert",
@@ -27,11 +28,13 @@ __all__ = [
     "Outcome",
     "Pair",
     "ParsedFile",
+    "ReadingsUse",
     "RejectedRow",
     "RhovaneError",
     "Series",
     "SeriesKind",
     "SettingsError",
+    "SiteLogEntry",
     "Stage",
     "StoreDamaged",
     "StoreLocked",

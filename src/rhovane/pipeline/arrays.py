@@ -9,9 +9,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rhovane.pipeline.unused import unused_now
 from rhovane.prepare import Days, Grid, PairMask, days_of, kept_hours, to_grid
 from rhovane.settings import PairSettings, Settings
 from rhovane.store import Store
+
+HOUR_S = 3600
+DAY = dt.timedelta(days=1)
 
 
 @dataclass(frozen=True)
@@ -39,13 +43,16 @@ def load_grid(
     *,
     max_ingest_id: int | None = None,
 ) -> Grid:
-    """Observations of the series from the first to the last day, both included (standard time)."""
+    """Observations of the series from the first to the last day, both included (standard time).
+
+    Hours of maintenance, and those that the site log takes out, have none.
+    """
     days: Days = days_of(settings.network.standard_offset)
     start, end = days.start_of(first), days.end_of(last)
     names = sorted(set(keys))
     found = store.read_readings(names, days.moment(start), days.moment(end), max_ingest_id=max_ingest_id)
     known = {s.key: s for s in settings.domain_series()}
-    return to_grid(
+    grid = to_grid(
         [known[name] for name in names],
         start,
         end,
@@ -55,13 +62,20 @@ def load_grid(
         flag=found.flag,
         accepted_flags=settings.accepted_flags(),
     )
+    unused = unused_now(settings, store)
+    if unused:
+        for column, key in enumerate(grid.keys):
+            hours = unused.hours(key, grid.hour_start, settings.network.civil_zone)
+            grid.values[hours, column] = np.nan
+    return grid
 
 
 def pair_arrays(settings: Settings, recipe: PairSettings, grid: Grid) -> PairArrays:
     """Members and controls of a pair, masked by its recipe."""
-    mask = kept_hours(
-        recipe, grid, civil_zone=settings.network.civil_zone, other_days=settings.calendar.dates
-    )
+    days: Days = days_of(settings.network.standard_offset)
+    first, last = days.day_of(grid.start), days.day_of(grid.start + HOUR_S * grid.n_hours)
+    other_days = settings.other_days(first - DAY, last + DAY) if recipe.working_days_only else frozenset()
+    mask = kept_hours(recipe, grid, civil_zone=settings.network.civil_zone, other_days=other_days)
     x, y = grid.column(recipe.first), grid.column(recipe.second)
     controls = None
     if recipe.adjusted_for:

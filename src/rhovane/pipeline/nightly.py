@@ -21,6 +21,7 @@ from rhovane.pipeline.evidence import begin_hourly_scores, judge_days
 from rhovane.pipeline.ingesting import read_feed
 from rhovane.pipeline.memory import NightMemory
 from rhovane.pipeline.raising import raise_alerts
+from rhovane.pipeline.site_log import take_over_site_log
 from rhovane.pipeline.stale import find_stale
 from rhovane.pipeline.windows import compute_windows
 from rhovane.settings import Settings
@@ -32,6 +33,7 @@ OWN_TRANSACTION = ("ingest",)  # commits by itself; all later steps share one tr
 
 STEPS: tuple[Step, ...] = (
     ("ingest", read_feed),
+    ("site log", take_over_site_log),
     ("stale", find_stale),
     ("hourly scores", begin_hourly_scores),
     ("windows", compute_windows),

@@ -17,6 +17,7 @@ from rhovane.model import Alert, AlertEvent, CorrelationEstimate, EventKind
 from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
 from rhovane.pipeline.context import Night, WatchedPair
 from rhovane.pipeline.memory import Columns
+from rhovane.pipeline.set_aside import Known, what_is_known
 from rhovane.review import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import DailyScores
@@ -41,11 +42,15 @@ def raise_alerts(night: Night) -> str:
     first_day, scores = daily_scores(judged, all_evidence(night, judged), night.as_of)
     if first_day is None:
         return "no evidence yet"
-    seen = replay(night.settings, judged, scores, None if night.memory is None else night.memory.watch)
+    known = what_is_known(night, judged, first_day)
+    seen = replay(night.settings, judged, scores, known, None if night.memory is None else night.memory.watch)
+    aside = known.not_judged((night.as_of - first_day).days)
+    night.counts["not judged"] = {judged[i].pair.key: reason for i, reason in sorted(aside.items())}
+    silent = f"; {len(aside)} pairs not judged" if aside else ""
     found = [_found(i, judged, first_day) for i in seen.incidents]
     recipes = {w.pair.key: w.pair.recipe_hash for w in judged}
     if night.memory is not None and night.memory.same_findings((found, recipes)):
-        return "0 new, 0 changes of earlier ones"
+        return f"0 new, 0 changes of earlier ones{silent}"
     alerts, events = logged_alerts(night.store), logged_events(night.store)
     change = reconcile(
         found,
@@ -65,7 +70,7 @@ def raise_alerts(night: Night) -> str:
     if raised or change.events or ended:
         log_events(night.store, [*raised, *change.events, *ended])
     night.counts["alerts new"] = len(new)
-    return f"{len(new)} new, {len(change.events) + len(ended)} changes of earlier ones"
+    return f"{len(new)} new, {len(change.events) + len(ended)} changes of earlier ones{silent}"
 
 
 def all_evidence(night: Night, watched: Sequence[WatchedPair]) -> Columns:
@@ -130,9 +135,10 @@ def replay(
     settings: Settings,
     watched: Sequence[WatchedPair],
     scores: Sequence[DailyScores],
+    known: Known,
     memory: WatchMemory | None = None,
 ) -> Watch:
-    """The change watch over the daily scores of all pairs, with the network's settings."""
+    """The change watch over the daily scores of all pairs, with the network's settings and what people know."""
     limits = settings.alerts
     return watch(
         scores,
@@ -143,6 +149,8 @@ def replay(
         baseline_days=limits.baseline_days,
         guard_days=limits.guard_days,
         rebaseline_days=limits.rebaseline_days,
+        set_aside=known.set_aside,
+        new_baselines=known.new_baselines,
         memory=memory,
     )
 

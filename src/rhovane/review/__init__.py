@@ -3,18 +3,28 @@
 from rhovane.review.alert_list import AlertEntry, alert_entries, alert_entry, record_decision
 from rhovane.review.exporting import export_table
 from rhovane.review.log import log_alerts, log_events, logged_alerts, logged_events
+from rhovane.review.log_counts import LogCounts, log_counts
+from rhovane.review.nearby import Nearby, nearby_entries, site_log_json
+from rhovane.review.site_log import add_site_log_entry, withdraw_site_log_entry
 from rhovane.review.status import Status, network_status
 
 __all__ = [
     "AlertEntry",
+    "LogCounts",
+    "Nearby",
     "Status",
+    "add_site_log_entry",
     "alert_entries",
     "alert_entry",
     "export_table",
     "log_alerts",
+    "log_counts",
     "log_events",
     "logged_alerts",
     "logged_events",
+    "nearby_entries",
     "network_status",
     "record_decision",
+    "site_log_json",
+    "withdraw_site_log_entry",
 ]

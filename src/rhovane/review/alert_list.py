@@ -89,6 +89,9 @@ def record_decision(
 ) -> AlertEntry:
     """Append what a person decided to the alert log, and return the alert as it stands then.
 
+    An outcome acts on the watch from the first day that no night has judged yet; that day is recorded with it
+    as ``acts_from``.
+
     Raises
     ------
     NotFound
@@ -97,8 +100,15 @@ def record_decision(
         The decision does not fit the alert's state; says why.
     """
     entry = alert_entry(store, alert_id, now)
-    event = AlertEvent(alert_id, kind, now, who, note, payload or {})
+    facts = dict(payload or {})
+    if kind is EventKind.OUTCOME:
+        acts_from = store.next_judged_day() or entry.alert.night_as_of + dt.timedelta(days=1)
+        facts["acts_from"] = acts_from.isoformat()
+    event = AlertEvent(alert_id, kind, now, who, note, facts)
     reason = refusal(event, entry.events, now)
+    until = facts.get("until") if kind is EventKind.OUTCOME else None
+    if reason is None and until and dt.date.fromisoformat(until) < entry.alert.onset_day:
+        reason = f"it began on {entry.alert.onset_day}, after {until}; name a later end"
     if reason is not None:
         raise RhovaneError(f"alert {alert_id}: {reason}. Nothing was written.")
     log_events(store, [event])

@@ -22,7 +22,8 @@ class Status:
 
     ``last_night`` is the newest entry of the night ledger, whatever its outcome ("interrupted": it began
     and did not end); ``nights_missed`` counts days since the newest night that finished, all of them when
-    none has.
+    none has. ``not_judged`` are the pairs that site log, calendar or an outcome kept from being judged in that
+    night, with the reason.
     """
 
     network: str
@@ -32,6 +33,7 @@ class Status:
     unreviewed: int
     silent_series: list[dict[str, Any]]
     silent_pairs: list[dict[str, Any]]
+    not_judged: dict[str, str]
     rejected_rows: int
     exit_code: ExitCode
 
@@ -45,6 +47,7 @@ class Status:
             "unreviewed": self.unreviewed,
             "silent_series": self.silent_series,
             "silent_pairs": self.silent_pairs,
+            "not_judged": self.not_judged,
             "rejected_rows": self.rejected_rows,
             "exit_code": int(self.exit_code),
         }
@@ -103,13 +106,18 @@ def network_status(
             "as_of": newest.as_of.isoformat(),
             "outcome": "interrupted" if newest.outcome == "running" else newest.outcome,
             "steps": newest.steps,
-            "counts": {k: v for k, v in newest.counts.items() if k not in ("recipes", "left", "first_hours")},
+            "counts": {
+                k: v
+                for k, v in newest.counts.items()
+                if k not in ("recipes", "left", "first_hours", "not used")
+            },
         },
         missed,
         counts_by_state(entries),
         sum(e.needs_review for e in entries),
         silent_series,
         silent_pairs,
+        {} if last is None else dict(last.counts.get("not judged", {})),
         store.count_rejected(),
         code,
     )

@@ -1,5 +1,6 @@
 """Configuration: one TOML file → frozen, checked settings."""
 
+from rhovane.settings.calendar import CalendarEntry
 from rhovane.settings.load import load_settings, settings_from
 from rhovane.settings.schema import (
     AlertSettings,
@@ -11,9 +12,11 @@ from rhovane.settings.schema import (
     SourceSettings,
     parse_offset,
 )
+from rhovane.settings.site_log import load_site_log, site_log_entry
 
 __all__ = [
     "AlertSettings",
+    "CalendarEntry",
     "CorrelationSettings",
     "PairSettings",
     "SectorMask",
@@ -21,6 +24,8 @@ __all__ = [
     "Settings",
     "SourceSettings",
     "load_settings",
+    "load_site_log",
     "parse_offset",
     "settings_from",
+    "site_log_entry",
 ]

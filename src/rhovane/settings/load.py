@@ -9,16 +9,17 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 
 from rhovane.model import SettingsError
+from rhovane.settings.calendar import load_calendar
 from rhovane.settings.schema import Settings, describe
 
 
 def load_settings(path: Path) -> Settings:
-    """Read the settings file.
+    """Read the settings file and the calendar it names.
 
     Raises
     ------
     SettingsError
-        The file is missing, is not TOML, or holds mistakes; the message lists all of them.
+        A file is missing, is not TOML, or holds mistakes; the message lists all of them.
     """
     try:
         with path.open("rb") as stream:
@@ -33,11 +34,15 @@ def load_settings(path: Path) -> Settings:
         raise SettingsError(
             f"{path}: not valid TOML: {error}. Nothing was run. Edit the file and retry."
         ) from error
-    return settings_from(raw, path)
+    settings = settings_from(raw, path)
+    if settings.calendar.file:
+        place = path.parent / settings.calendar.file
+        settings = settings.with_calendar(load_calendar(place, settings.series_by_key()))
+    return settings
 
 
 def settings_from(raw: dict[str, Any], path: Path) -> Settings:
-    """Settings from a parsed TOML table; ``path`` is where it came from."""
+    """Settings from a parsed TOML table, without calendar entries; ``path`` is where it came from."""
     if "origin" in raw:
         raise _refusal(path, [("origin", "not a setting")])
     try:

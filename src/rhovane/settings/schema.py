@@ -6,13 +6,15 @@ import datetime as dt
 import hashlib
 import json
 import re
+from collections.abc import Sequence
 from functools import cached_property
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, field_validator, model_validator
 
 from rhovane.model import Flag, Pair, Series, Stage
+from rhovane.settings.calendar import CalendarEntry
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
@@ -64,29 +66,18 @@ class StoreSettings(Section):
 
 
 class CalendarSettings(Section):
-    """Days on which people do not work as usual, besides Saturday and Sunday (civil clock)."""
+    """Where the calendar is."""
 
-    other_days: tuple[str, ...] = Field(
-        (), description='Dates "2024-12-25" or spans "2024-12-23/2025-01-01" (both ends included).'
+    file: str = Field(
+        "",
+        description="Calendar file, relative to the settings file; empty: no days but weekends are special.",
     )
 
-    @field_validator("other_days")
-    @classmethod
-    def _spans(cls, value: tuple[str, ...]) -> tuple[str, ...]:
-        for text in value:
-            first, last = parse_span(text)
-            if last < first:
-                raise ValueError(f"the span {text!r} ends before it begins")
-        return value
 
-    @cached_property
-    def dates(self) -> frozenset[dt.date]:
-        """All other days as dates."""
-        days: set[dt.date] = set()
-        for text in self.other_days:
-            first, last = parse_span(text)
-            days.update(first + dt.timedelta(days=i) for i in range((last - first).days + 1))
-        return frozenset(days)
+class SiteLogSettings(Section):
+    """Where the site log is."""
+
+    file: str = Field("", description="Site log file, relative to the settings file; empty: none is read.")
 
 
 class ColumnSettings(Section):
@@ -311,12 +302,14 @@ class Settings(Section):
     store: StoreSettings = Field(default_factory=lambda: StoreSettings())
     night: NightSettings = Field(default_factory=lambda: NightSettings())
     calendar: CalendarSettings = Field(default_factory=lambda: CalendarSettings())
+    site_log: SiteLogSettings = Field(default_factory=lambda: SiteLogSettings())
     correlation: CorrelationSettings = Field(default_factory=lambda: CorrelationSettings())
     alerts: AlertSettings = Field(default_factory=lambda: AlertSettings())
     source: tuple[SourceSettings, ...] = Field(min_length=1)
     series: tuple[SeriesSettings, ...] = Field(min_length=1)
     pair: tuple[PairSettings, ...] = Field(min_length=1)
     origin: Path = Field(default=Path("settings.toml"), exclude=True)
+    _calendar: tuple[CalendarEntry, ...] = PrivateAttr(default=())
 
     @cached_property
     def work_folder(self) -> Path:
@@ -330,9 +323,32 @@ class Settings(Section):
 
     @cached_property
     def settings_hash(self) -> str:
-        """Changes when any setting does; recorded with every night."""
-        text = json.dumps(self.model_dump(mode="json"), sort_keys=True)
+        """Changes when any setting or the calendar does; recorded with every night."""
+        calendar = [entry.model_dump(mode="json") for entry in self.calendar_entries]
+        text = json.dumps([self.model_dump(mode="json"), calendar], sort_keys=True)
         return hashlib.sha256(text.encode()).hexdigest()[:16]
+
+    @property
+    def calendar_entries(self) -> tuple[CalendarEntry, ...]:
+        """The entries of the calendar file."""
+        return self._calendar
+
+    def with_calendar(self, entries: Sequence[CalendarEntry]) -> Settings:
+        """The same settings with these entries in the calendar."""
+        other = self.model_copy()
+        other._calendar = tuple(entries)
+        other.__dict__.pop("settings_hash", None)
+        return other
+
+    def other_days(self, first: dt.date, last: dt.date) -> frozenset[dt.date]:
+        """Days from ``first`` to ``last`` on which people do not work as usual, besides weekends."""
+        entries = [e for e in self.calendar_entries if e.kind == "other days"]
+        return frozenset(day for entry in entries for day in entry.dates(first, last))
+
+    @property
+    def site_log_path(self) -> Path | None:
+        """The site log file; None when none is named."""
+        return self.origin.parent / self.site_log.file if self.site_log.file else None
 
     def series_by_key(self) -> dict[str, SeriesSettings]:
         """Series settings by key."""
@@ -349,12 +365,17 @@ class Settings(Section):
         return tuple((pair, self.pair_of(pair)) for pair in self.pair)
 
     def pair_of(self, pair: PairSettings) -> Pair:
-        """A pair as a word of the domain; its recipe hash covers every setting that its numbers rest on."""
+        """A pair as a word of the domain; its recipe hash covers every setting that its numbers rest on.
+
+        Of the calendar that is the other days, for a pair of working days. Hours of maintenance take readings
+        away, as a revision does, and make no other recipe.
+        """
+        other_days = [e.model_dump(mode="json") for e in self.calendar_entries if e.kind == "other days"]
         parts = {
             "pair": pair.model_dump(mode="json", exclude={"label"}),
             "lags": list(self.lags_of(pair)),
             "correlation": self.correlation.model_dump(mode="json", exclude={"significance"}),
-            "calendar": self.calendar.model_dump(mode="json"),
+            "other days": other_days if pair.working_days_only else [],
             "clocks": [self.network.standard_time, self.network.civil_zone],
         }
         digest = hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
@@ -461,15 +482,6 @@ def parse_offset(text: str) -> dt.timedelta:
     """A fixed offset ``+HH:MM`` as a time span."""
     sign = -1 if text[0] == "-" else 1
     return sign * dt.timedelta(hours=int(text[1:3]), minutes=int(text[4:6]))
-
-
-def parse_span(text: str) -> tuple[dt.date, dt.date]:
-    """A date, or two dates joined by a slash (ISO 8601), as first and last day."""
-    first, _, last = text.partition("/")
-    try:
-        return dt.date.fromisoformat(first), dt.date.fromisoformat(last or first)
-    except ValueError:
-        raise ValueError(f"{text!r} is not a date 2024-12-25 or a span 2024-12-23/2025-01-01") from None
 
 
 def known_zone(name: str) -> str:

@@ -5,11 +5,13 @@ from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
 from rhovane.store.reading import Readings, read_parquet
 from rhovane.store.results import EVIDENCE_COLUMNS, LATER_COLUMNS, WINDOW_COLUMNS
+from rhovane.store.site_log import SITE_LOG_FILE, StoredSiteLogEntry
 from rhovane.store.store import Store
 
 __all__ = [
     "EVIDENCE_COLUMNS",
     "LATER_COLUMNS",
+    "SITE_LOG_FILE",
     "WINDOW_COLUMNS",
     "NewAlert",
     "NewAlertEvent",
@@ -18,6 +20,7 @@ __all__ = [
     "Store",
     "StoredAlert",
     "StoredAlertEvent",
+    "StoredSiteLogEntry",
     "open_store",
     "read_parquet",
 ]

@@ -95,10 +95,18 @@ create table delivery (
 );
 """
 
+_SITE_LOG = """
+alter table site_log add column readings varchar;
+alter table site_log add column acts_from date;
+alter table site_log add column withdrawn_at timestamp;
+alter table site_log add column withdrawn_from date;
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
+    Migration(4, "site log: what becomes of the readings, and since when", _SITE_LOG),
 )
 
 

@@ -7,10 +7,11 @@ from rhovane.store.ingesting import ReadingWriter
 from rhovane.store.nights import NightLedger
 from rhovane.store.reading import ReadingReader
 from rhovane.store.results import Results
+from rhovane.store.site_log import SiteLog
 from rhovane.store.upkeep import Upkeep
 
 
-class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, Upkeep):
+class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, SiteLog, Upkeep):
     """An open store; made by :func:`rhovane.store.open_store`, used in a ``with`` block.
 
     Datetimes given without a zone are taken as UTC; datetimes returned say UTC. Spans of time are
