@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from rhovane.cli.alert_wording import short_state
 from rhovane.cli.entry import main, utc_now, writes_store
-from rhovane.cli.wording import short_state
 from rhovane.model import EventKind, Outcome
 
 if TYPE_CHECKING:

@@ -1,6 +1,7 @@
 """The words of the domain, in the standard library only."""
 
-from rhovane.model.alerts import Alert, AlertEvent, AlertState, CorrelationEstimate, EventKind, Outcome
+from rhovane.model.alert_sheet import AlertSheet, Bounded, EpisodeDays, Hint, SeriesLevel, Witness
+from rhovane.model.alerts import Alert, AlertEvent, AlertState, EventKind, Outcome
 from rhovane.model.errors import (
     ExitCode,
     FeedError,
@@ -10,18 +11,24 @@ from rhovane.model.errors import (
     StoreDamaged,
     StoreLocked,
 )
+from rhovane.model.estimates import CorrelationEstimate
+from rhovane.model.plain import plain_of
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
 from rhovane.model.series import Pair, Series, SeriesKind
 
 __all__ = [
     "Alert",
     "AlertEvent",
+    "AlertSheet",
     "AlertState",
+    "Bounded",
     "CorrelationEstimate",
+    "EpisodeDays",
     "EventKind",
     "ExitCode",
     "FeedError",
     "Flag",
+    "Hint",
     "IngestOutcome",
     "NotFound",
     "Outcome",
@@ -31,8 +38,11 @@ __all__ = [
     "RhovaneError",
     "Series",
     "SeriesKind",
+    "SeriesLevel",
     "SettingsError",
     "Stage",
     "StoreDamaged",
     "StoreLocked",
+    "Witness",
+    "plain_of",
 ]

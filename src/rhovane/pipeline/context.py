@@ -71,6 +71,7 @@ class Night:
     file by itself (a whole night does so at its end, where ``checkpoint_night`` says so).
     ``memory`` lets a night go on from the one before in the same process; the result is the same.
     ``arrived`` are the feed files to look at; None: whatever the feed folders hold. ``scored`` is the evidence that this night computed.
+    ``data_version``: use the readings as they were after this ingest; None: as they are.
     """
 
     settings: Settings
@@ -85,6 +86,7 @@ class Night:
     checkpoint_night: bool = True
     memory: NightMemory | None = None
     arrived: Sequence[Path] | None = None
+    data_version: int | None = None
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
@@ -116,7 +118,9 @@ class Night:
                 self._grid = self.memory.grid(settings, self.store, first, self.as_of, stale_from)
             else:
                 keys = {k for w in stale for k in settings.series_of(w.recipe)}
-                self._grid = load_grid(settings, self.store, keys, first, self.as_of)
+                self._grid = load_grid(
+                    settings, self.store, keys, first, self.as_of, max_ingest_id=self.data_version
+                )
         return self._grid
 
     def arrays(self, watched: WatchedPair) -> PairArrays:

@@ -3,10 +3,12 @@
 from rhovane.review.alert_list import AlertEntry, alert_entries, alert_entry, record_decision
 from rhovane.review.exporting import export_table
 from rhovane.review.log import log_alerts, log_events, logged_alerts, logged_events
+from rhovane.review.provenance import Provenance, provenance_of
 from rhovane.review.status import Status, network_status
 
 __all__ = [
     "AlertEntry",
+    "Provenance",
     "Status",
     "alert_entries",
     "alert_entry",
@@ -16,5 +18,6 @@ __all__ = [
     "logged_alerts",
     "logged_events",
     "network_status",
+    "provenance_of",
     "record_decision",
 ]

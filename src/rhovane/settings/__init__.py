@@ -9,6 +9,7 @@ from rhovane.settings.schema import (
     SeriesSettings,
     Settings,
     SourceSettings,
+    hash_of,
     parse_offset,
 )
 
@@ -20,6 +21,7 @@ __all__ = [
     "SeriesSettings",
     "Settings",
     "SourceSettings",
+    "hash_of",
     "load_settings",
     "parse_offset",
     "settings_from",

@@ -331,8 +331,12 @@ class Settings(Section):
     @cached_property
     def settings_hash(self) -> str:
         """Changes when any setting does; recorded with every night."""
-        text = json.dumps(self.model_dump(mode="json"), sort_keys=True)
-        return hashlib.sha256(text.encode()).hexdigest()[:16]
+        return hash_of(self.text)
+
+    @cached_property
+    def text(self) -> str:
+        """All settings as JSON, defaults included; :func:`rhovane.settings.settings_from` reads it again."""
+        return json.dumps(self.model_dump(mode="json"), sort_keys=True)
 
     def series_by_key(self) -> dict[str, SeriesSettings]:
         """Series settings by key."""
@@ -450,6 +454,11 @@ def _repeated(section: str, names: list[str]) -> list[tuple[str, str]]:
         for name in sorted(set(names))
         if names.count(name) > 1
     ]
+
+
+def hash_of(text: str) -> str:
+    """The hash that settings of this text are known by."""
+    return hashlib.sha256(text.encode()).hexdigest()[:16]
 
 
 def parse_offset(text: str) -> dt.timedelta:

@@ -95,10 +95,15 @@ create table delivery (
 );
 """
 
+_SETTINGS = """
+create table settings_used (hash varchar, text varchar);
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
+    Migration(4, "settings that nights ran with", _SETTINGS),
 )
 
 

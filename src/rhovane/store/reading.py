@@ -18,9 +18,9 @@ from rhovane.store.session import Session, plain_array
 
 # A history row was current from its own ingest until before the one that superseded it.
 AS_OF_READINGS = """
-    select series_id, ts, value, flag, stage, result_time, ingest_id from reading where ingest_id <= $upto
+    select series_id, ts, value, flag, stage, result_time, line, ingest_id from reading where ingest_id <= $upto
     union all
-    select series_id, ts, value, flag, stage, result_time, ingest_id from reading_history
+    select series_id, ts, value, flag, stage, result_time, line, ingest_id from reading_history
     where ingest_id <= $upto and superseded_by > $upto
 """
 
@@ -45,6 +45,21 @@ class Readings:
 
     def __len__(self) -> int:
         return len(self.ts)
+
+
+@dataclass(frozen=True)
+class Origin:
+    """Readings of one series that one file gave: how many, on which lines, for which hours (UTC)."""
+
+    series: str
+    source: str
+    path: str
+    sha256: str
+    first_line: int
+    last_line: int
+    n_readings: int
+    first_hour: datetime
+    last_hour: datetime
 
 
 class ReadingReader(Session):
@@ -92,6 +107,29 @@ class ReadingReader(Session):
             found["value"].astype(float),
             found["flag"],
         )
+
+    def origins(
+        self, keys: Sequence[str], start: datetime, end: datetime, *, max_ingest_id: int
+    ) -> list[Origin]:
+        """Where the readings with ``start <= t < end`` came from, as they were after an ingest.
+
+        In order of series, then of the first hour that a file gave.
+        """
+        found = self.rows(
+            f"""
+            select s.key, i.source, i.path, i.sha256, min(r.line), max(r.line), count(*), min(r.ts), max(r.ts)
+            from ({AS_OF_READINGS}) r join series s on s.id = r.series_id join ingest i on i.id = r.ingest_id
+            where s.key in (select unnest($keys)) and r.ts >= $start and r.ts < $end
+            group by s.key, i.source, i.path, i.sha256, i.id order by s.key, min(r.ts), i.id
+            """,
+            {
+                "upto": int(max_ingest_id),
+                "keys": list(keys),
+                "start": naive_utc(start),
+                "end": naive_utc(end),
+            },
+        )
+        return [Origin(*row[:7], aware_utc(row[7]), aware_utc(row[8])) for row in found]
 
     def changed_since(self, ingest_id: int) -> dict[str, datetime]:
         """For each series the first hour whose value or flag later ingests brought or revised.
