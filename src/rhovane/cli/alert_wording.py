@@ -41,7 +41,7 @@ WORDS = (
     ("independent", "unrelated hours worth as much as these; below 10 nothing can be tested"),
     ("change", "difference of the two rho after atanh, a scale on which equal steps are equally hard to see"),
     ("slope", "Theil-Sen: the median of all slopes between two hours"),
-    ("z", "change in standard deviations of such a change; from 2.5 on the pair counts as moved"),
+    ("z", "change in standard deviations of such a change; a pair moved from 2.5 on, held below 1.5"),
     ("evidence", "logarithm of the chart that crossed its threshold"),
 )
 
@@ -223,7 +223,7 @@ def _witnesses(witnesses: Sequence[Witness]) -> list[str]:
             continue
         n_moved = sum(w.moved is True for w in mine)
         lines.append(f"  {title}: {n_moved} of {len(mine)} moved")
-        order = (("moved", True), ("held", False), ("unknown", None))
+        order = (("moved", True), ("held", False), ("unclear", None))
         lines += [f"    {word:<8}{_witness(w)}" for word, moved in order for w in mine if w.moved is moved]
     return lines or ["  none shares a series or the quantities with it"]
 
@@ -264,7 +264,10 @@ def _rests_on(a: Alert, provenance: Provenance | None) -> list[str]:
         lines.append(f"    {series} from {source}: {n} readings in {len(mine)} files")
         shown = mine if len(mine) < FEWEST_FILES_SUMMED else [mine[0], mine[-1]]
         for o in shown:
-            text = f"{o.path} lines {o.first_line} to {o.last_line}, sha256 {o.sha256[:12]}"
+            lines_of = (
+                "given again since" if o.first_line is None else f"lines {o.first_line} to {o.last_line}"
+            )
+            text = f"{o.path} {lines_of}, sha256 {o.sha256[:12]}"
             lines += textwrap.wrap(text, WIDTH, initial_indent=" " * 6, subsequent_indent=" " * 8)
     lines.append("  every file: rhovane alert ID --json; recomputed: rhovane alert ID --reproduce")
     return lines

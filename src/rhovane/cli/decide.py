@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from rhovane.cli.alert_wording import short_state
+from rhovane.cli.alert_wording import state_in_full
 from rhovane.cli.entry import main, utc_now, writes_store
 from rhovane.model import EventKind, Outcome
 
@@ -30,7 +30,7 @@ def _record(
     from rhovane.review import record_decision
 
     entry = record_decision(store, alert_id, kind, now=utc_now(), who=who, note=note, payload=payload)
-    click.echo(f"Alert {alert_id}: {short_state(entry)}")
+    click.echo(f"Alert {alert_id}: {state_in_full(entry)}")
 
 
 @main.command()

@@ -36,7 +36,7 @@ class Witness:
 
     ``relation`` is "own" (a pair of the suspect), "partner" (shares a series with one of those) or "alike" (the same
     two quantities elsewhere). ``before`` and ``after`` are means of daily correlations, ``z`` the change in
-    standard deviations; ``moved`` None: too few days to say.
+    standard deviations; ``moved`` None: unclear, or too few days to say.
     """
 
     pair: str

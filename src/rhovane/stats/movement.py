@@ -15,6 +15,8 @@ Floats = NDArray[np.float64]
 MOVED = 2.5
 """Standard deviations from which a pair counts as moved. In the demo's world, 7 days from an arbitrary day on, 4 %
 of the pairs reach it: planted changes, weather and season, which move pairs too."""
+HELD = 1.5
+"""Standard deviations below which a pair counts as held; between the two nothing is said."""
 HISTORY_DAYS = 180
 """Days before the onset from which it is learnt how far such sums stray without a change."""
 FEWEST_SUMS = 60
@@ -28,8 +30,8 @@ class Movement:
     """How one pair's daily correlation moved from a day on.
 
     ``before`` is its reference on that day, ``after`` the mean since (daily correlations, back from atanh); ``z`` the
-    mean deviation in standard deviations of such a mean; ``moved`` None where fewer than two days were scored or
-    there is no reference (then the numbers may be NaN).
+    mean deviation in standard deviations of such a mean; ``moved`` None where that is unclear: 1.5 to 2.5
+    of them, fewer than two scored days, or no reference (then the numbers may be NaN).
     """
 
     before: float
@@ -71,7 +73,8 @@ def movements_since(
             out.append(Movement(before, after, float("nan"), n, None))
             continue
         z = float(np.nansum(since[:, p])) / _usual_sum(own[:, p], n)
-        out.append(Movement(before, after, z, n, abs(z) >= MOVED))
+        moved = None if HELD <= abs(z) < MOVED else abs(z) >= MOVED
+        out.append(Movement(before, after, z, n, moved))
     return tuple(out)
 
 
