@@ -114,7 +114,7 @@ def alert_lines(entry: AlertEntry, provenance: Provenance | None = None, *, now:
     lines += _facts(facts)
     if now and a.sheet is not None:
         lines += ["", f"As seen now: nights to {a.sheet.as_of}, readings to ingest {a.sheet.data_version}."]
-    lines += ["", f"Rank correlation of {a.pair_key}", *_correlations(a)]
+    lines += ["", *textwrap.wrap(f"Rank correlation of {a.pair_key}", WIDTH), *_correlations(a)]
     if a.sheet is not None:
         lines += ["", "Level, which rho cannot see", *_levels(a.sheet)]
         lines += ["", f"Other pairs since {a.onset_day} (daily correlations)", *_witnesses(a.sheet.witnesses)]
