@@ -99,6 +99,14 @@ def test_a_count_that_fell_speaks_for_the_road_and_an_unmoved_receptor_for_the_c
     assert len(counter.supports) == 2
 
 
+def test_a_receptor_that_rose_speaks_for_a_new_source_and_against_a_weaker_one():
+    told = sheet(ratios={"S.lorries": (0.95, 0.8, 1.1), "S.PM10": (1.44, 1.1, 1.9)})
+    weaker, new, *_ = hints_for(alert("S.lorries", "S.PM10", told=told))
+    assert "median of S.PM10 is × 1.44 of before" in weaker.against
+    assert new.text == "consistent with a new source beside S.PM10"
+    assert new.supports == ("median of S.PM10 is × 1.44 of before",)
+
+
 @pytest.mark.parametrize(("spread", "supported"), [(0.12, True), (0.95, False)])
 def test_a_shrunken_spread_speaks_for_a_blocked_inlet(spread: float, supported: bool):
     told = sheet(ratios={"D.PM25": (0.5, 0.3, 1.2)}, spread=spread)

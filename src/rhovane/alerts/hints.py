@@ -251,6 +251,8 @@ def _weaker(facts: _Facts) -> list[Hint]:
 def _road(source: str, receptor: str, facts: _Facts) -> list[Hint]:
     count, level = facts.ratio(source), facts.ratio(receptor)
     lower = count is not None and count.value is not None and count.value < FELL
+    fell = _clear(level) and level is not None and level.value is not None and level.value < 1.0
+    rose = _clear(level) and not fell
     unmoved = level is not None and not _clear(level)
     told = () if count is None else (f"median of {source} is {_times(count)} of before",)
     follows = () if level is None else (f"median of {receptor} is {_times(level)} of before",)
@@ -258,10 +260,11 @@ def _road(source: str, receptor: str, facts: _Facts) -> list[Hint]:
     return [
         Hint(
             "consistent with a weaker local source (closure, works, diverted traffic)",
-            (*(told if lower else ()), *(() if unmoved else follows)),
-            (*(() if lower else told), *(follows if unmoved else ())),
+            (*(told if lower else ()), *(follows if fell else ())),
+            (*(() if lower else told), *(() if fell else follows)),
             "site log, road works, the count on other roads",
         ),
+        *_new_source(receptor, follows if rose else ()),
         Hint(
             "consistent with a fault of the counter (a lane lost, a loop dead)",
             (*(told if lower else ()), *(follows if unmoved else ())),
@@ -275,6 +278,19 @@ def _road(source: str, receptor: str, facts: _Facts) -> list[Hint]:
             f"other pairs of {receptor}",
         ),
         *_sector(facts),
+    ]
+
+
+def _new_source(receptor: str, risen: Sentences) -> list[Hint]:
+    """A receptor that rose while it follows its old source less."""
+    if not risen:
+        return []
+    return [
+        Hint(
+            f"consistent with a new source beside {receptor}",
+            risen,
+            check="site log; wind sectors and hours in which it is high",
+        )
     ]
 
 
