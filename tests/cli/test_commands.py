@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -74,7 +75,7 @@ def test_alerts_are_listed_for_people_and_for_machines(config: str):
     text = run("alerts", "--config", config)
     assert text.exit_code == ExitCode.WELL
     assert "A.NO2~B.NO2" in text.output
-    assert max(len(line) for line in text.output.splitlines()) <= 100
+    assert max(len(line) for line in text.output.splitlines()) <= 80
     (alert,) = json.loads(run("alerts", "--config", config, "--json").output)
     assert alert["pair_key"] == "A.NO2~B.NO2"
     assert alert["direction"] == "weaker"
@@ -84,10 +85,39 @@ def test_alerts_are_listed_for_people_and_for_machines(config: str):
 
 def test_one_alert_shows_what_it_rests_on_and_the_cautions(config: str):
     output = run("alert", "1", "--config", config).output
-    for words in ("before", "after", "evidence", "threshold", "rests on", "settings"):
+    for words in (
+        "before",
+        "after",
+        "change",
+        "evidence",
+        "threshold",
+        "Rests on",
+        "settings",
+        "median",
+        "slope of",
+    ):
         assert words in output
+    assert "feed/all.csv lines" in output
+    assert re.search(r"onset +\S+ \(.*90 %|onset +about .*90 %", output)
     assert "Association is not cause" in " ".join(output.split())
     assert max(len(line) for line in output.splitlines()) <= 80
+
+
+def test_an_alert_for_machines_holds_its_sheet_and_the_origin_of_its_readings(config: str):
+    alert = json.loads(run("alert", "1", "--config", config, "--json").output)
+    assert alert["sheet"]["change"]["high"] < 0
+    assert {o["path"] for o in alert["provenance"]["origins"]} == {"feed/all.csv"}
+    assert len(alert["provenance"]["origins"][0]["sha256"]) == 64
+    now = json.loads(run("alert", "1", "--now", "--config", config, "--json").output)
+    assert now["sheet"] == alert["sheet"]
+    assert "As seen now: nights to 2025-06-19" in run("alert", "1", "--now", "--config", config).output
+
+
+def test_an_alert_is_reproduced_bit_for_bit(config: str):
+    same = run("alert", "1", "--reproduce", "--config", config)
+    assert same.exit_code == ExitCode.WELL, same.output
+    assert "the same in every bit" in " ".join(same.output.split())
+    assert json.loads(run("alert", "1", "--reproduce", "--config", config, "--json").output)["matches"]
 
 
 def test_an_alert_that_does_not_exist_ends_with_a_message(config: str):

@@ -24,7 +24,8 @@ class Found:
     ``pair_key`` is the pair whose evidence crossed the threshold, ``members`` all pairs concerned;
     ``suspect`` names what is likeliest to have changed. ``end_day`` is None while it lasts; ``ending``
     says how it ended: "returned" or "new baseline". ``evidence`` and ``threshold`` are the chart's value
-    and limit on the alarm day.
+    and limit on the alarm day. ``onset_range`` holds the onset with a probability of 90 %; ``lag_steps``
+    says by how many steps the suspect seems late.
     """
 
     pair_key: str
@@ -39,6 +40,8 @@ class Found:
     suspect: str = ""
     evidence: float = float("nan")
     threshold: float = float("nan")
+    onset_range: tuple[dt.date, dt.date] | None = None
+    lag_steps: int = 0
 
 
 @dataclass(frozen=True)

@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from rhovane.cli.alert_wording import state_in_full
 from rhovane.cli.entry import main, utc_now, writes_store
-from rhovane.cli.wording import short_state
 from rhovane.model import EventKind, Outcome
 
 if TYPE_CHECKING:
@@ -32,7 +32,7 @@ def _record(
     entry = record_decision(store, alert_id, kind, now=utc_now(), who=who, note=note, payload=payload)
     acts = entry.events[-1].payload.get("acts_from")
     click.echo(
-        f"Alert {alert_id}: {short_state(entry)}" + (f"; acts from the night of {acts}" if acts else "")
+        f"Alert {alert_id}: {state_in_full(entry)}" + (f"; acts from the night of {acts}" if acts else "")
     )
 
 

@@ -13,7 +13,8 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 
-from rhovane.cli.wording import alert_table, caution_lines
+from rhovane.cli.alert_wording import alert_table
+from rhovane.cli.wording import caution_lines
 from rhovane.model import RhovaneError
 from rhovane.pipeline import nights_between, walk_nights
 from rhovane.review import AlertEntry, alert_entries

@@ -2,16 +2,20 @@
 
 from __future__ import annotations
 
+import dataclasses
 import datetime as dt
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
+from rhovane.cli.alert_wording import alert_lines, alert_table, reproduction_lines
 from rhovane.cli.entry import Ending, main, print_json, reads_store, utc_now, with_json
-from rhovane.cli.wording import alert_lines, alert_table, caution_lines, count_lines, status_lines
+from rhovane.cli.wording import caution_lines, count_lines, status_lines
+from rhovane.model import ExitCode
 
 if TYPE_CHECKING:
+    from rhovane.review import AlertEntry
     from rhovane.settings import Settings
     from rhovane.store import Store
 
@@ -48,18 +52,48 @@ def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool, co
 @click.argument("alert_id", metavar="ID", type=int)
 @reads_store
 @with_json
-def alert(settings: Settings, store: Store, alert_id: int, as_json: bool) -> None:
-    """Show one alert in full: before and after, evidence, what it rests on, what site log and calendar say, its log."""
-    from rhovane.review import alert_entry, nearby_entries
+@click.option(
+    "--now", "as_of_now", is_flag=True, help="With all nights and readings so far, not those of its night."
+)
+@click.option(
+    "--reproduce", "again", is_flag=True, help="Compute it again from its stored inputs and compare."
+)
+def alert(
+    settings: Settings, store: Store, alert_id: int, as_json: bool, as_of_now: bool, again: bool
+) -> None:
+    """Show one alert in full: before and after, counter-evidence, what it rests on, its log.
+
+    With --reproduce ends with 1 when the alert computed again is not the same in every bit.
+    """
+    from rhovane.review import alert_entry, nearby_entries, provenance_of
 
     entry = alert_entry(store, alert_id, utc_now())
+    if again:
+        _reproduce(settings, store, entry, as_json)
+        return
+    provenance = provenance_of(settings, store, entry.alert)
+    if as_of_now:
+        from rhovane.pipeline import as_seen_now
+
+        entry = dataclasses.replace(entry, alert=as_seen_now(settings, store, entry.alert, utc_now()))
     around = nearby_entries(settings, store, entry.alert)
     offset = settings.network.standard_offset
     if as_json:
-        print_json({**entry.as_json(), **around.as_json(offset)})
+        print_json({**entry.as_json(), **around.as_json(offset), "provenance": provenance.as_json()})
         return
-    click.echo("\n".join(alert_lines(entry, around, offset)))
+    click.echo("\n".join(alert_lines(entry, provenance, around, offset, now=as_of_now)))
     click.echo("\n" + "\n".join(caution_lines()))
+
+
+def _reproduce(settings: Settings, store: Store, entry: AlertEntry, as_json: bool) -> None:
+    from rhovane.pipeline import reproduce
+
+    found = reproduce(settings, store, entry.alert, utc_now())
+    if as_json:
+        print_json(found.as_json())
+    else:
+        click.echo("\n".join(reproduction_lines(found)))
+    raise Ending(ExitCode.WELL if found.matches else ExitCode.FAILED)
 
 
 @main.command()

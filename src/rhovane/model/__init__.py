@@ -1,6 +1,7 @@
 """The words of the domain, in the standard library only."""
 
-from rhovane.model.alerts import Alert, AlertEvent, AlertState, CorrelationEstimate, EventKind, Outcome
+from rhovane.model.alert_sheet import AlertSheet, Bounded, EpisodeDays, Hint, SeriesLevel, Witness
+from rhovane.model.alerts import Alert, AlertEvent, AlertState, EventKind, Outcome
 from rhovane.model.errors import (
     ExitCode,
     FeedError,
@@ -10,6 +11,8 @@ from rhovane.model.errors import (
     StoreDamaged,
     StoreLocked,
 )
+from rhovane.model.estimates import CorrelationEstimate
+from rhovane.model.plain import plain_of
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
 from rhovane.model.series import Pair, Series, SeriesKind
 from rhovane.model.site_log import ReadingsUse, SiteLogEntry
@@ -17,12 +20,16 @@ from rhovane.model.site_log import ReadingsUse, SiteLogEntry
 __all__ = [
     "Alert",
     "AlertEvent",
+    "AlertSheet",
     "AlertState",
+    "Bounded",
     "CorrelationEstimate",
+    "EpisodeDays",
     "EventKind",
     "ExitCode",
     "FeedError",
     "Flag",
+    "Hint",
     "IngestOutcome",
     "NotFound",
     "Outcome",
@@ -33,9 +40,12 @@ __all__ = [
     "RhovaneError",
     "Series",
     "SeriesKind",
+    "SeriesLevel",
     "SettingsError",
     "SiteLogEntry",
     "Stage",
     "StoreDamaged",
     "StoreLocked",
+    "Witness",
+    "plain_of",
 ]

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from rhovane.pipeline.unused import unused_now
+from rhovane.pipeline.unused import Unused, unused_now
 from rhovane.prepare import Days, Grid, PairMask, days_of, kept_hours, to_grid
 from rhovane.settings import PairSettings, Settings
 from rhovane.store import Store
@@ -42,10 +42,11 @@ def load_grid(
     last: dt.date,
     *,
     max_ingest_id: int | None = None,
+    unused: Unused | None = None,
 ) -> Grid:
     """Observations of the series from the first to the last day, both included (standard time).
 
-    Hours of maintenance, and those that the site log takes out, have none.
+    Hours of maintenance, and those that the site log takes out, have none: ``unused``, default as they stand now.
     """
     days: Days = days_of(settings.network.standard_offset)
     start, end = days.start_of(first), days.end_of(last)
@@ -62,7 +63,8 @@ def load_grid(
         flag=found.flag,
         accepted_flags=settings.accepted_flags(),
     )
-    unused = unused_now(settings, store)
+    if unused is None:
+        unused = unused_now(settings, store)
     if unused:
         for column, key in enumerate(grid.keys):
             hours = unused.hours(key, grid.hour_start, settings.network.civil_zone)

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from rhovane.model import IngestOutcome, Pair
 from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
 from rhovane.pipeline.memory import NightMemory
+from rhovane.pipeline.unused import Unused
 from rhovane.prepare import Days, Grid, days_of
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import HISTORY_DAYS
@@ -73,6 +74,8 @@ class Night:
     file by itself (a whole night does so at its end, where ``checkpoint_night`` says so).
     ``memory`` lets a night go on from the one before in the same process; the result is the same.
     ``arrived`` are the feed files to look at; None: whatever the feed folders hold. ``scored`` is the evidence that this night computed.
+    ``data_version``: use the readings as they were after this ingest; None: as they are. ``unused``: the readings
+    taken out of the statistics; None: those that calendar and site log take out now.
     """
 
     settings: Settings
@@ -87,6 +90,8 @@ class Night:
     checkpoint_night: bool = True
     memory: NightMemory | None = None
     arrived: Sequence[Path] | None = None
+    data_version: int | None = None
+    unused: Unused | None = None
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
@@ -119,7 +124,15 @@ class Night:
                 self._grid = self.memory.grid(settings, self.store, first, self.as_of, stale_from)
             else:
                 keys = {k for w in stale for k in settings.series_of(w.recipe)}
-                self._grid = load_grid(settings, self.store, keys, first, self.as_of)
+                self._grid = load_grid(
+                    settings,
+                    self.store,
+                    keys,
+                    first,
+                    self.as_of,
+                    max_ingest_id=self.data_version,
+                    unused=self.unused,
+                )
         return self._grid
 
     def arrays(self, watched: WatchedPair) -> PairArrays:

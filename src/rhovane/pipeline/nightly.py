@@ -120,6 +120,7 @@ def run_night(
         memory=memory,
         arrived=arrived,
     )
+    store.keep_settings(settings.settings_hash, settings.text)
     night.id = store.begin_night(
         kind=kind,
         as_of=as_of,

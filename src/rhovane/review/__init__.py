@@ -5,6 +5,7 @@ from rhovane.review.exporting import export_table
 from rhovane.review.log import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.review.log_counts import LogCounts, log_counts
 from rhovane.review.nearby import Nearby, nearby_entries, site_log_json
+from rhovane.review.provenance import Provenance, provenance_of
 from rhovane.review.site_log import add_site_log_entry, withdraw_site_log_entry
 from rhovane.review.status import Status, network_status
 
@@ -12,6 +13,7 @@ __all__ = [
     "AlertEntry",
     "LogCounts",
     "Nearby",
+    "Provenance",
     "Status",
     "add_site_log_entry",
     "alert_entries",
@@ -24,6 +26,7 @@ __all__ = [
     "logged_events",
     "nearby_entries",
     "network_status",
+    "provenance_of",
     "record_decision",
     "site_log_json",
     "withdraw_site_log_entry",

@@ -1,7 +1,7 @@
 """Configuration: one TOML file → frozen, checked settings."""
 
 from rhovane.settings.calendar import CalendarEntry
-from rhovane.settings.load import load_settings, settings_from
+from rhovane.settings.load import load_settings, settings_from, settings_of_text
 from rhovane.settings.schema import (
     AlertSettings,
     CorrelationSettings,
@@ -10,6 +10,7 @@ from rhovane.settings.schema import (
     SeriesSettings,
     Settings,
     SourceSettings,
+    hash_of,
     parse_offset,
 )
 from rhovane.settings.site_log import load_site_log, site_log_entry
@@ -23,9 +24,11 @@ __all__ = [
     "SeriesSettings",
     "Settings",
     "SourceSettings",
+    "hash_of",
     "load_settings",
     "load_site_log",
     "parse_offset",
     "settings_from",
+    "settings_of_text",
     "site_log_entry",
 ]

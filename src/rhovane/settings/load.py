@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import tomllib
 from pathlib import Path
 from typing import Any
@@ -9,7 +10,7 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 
 from rhovane.model import SettingsError
-from rhovane.settings.calendar import load_calendar
+from rhovane.settings.calendar import CalendarEntry, load_calendar
 from rhovane.settings.schema import Settings, describe
 
 
@@ -53,6 +54,12 @@ def settings_from(raw: dict[str, Any], path: Path) -> Settings:
     if found:
         raise _refusal(path, found)
     return settings
+
+
+def settings_of_text(text: str, path: Path) -> Settings:
+    """Settings and calendar from the text that ``Settings.text`` made of them."""
+    raw, calendar = json.loads(text)
+    return settings_from(raw, path).with_calendar([CalendarEntry.model_validate(entry) for entry in calendar])
 
 
 def _refusal(path: Path, mistakes: list[tuple[str, str]]) -> SettingsError:

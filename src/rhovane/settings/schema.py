@@ -324,9 +324,13 @@ class Settings(Section):
     @cached_property
     def settings_hash(self) -> str:
         """Changes when any setting or the calendar does; recorded with every night."""
+        return hash_of(self.text)
+
+    @cached_property
+    def text(self) -> str:
+        """All settings and the calendar as JSON, defaults included; :func:`rhovane.settings.settings_of_text` reads it again."""
         calendar = [entry.model_dump(mode="json") for entry in self.calendar_entries]
-        text = json.dumps([self.model_dump(mode="json"), calendar], sort_keys=True)
-        return hashlib.sha256(text.encode()).hexdigest()[:16]
+        return json.dumps([self.model_dump(mode="json"), calendar], sort_keys=True)
 
     @property
     def calendar_entries(self) -> tuple[CalendarEntry, ...]:
@@ -337,7 +341,8 @@ class Settings(Section):
         """The same settings with these entries in the calendar."""
         other = self.model_copy()
         other._calendar = tuple(entries)
-        other.__dict__.pop("settings_hash", None)
+        for name in ("settings_hash", "text"):
+            other.__dict__.pop(name, None)
         return other
 
     def other_days(self, first: dt.date, last: dt.date) -> frozenset[dt.date]:
@@ -476,6 +481,11 @@ def _repeated(section: str, names: list[str]) -> list[tuple[str, str]]:
         for name in sorted(set(names))
         if names.count(name) > 1
     ]
+
+
+def hash_of(text: str) -> str:
+    """The hash that settings of this text are known by."""
+    return hashlib.sha256(text.encode()).hexdigest()[:16]
 
 
 def parse_offset(text: str) -> dt.timedelta:

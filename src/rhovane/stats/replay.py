@@ -25,6 +25,7 @@ from rhovane.stats.network import (
     references,
     unrest,
 )
+from rhovane.stats.onset import onset_range
 from rhovane.stats.suspect import explain, lag_movement, slipped_node
 
 Floats = NDArray[np.float64]
@@ -269,7 +270,8 @@ class Replay:
                 continue
             onset = onset_day(self.scaled[chart], day, self.first)
             value, limit = float(self.values[chart, day]), float(self.limit[chart])
-            incident = OpenIncident(day, onset, int(chart), value, limit)
+            span = onset_range(self.scaled[chart], day, self.first)
+            incident = OpenIncident(day, onset, int(chart), value, limit, span)
             incident.pairs = pairs
             incident.reach = self.touches[chart].copy()
             self._spoil(pairs, onset, day + SETTLING_DAYS)

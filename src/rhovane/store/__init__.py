@@ -3,7 +3,7 @@
 from rhovane.store.alert_log import NewAlert, NewAlertEvent, StoredAlert, StoredAlertEvent
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
-from rhovane.store.reading import Readings, read_parquet
+from rhovane.store.reading import Origin, Readings, read_parquet
 from rhovane.store.results import EVIDENCE_COLUMNS, LATER_COLUMNS, WINDOW_COLUMNS
 from rhovane.store.site_log import SITE_LOG_FILE, StoredSiteLogEntry
 from rhovane.store.store import Store
@@ -16,6 +16,7 @@ __all__ = [
     "NewAlert",
     "NewAlertEvent",
     "NightRecord",
+    "Origin",
     "Readings",
     "Store",
     "StoredAlert",

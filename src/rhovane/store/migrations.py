@@ -102,11 +102,16 @@ alter table site_log add column withdrawn_at timestamp;
 alter table site_log add column withdrawn_from date;
 """
 
+_SETTINGS = """
+create table settings_used (hash varchar, text varchar);
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
     Migration(4, "site log: what becomes of the readings, and since when", _SITE_LOG),
+    Migration(5, "settings that nights ran with", _SETTINGS),
 )
 
 

@@ -14,6 +14,7 @@ from rhovane.store.jsontext import json_text
 from rhovane.store.session import Session
 
 NightOutcome = Literal["complete", "incomplete", "failed"]
+_SETTINGS = "select hash, text from settings_used"
 _OUTCOMES = ("complete", "incomplete", "failed")
 _COLUMNS = (
     "id, kind, as_of, started, finished, outcome, steps, counts, settings_hash, program_version, data_version"
@@ -116,6 +117,43 @@ class NightLedger(Session):
             self.expect_after_commit("nights", int(night_id))
             if checkpoint:
                 self.checkpoint_after_commit()
+
+    def keep_settings(self, settings_hash: str, text: str) -> None:
+        """Keep the text of settings under their hash, once."""
+        if settings_hash in self.remembered(_SETTINGS):
+            return
+        with self.transaction():
+            self.execute("insert into settings_used values (?, ?)", [settings_hash, text])
+        self.remembered(_SETTINGS)[settings_hash] = text
+
+    def settings_text(self, settings_hash: str) -> str:
+        """The text of the settings with this hash.
+
+        Raises
+        ------
+        NotFound
+            They were not kept: the night was run by a version of the program that did not.
+        """
+        found: str | None = self.remembered(_SETTINGS).get(settings_hash)
+        if found is None:
+            raise NotFound(
+                f"The store holds no settings {settings_hash}: the night was run by a version of the program that "
+                "did not keep them yet."
+            )
+        return found
+
+    def night(self, night_id: int) -> NightRecord:
+        """One night of the ledger.
+
+        Raises
+        ------
+        NotFound
+            There is no such night.
+        """
+        found = self.rows(f"{_SELECT} where id = ?", [int(night_id)])
+        if not found:
+            raise NotFound(f"There is no night {night_id} in the ledger.")
+        return _record(found[0])
 
     def nights(self, limit: int = 30) -> list[NightRecord]:
         """The latest nights, newest first."""
