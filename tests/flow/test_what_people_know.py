@@ -14,7 +14,7 @@ from click.testing import CliRunner
 from flow.small_network import HEADER, SETTINGS, START, related_series, row
 from rhovane.cli import main
 from rhovane.model import EventKind, ExitCode, RhovaneError
-from rhovane.pipeline import STEPS, NightReport, run_night
+from rhovane.pipeline import STEPS, NightReport, reproduce, run_night
 from rhovane.pipeline.memory import NightMemory
 from rhovane.review import AlertEntry, alert_entries, nearby_entries, network_status, record_decision
 from rhovane.settings import Settings, load_settings
@@ -218,6 +218,33 @@ def test_days_in_the_site_log_do_not_alarm_and_that_is_said(tmp_path: Path, feed
     assert around.site_log == (stored,)
     recompute(settings, CHANGE_DAY + 24)
     assert entries_of(settings) == [entry]
+
+
+def test_an_alert_is_reproduced_with_what_people_knew_in_its_night(tmp_path: Path, feed: str):
+    checks = "".join(
+        f"A.NO2,{day(d)} 09:00,{day(d)} 12:00,span check,not used\n" for d in (CHANGE_DAY - 9, CHANGE_DAY + 3)
+    )
+    away = f"B,{day(100)},{day(104)},logger away,no reference\n"
+    settings = network_in(tmp_path, feed, site_log=LOG_HEADER + checks + away)
+    night(settings, DECIDED_ON)
+    (entry,) = entries_of(settings)
+    with open_store(settings.store_path, read_only=True) as store:
+        assert reproduce(settings, store, entry.alert, moment(day(DECIDED_ON))).matches
+    # Later knowledge: entries taken back, another calendar, an outcome. The alert is that of its night.
+    (tmp_path / "site_log.csv").write_text(LOG_HEADER, encoding="utf-8")
+    (tmp_path / "calendar.toml").write_text(
+        f'[[entry]]\ntitle = "fair"\nkind = "not judged"\nfirst = {day(CHANGE_DAY)}\nlast = {day(N_DAYS)}\n',
+        encoding="utf-8",
+    )
+    decide(settings, DECIDED_ON, outcome="instrument")
+    changed = load_settings(tmp_path / "monitor.toml")
+    night(changed, DECIDED_ON + 1)
+    (later,) = entries_of(changed)
+    with open_store(changed.store_path, read_only=True) as store:
+        found = reproduce(changed, store, later.alert, moment(day(DECIDED_ON + 1)))
+    assert later.alert == entry.alert
+    assert found.differing == ()
+    assert found.matches
 
 
 def test_an_entry_about_days_gone_by_leaves_earlier_alerts_alone(tmp_path: Path, feed: str):
