@@ -12,6 +12,7 @@ from rhovane.model import CorrelationEstimate
 if TYPE_CHECKING:
     from rhovane.pipeline import NightReport
     from rhovane.review import AlertEntry, Status
+    from rhovane.store import Check
 
 WIDTH = 80
 CAUTION = (
@@ -131,6 +132,19 @@ def alert_lines(entry: AlertEntry) -> list[str]:
     return lines
 
 
+def check_lines(checks: Sequence[Check]) -> list[str]:
+    """What was checked in the store, the first faults, and what to do."""
+    lines = []
+    for check in checks:
+        lines.append(f"  {'FAULTY' if check.faults else 'well':<7}{check.what}: {check.extent}")
+        for fault in check.faults:
+            lines += textwrap.wrap(fault, WIDTH, initial_indent=" " * 9, subsequent_indent=" " * 11)
+    remedies = dict.fromkeys(c.remedy for c in checks if c.remedy)
+    for remedy in remedies:
+        lines += ["", *textwrap.wrap(remedy, WIDTH)]
+    return lines
+
+
 def status_lines(status: Status, now: dt.datetime) -> list[str]:
     """The state of the watch."""
     lines = [f"{status.network}, {now:%Y-%m-%d %H:%M} UTC"]
@@ -166,5 +180,10 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
             + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
             for s in status.silent_series
         ]
+    if status.segments:
+        lines.append(
+            "Series with a new instrument or place (correlations across the border are not comparable):"
+        )
+        lines += [f"  {g['series']} from {g['first_day']}: {g['what']}" for g in status.segments]
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

@@ -11,7 +11,7 @@ from rhovane.model.errors import (
     StoreLocked,
 )
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
-from rhovane.model.series import Pair, Series, SeriesKind
+from rhovane.model.series import Pair, Segment, Series, SeriesKind
 
 __all__ = [
     "Alert",
@@ -29,6 +29,7 @@ __all__ = [
     "ParsedFile",
     "RejectedRow",
     "RhovaneError",
+    "Segment",
     "Series",
     "SeriesKind",
     "SettingsError",

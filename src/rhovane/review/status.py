@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from rhovane.model import ExitCode
-from rhovane.prepare import days_of
+from rhovane.prepare import days_of, segment_start
 from rhovane.review.alert_list import alert_entries, counts_by_state
 from rhovane.settings import Settings
 from rhovane.store import Store
@@ -22,7 +22,8 @@ class Status:
 
     ``last_night`` is the newest entry of the night ledger, whatever its outcome ("interrupted": it began
     and did not end); ``nights_missed`` counts days since the newest night that finished, all of them when
-    none has.
+    none has. ``segments`` names every series that changed instrument or place, with the segment the newest night
+    is in.
     """
 
     network: str
@@ -33,6 +34,7 @@ class Status:
     silent_series: list[dict[str, Any]]
     silent_pairs: list[dict[str, Any]]
     rejected_rows: int
+    segments: list[dict[str, Any]]
     exit_code: ExitCode
 
     def as_json(self) -> dict[str, Any]:
@@ -46,8 +48,22 @@ class Status:
             "silent_series": self.silent_series,
             "silent_pairs": self.silent_pairs,
             "rejected_rows": self.rejected_rows,
+            "segments": self.segments,
             "exit_code": int(self.exit_code),
         }
+
+
+def segments_in_force(settings: Settings, day: dt.date) -> list[dict[str, Any]]:
+    """The segment that a day belongs to, of every series that has begun another than its first."""
+    found = []
+    for series in settings.domain_series():
+        start = segment_start(series, day)
+        found += [
+            {"series": series.key, "first_day": start.isoformat(), "what": one.what}
+            for one in series.segments
+            if start is not None and one.first_day == start
+        ]
+    return found
 
 
 def network_status(
@@ -111,5 +127,6 @@ def network_status(
         silent_series,
         silent_pairs,
         store.count_rejected(),
+        segments_in_force(settings, reference),
         code,
     )

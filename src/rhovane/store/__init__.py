@@ -1,16 +1,21 @@
 """The only place that knows DuckDB: readings, results, alert log and night ledger in one file."""
 
 from rhovane.store.alert_log import NewAlert, NewAlertEvent, StoredAlert, StoredAlertEvent
+from rhovane.store.copies import BackedUp, archives_in, back_up, copies_in, restore
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
 from rhovane.store.reading import Readings, read_parquet
 from rhovane.store.results import EVIDENCE_COLUMNS, LATER_COLUMNS, WINDOW_COLUMNS
 from rhovane.store.store import Store
+from rhovane.store.tidying import Tidied, tidy
+from rhovane.store.upkeep import Check
 
 __all__ = [
     "EVIDENCE_COLUMNS",
     "LATER_COLUMNS",
     "WINDOW_COLUMNS",
+    "BackedUp",
+    "Check",
     "NewAlert",
     "NewAlertEvent",
     "NightRecord",
@@ -18,6 +23,12 @@ __all__ = [
     "Store",
     "StoredAlert",
     "StoredAlertEvent",
+    "Tidied",
+    "archives_in",
+    "back_up",
+    "copies_in",
     "open_store",
     "read_parquet",
+    "restore",
+    "tidy",
 ]

@@ -125,8 +125,7 @@ class ReadingWriter(Session):
             each other. Nothing of any file was kept.
         """
         with self.transaction():
-            known = self._known_contents(files)
-            next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
+            known, next_id = self._known_contents(files)
             fresh: dict[tuple[str, str], _Delivery] = {}
             for file in files:
                 content = (file.source, file.sha256)
@@ -151,12 +150,17 @@ class ReadingWriter(Session):
                 self.checkpoint_after_commit()
         return outcomes
 
-    def _known_contents(self, files: Sequence[ParsedFile]) -> dict[tuple[str, str], int]:
+    def _known_contents(self, files: Sequence[ParsedFile]) -> tuple[dict[tuple[str, str], int], int]:
+        """Ingest number of each content that the ledger holds, and the number that the next one gets."""
         found = self.rows(
-            "select source, sha256, id from ingest where sha256 in (select unnest(?))",
+            """
+            select source, sha256, id from ingest where sha256 in (select unnest(?))
+            union all select null, null, coalesce(max(id), 0) + 1 from ingest
+            """,
             [[f.sha256 for f in files]],
         )
-        return {(source, sha256): number for source, sha256, number in found}
+        known = {(source, sha256): number for source, sha256, number in found}
+        return known, known.pop((None, None))
 
     def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""
@@ -223,6 +227,11 @@ class ReadingWriter(Session):
                 f"insert into reading_history select {_ROW}, superseded_by from staged",
                 staged=_table(result.history) | {"superseded_by": result.superseded_by},
             )
+        if len(result.confirmed):
+            self.execute(
+                f"insert into reading_confirmation select {_ROW}, replaced_by from staged",
+                staged=_table(result.confirmed) | {"replaced_by": result.replaced_by},
+            )
 
     def _write_ledger(
         self, deliveries: Sequence[_Delivery], counts: Sequence[tuple[int, int, int]], now: datetime
@@ -275,8 +284,11 @@ class ReadingWriter(Session):
         latest = {f.path: (f, o) for f, o in zip(files, outcomes, strict=True)}
         if not latest:
             return
+        all_new = False
         if KNOWN_FILES in self._remembered:
-            self._remembered[KNOWN_FILES].update(
+            known = self._remembered[KNOWN_FILES]
+            all_new = known.keys().isdisjoint(latest)
+            known.update(
                 {path: (f.size_bytes, microseconds(f.modified) * 1000) for path, (f, _) in latest.items()}
             )
         pairs = list(latest.values())
@@ -288,6 +300,11 @@ class ReadingWriter(Session):
         columns["size_bytes"] = np.array([f.size_bytes for f, _ in pairs], np.int64)
         columns["mtime_ns"] = np.array([microseconds(f.modified) * 1000 for f, _ in pairs], np.int64)
         columns["ingest_id"] = np.array([o.ingest_id for _, o in pairs])
+        if all_new:  # looking for them again would take as long as writing them
+            self.execute(
+                "insert into feed_file by name select *, ?::timestamp as seen_at from staged", [now], columns
+            )
+            return
         self.execute(
             """
             merge into feed_file using (select *, ?::timestamp as seen_at from staged) s using (path)
