@@ -41,7 +41,7 @@ def kill_at_random(
     process.start()
     assert ready.wait(60)
     time.sleep(rng.uniform(0, longest_s))
-    os.kill(process.pid, signal.SIGKILL)
+    process.kill()
     process.join(60)
     return process.exitcode == -signal.SIGKILL
 

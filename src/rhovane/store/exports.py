@@ -26,7 +26,7 @@ case r.flag when 1 then 'pass' when 2 then 'not evaluated' when 3 then 'suspect'
 _STAGE = "case r.stage when 0 then 'not verified' when 1 then 'preliminary' when 2 then 'verified' end"
 
 # Each row is a state of a reading, from the ingest that brought or confirmed it until before the one that ended it.
-_STATES = """
+STATES_AS_OF = """
     select * from reading where confirmed_by <= $upto
     union all by name
     select * exclude superseded_by from reading_history where confirmed_by <= $upto and superseded_by > $upto
@@ -36,7 +36,7 @@ _STATES = """
 _READINGS = f"""
 select s.key as series, s.unit, r.ts as hour_start_utc, r.value, {_FLAG} as flag, {_STAGE} as stage,
        r.result_time as result_time_utc, r.ingest_id
-from ({_STATES}) r join series s on s.id = r.series_id order by s.key, r.ts
+from ({STATES_AS_OF}) r join series s on s.id = r.series_id order by s.key, r.ts
 """
 _WINDOWS = """
 select p.text as pair, w.window_end as window_end_utc, w.lag as lag_steps, w.statistic, w.n_pairs, w.coverage,

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from datetime import datetime
 from typing import NamedTuple
 
@@ -41,6 +41,10 @@ class ReadingWriter(Session):
     """Writing of series and readings."""
 
     _made_known: Sequence[Series] = ()
+    _contents: dict[tuple[str, str], int] | None = (
+        None  # (source, sha256) → ingest number, of the whole ledger
+    )
+    _appended = False
 
     def ensure_series(self, series: Sequence[Series]) -> dict[str, int]:
         """Make series known and return the number of each by its key; a changed label is taken over.
@@ -125,7 +129,8 @@ class ReadingWriter(Session):
             each other. Nothing of any file was kept.
         """
         with self.transaction():
-            known, next_id = self._known_contents(files)
+            known = self._known_contents(files)
+            next_id = self._last_number() + 1
             fresh: dict[tuple[str, str], _Delivery] = {}
             for file in files:
                 content = (file.source, file.sha256)
@@ -145,22 +150,40 @@ class ReadingWriter(Session):
                 else:
                     number = known.get(content) or fresh[content].ingest_id
                     outcomes.append(_outcome(file, number, (0, 0, len(file.value)), already_known=True))
+            if self._contents is not None:
+                self._contents.update({content: d.ingest_id for content, d in fresh.items()})
             self._remember_files(files, outcomes, naive_utc(now))
             if checkpoint:
                 self.checkpoint_after_commit()
         return outcomes
 
-    def _known_contents(self, files: Sequence[ParsedFile]) -> tuple[dict[tuple[str, str], int], int]:
-        """Ingest number of each content that the ledger holds, and the number that the next one gets."""
-        found = self.rows(
-            """
-            select source, sha256, id from ingest where sha256 in (select unnest(?))
-            union all select null, null, coalesce(max(id), 0) + 1 from ingest
-            """,
-            [[f.sha256 for f in files]],
-        )
-        known = {(source, sha256): number for source, sha256, number in found}
-        return known, known.pop((None, None))
+    def _known_contents(self, files: Sequence[ParsedFile]) -> Mapping[tuple[str, str], int]:
+        """Ingest number of the contents that the ledger holds: of these files, or of all there are.
+
+        The first append asks for these files only; a second one in the same process, as in a walk, reads the
+        whole ledger once, and later ones ask nothing.
+        """
+        if self._contents is None and not self._appended:
+            self._appended = True
+            found = self.rows(
+                "select source, sha256, id from ingest where sha256 in (select unnest(?))",
+                [[f.sha256 for f in files]],
+            )
+            return {(source, sha256): number for source, sha256, number in found}
+        if self._contents is None:
+            found = self.rows("select source, sha256, id from ingest")
+            self._contents = {(source, sha256): number for source, sha256, number in found}
+        return self._contents
+
+    def _forget(self) -> None:
+        super()._forget()
+        self._contents = None
+
+    def _last_number(self) -> int:
+        """Number of the last ingest, those of the open transaction included."""
+        if self._counted is None:
+            return int(self.value("select coalesce(max(id), 0) from ingest"))
+        return max(self._counted.last_ingest_id, self._written.get("last_ingest_id", 0))
 
     def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""

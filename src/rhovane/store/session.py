@@ -180,8 +180,7 @@ class Session:
             self.execute("commit")
         except BaseException:
             # After a fatal error there is nothing left to roll back; the first error is the one to show.
-            self._remembered.clear()
-            self._counted = None
+            self._forget()
             with contextlib.suppress(duckdb.Error):
                 self._connection.execute("rollback")
             raise
@@ -191,6 +190,11 @@ class Session:
             write_manifest(self.path, self._read_back(), durable=self._checkpoint_due)
         if self._checkpoint_due:
             self._checkpoint()
+
+    def _forget(self) -> None:
+        """Forget what was remembered of the tables: a rollback may have taken it back."""
+        self._remembered.clear()
+        self._counted = None
 
     @contextlib.contextmanager
     def _inner(self) -> Iterator[None]:
