@@ -107,7 +107,17 @@ def measure(path: Path) -> list[str]:
                 f"| one day, {taken[0][2]:,} rows in {N_FILES} files, into {store.holds().readings:,} readings, {what} | median "
                 f"{1000 * clock:.0f} ms, best {1000 * best:.0f} ms, processor {1000 * processor:.0f} ms | {1000 * AIM_S:.0f} ms |"
             )
-        print(*rows, sep="\n")
+        for what, work in (
+            ("verify", store.verify),
+            ("backup: the copy, read back", lambda: store.backup(path.with_name("copy.duckdb"))),
+            ("backup: the Parquet archive", lambda: store.archive(path.with_name("archive"))),
+        ):
+            clock, processor = time.perf_counter(), time.process_time()
+            found = work()
+            assert found != [] or what == "verify"
+            rows.append(
+                f"| {what} | {time.perf_counter() - clock:.1f} s, processor {time.process_time() - processor:.1f} s | |"
+            )
     done = tidy(path, lambda: open_store(path, threads=1))
     rows.append(
         f"| tidying that store: size | {done.bytes_before / 1e6:.0f} → {done.bytes_after / 1e6:.0f} MB "

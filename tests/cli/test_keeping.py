@@ -6,6 +6,7 @@ import json
 import re
 import shlex
 import subprocess
+import threading
 from pathlib import Path
 
 import duckdb
@@ -16,6 +17,7 @@ from flow.small_network import HEADER, SETTINGS, related_series, row
 from rhovane.cli import main
 from rhovane.model import ExitCode
 from rhovane.store import open_store
+from store.building import hold, processes
 
 README = (Path(__file__).parents[2] / "README.md").read_text("utf-8")
 N_DAYS = 20
@@ -157,3 +159,22 @@ def test_segments_are_shown_by_status_and_kept_in_exports(config: str, tmp_path:
     assert "new inlet" not in before.output
     with open_store(tmp_path / "rhovane.duckdb", read_only=True) as store:
         assert [g.what for g in store.segments()] == ["new inlet"]
+
+
+def test_a_copy_waits_for_a_night_that_holds_the_store_and_then_says_who_does(config: str, tmp_path: Path):
+    ready, release = processes.Event(), processes.Event()
+    holder = processes.Process(target=hold, args=(tmp_path / "rhovane.duckdb", ready, release))
+    holder.start()
+    assert ready.wait(60)
+    settings = Path(config)
+    text = settings.read_text(encoding="utf-8")
+    settings.write_text(text + "[store]\nlock_wait_s = 0.2\n", encoding="utf-8")
+    for command in ("backup", "verify", "tidy"):
+        held = run(command, "--config", config)
+        assert held.exit_code == ExitCode.STORE_LOCKED
+        assert f"process {holder.pid} (" in held.output
+        assert "running since" in held.output
+    settings.write_text(text + "[store]\nlock_wait_s = 60\n", encoding="utf-8")
+    threading.Timer(0.5, release.set).start()
+    assert run("backup", "--config", config).exit_code == ExitCode.WELL
+    holder.join(60)

@@ -148,9 +148,8 @@ class Upkeep(AlertLog):
             for key in keys:
                 found = self.rows(
                     f"""
-                    select count(*), sum(n), first(k) from (
-                        select struct_pack({", ".join(f"{k} := {k}" for k in key.split(", "))}) as k, count(*) as n
-                        from {table} group by all having count(*) > 1)
+                    select count(*), sum(n), first(struct_pack({", ".join(f"{k} := {k}" for k in key.split(", "))}))
+                    from (select {key}, count(*) as n from {table} group by all having count(*) > 1)
                     """
                 )
                 n_keys, n_rows, first = found[0]
