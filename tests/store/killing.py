@@ -150,8 +150,11 @@ def expect_one_step(path: Path) -> int:
 # -- disk full -----------------------------------------------------------------------------------------
 
 
-def ingest_with_little_room(path: Path, files, told: Path, room: int, answer) -> None:
-    """Take in files while no file of this process may grow beyond ``room`` bytes; answer with the message."""
+def ingest_with_little_room(path: Path, files, told: Path, room: int, fold: bool, answer) -> None:
+    """Take in files while no file of this process may grow beyond ``room`` bytes; answer with the message.
+
+    With ``fold`` each file is folded into the store, which then is what has no room; without, it is the log.
+    """
     import resource
 
     with open_store(path) as store, told.open("a", encoding="utf-8") as stream:
@@ -159,7 +162,7 @@ def ingest_with_little_room(path: Path, files, told: Path, room: int, answer) ->
         message = ""
         try:
             for file in files:
-                (outcome,) = store.append_files([file], now=NOW)
+                (outcome,) = store.append_files([file], now=NOW, checkpoint=fold)
                 stream.write(f"{outcome.ingest_id}\n")
                 stream.flush()
         except RhovaneError as error:

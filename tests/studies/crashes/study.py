@@ -97,15 +97,19 @@ def full_disks(folder: Path, _kills: int, rng: np.random.Generator) -> str:
     """Ingests that run out of room after more and more bytes."""
     files = [large_file(rng, i, 6000) for i in range(4)]
     said: Counter[str] = Counter()
-    for i, extra in enumerate(range(0, 1_000_000, 125_000)):
+    log = [(False, size) for size in range(50_000, 450_000, 50_000)]
+    file = [(True, extra) for extra in range(0, 1_000_000, 125_000)]
+    for i, (fold, size) in enumerate(log + file):
         path, told = folder / f"full {i}.duckdb", folder / f"told f{i}"
         with open_store(path) as store:
             store.ensure_series(SERIES)
             store.append_files(files[:1], now=NOW)
         told.write_text("1\n", encoding="utf-8")
         answer = processes.Queue()
-        room = path.stat().st_size + extra
-        process = processes.Process(target=ingest_with_little_room, args=(path, files, told, room, answer))
+        room = path.stat().st_size + size if fold else size
+        process = processes.Process(
+            target=ingest_with_little_room, args=(path, files, told, room, fold, answer)
+        )
         process.start()
         message = answer.get(timeout=60)
         process.join(60)
