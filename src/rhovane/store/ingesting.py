@@ -130,7 +130,7 @@ class ReadingWriter(Session):
         """
         with self.transaction():
             known = self._known_contents(files)
-            next_id = self._last_number() + 1
+            next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
             fresh: dict[tuple[str, str], _Delivery] = {}
             for file in files:
                 content = (file.source, file.sha256)
@@ -178,12 +178,6 @@ class ReadingWriter(Session):
     def _forget(self) -> None:
         super()._forget()
         self._contents = None
-
-    def _last_number(self) -> int:
-        """Number of the last ingest, those of the open transaction included."""
-        if self._counted is None:
-            return int(self.value("select coalesce(max(id), 0) from ingest"))
-        return max(self._counted.last_ingest_id, self._written.get("last_ingest_id", 0))
 
     def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""

@@ -59,7 +59,7 @@ def killed_ingests(folder: Path, kills: int, rng: np.random.Generator) -> str:
         with open_store(path) as store:
             store.append_files(files, now=NOW)
         assert expect_whole(path, files, told) == len(files)
-    return f"{hit} kills, {before} before the first file, {between} between two files, {stores} stores completed by the next ingest"
+    return f"{hit} kills, {before} before the first file, {between} between two files, stores made whole by the next ingest: {stores}"
 
 
 def killed_checkpoints(folder: Path, kills: int, rng: np.random.Generator) -> str:
