@@ -125,9 +125,21 @@ def status(settings: Settings, store: Store, as_json: bool, as_of: dt.datetime |
 @click.argument("what", type=click.Choice(["readings", "windows", "alerts"]))
 @click.argument("file", type=click.Path(path_type=Path, dir_okay=False))
 @reads_store
-def export(settings: Settings, store: Store, what: str, file: Path) -> None:
+@click.option(
+    "--as-of",
+    type=click.DateTime(formats=["%Y-%m-%d"]),
+    default=None,
+    help="Night (its last day, YYYY-MM-DD) whose store is written, without what came later; default: now.",
+)
+@click.option(
+    "--plain", is_flag=True, help="Only the table, without network, cautions and segments above it."
+)
+def export(
+    settings: Settings, store: Store, what: str, file: Path, as_of: dt.datetime | None, plain: bool
+) -> None:
     """Write readings, windows or alerts to FILE (.csv, .parquet or .json)."""
     from rhovane.review import export_table
 
-    rows = export_table(settings, store, what, file, utc_now())
+    day = as_of.date() if as_of else None
+    rows = export_table(settings, store, what, file, utc_now(), as_of=day, plain=plain)
     click.echo(f"{rows} {what} → {file}")

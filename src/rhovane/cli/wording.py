@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from rhovane.pipeline import NightReport
     from rhovane.review import LogCounts, Status
-    from rhovane.store import StoredSiteLogEntry
+    from rhovane.store import Check, StoredSiteLogEntry
 
 WIDTH = 80
 CAUTION = (
@@ -80,6 +80,19 @@ def count_lines(counts: LogCounts) -> list[str]:
     return lines
 
 
+def check_lines(checks: Sequence[Check]) -> list[str]:
+    """What was checked in the store, the first faults, and what to do."""
+    lines = []
+    for check in checks:
+        lines.append(f"  {'FAULTY' if check.faults else 'well':<7}{check.what}: {check.extent}")
+        for fault in check.faults:
+            lines += textwrap.wrap(fault, WIDTH, initial_indent=" " * 9, subsequent_indent=" " * 11)
+    remedies = dict.fromkeys(c.remedy for c in checks if c.remedy)
+    for remedy in remedies:
+        lines += ["", *textwrap.wrap(remedy, WIDTH)]
+    return lines
+
+
 def status_lines(status: Status, now: dt.datetime) -> list[str]:
     """The state of the watch."""
     lines = [f"{status.network}, {now:%Y-%m-%d %H:%M} UTC"]
@@ -118,5 +131,10 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
     if status.not_judged:
         lines.append("Pairs not judged that night (set aside, so silence says nothing):")
         lines += [f"  {pair}: {reason}" for pair, reason in status.not_judged.items()]
+    if status.segments:
+        lines.append(
+            "Series with a new instrument or place (correlations across the border are not comparable):"
+        )
+        lines += [f"  {g['series']} from {g['first_day']}: {g['what']}" for g in status.segments]
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

@@ -14,7 +14,7 @@ from rhovane.model.errors import (
 from rhovane.model.estimates import CorrelationEstimate
 from rhovane.model.plain import plain_of
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
-from rhovane.model.series import Pair, Series, SeriesKind
+from rhovane.model.series import Pair, Segment, Series, SeriesKind
 from rhovane.model.site_log import ReadingsUse, SiteLogEntry
 
 __all__ = [
@@ -38,6 +38,7 @@ __all__ = [
     "ReadingsUse",
     "RejectedRow",
     "RhovaneError",
+    "Segment",
     "Series",
     "SeriesKind",
     "SeriesLevel",

@@ -106,7 +106,9 @@ def run_night(
         ``outcome`` is "complete"; "incomplete" when parts failed (they are listed and tried again by the
         next night); or "failed" when a step as a whole did (nothing it would have computed is kept).
     """
-    store.ensure_series(settings.domain_series())
+    series = settings.domain_series()
+    store.ensure_series(series)
+    store.keep_segments(series, now=now)
     night = Night(
         settings,
         store,

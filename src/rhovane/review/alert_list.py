@@ -10,7 +10,7 @@ from typing import Any
 from rhovane.alerts import Standing, refusal, standing_of
 from rhovane.model import Alert, AlertEvent, AlertState, EventKind, NotFound, RhovaneError
 from rhovane.review.log import log_events, logged_alerts, logged_events
-from rhovane.store import Store
+from rhovane.store import NightRecord, Store
 
 
 @dataclass(frozen=True)
@@ -59,6 +59,17 @@ def alert_entries(store: Store, now: dt.datetime) -> list[AlertEntry]:
         for alert in logged_alerts(store)
     ]
     return sorted(entries, key=lambda e: (e.alert.alarm_day, e.alert.id), reverse=True)
+
+
+def alert_entries_of(store: Store, night: NightRecord) -> list[AlertEntry]:
+    """The alerts as they stood when a night had finished: raised up to it, with the events up to then."""
+    end = night.finished or night.started
+    entries = []
+    for entry in alert_entries(store, end):
+        if entry.alert.night_id <= night.night_id:
+            events = tuple(e for e in entry.events if e.at <= end)
+            entries.append(AlertEntry(entry.alert, events, standing_of(events, end)))
+    return entries
 
 
 def alert_entry(store: Store, alert_id: int, now: dt.datetime) -> AlertEntry:

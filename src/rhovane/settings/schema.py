@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import hashlib
+import itertools
 import json
 import re
 from collections.abc import Sequence
@@ -13,7 +14,7 @@ from typing import Annotated, Any, Literal, Self
 
 from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, field_validator, model_validator
 
-from rhovane.model import Flag, Pair, Series, Stage
+from rhovane.model import Flag, Pair, Segment, Series, Stage
 from rhovane.settings.calendar import CalendarEntry
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
@@ -191,6 +192,15 @@ class SourceSettings(Section):
         return None if word is None else Stage[word.upper().replace(" ", "_")]
 
 
+class SegmentSettings(Section):
+    """A day from which on a series was measured with something else, or somewhere else."""
+
+    first_day: dt.date = Field(
+        description="First day, standard time; a day with both belongs to the new segment."
+    )
+    what: str = Field(min_length=1, description="What changed: instrument, inlet, place.")
+
+
 class SeriesSettings(Section):
     """One series of the network."""
 
@@ -198,6 +208,18 @@ class SeriesSettings(Section):
     unit: str = Field(min_length=1, description="Unit in which values are kept.")
     kind: Literal["linear", "circular", "accumulated"] = "linear"
     label: str = ""
+    segments: tuple[SegmentSettings, ...] = Field(
+        (), description="Changes of instrument and moves of the station, in order of day."
+    )
+
+    @field_validator("segments")
+    @classmethod
+    def _in_order(cls, value: tuple[SegmentSettings, ...]) -> tuple[SegmentSettings, ...]:
+        days = [s.first_day for s in value]
+        for earlier, later in itertools.pairwise(days):
+            if later <= earlier:
+                raise ValueError(f"{later} comes after {earlier}; give each day once, in order")
+        return value
 
     @property
     def quantity(self) -> str:
@@ -289,6 +311,19 @@ class AlertSettings(Section):
     )
 
 
+class BackupSettings(Section):
+    """Copies of the store."""
+
+    folder: str = Field("backup", min_length=1, description="Folder of the copies; relative to work_folder.")
+    daily: int = Field(7, ge=1, le=366, description="Days of which a copy is kept.")
+    weekly: int = Field(
+        5,
+        ge=0,
+        le=520,
+        description="Weeks of which the last copy and the Parquet archive are kept; 0: no archive.",
+    )
+
+
 class NightSettings(Section):
     """When the night runs."""
 
@@ -300,6 +335,7 @@ class Settings(Section):
 
     network: NetworkSettings
     store: StoreSettings = Field(default_factory=lambda: StoreSettings())
+    backup: BackupSettings = Field(default_factory=lambda: BackupSettings())
     night: NightSettings = Field(default_factory=lambda: NightSettings())
     calendar: CalendarSettings = Field(default_factory=lambda: CalendarSettings())
     site_log: SiteLogSettings = Field(default_factory=lambda: SiteLogSettings())
@@ -320,6 +356,11 @@ class Settings(Section):
     def store_path(self) -> Path:
         """The DuckDB file."""
         return self.work_folder / self.store.file
+
+    @property
+    def backup_folder(self) -> Path:
+        """The folder of the store's copies."""
+        return self.work_folder / self.backup.folder
 
     @cached_property
     def settings_hash(self) -> str:
@@ -362,7 +403,17 @@ class Settings(Section):
     def domain_series(self) -> list[Series]:
         """All series as words of the domain, with the step of the source that delivers them."""
         step = {key: source.step_minutes for source in self.source for key in source.series.values()}
-        return [Series(s.key, s.unit, s.kind, step[s.key], s.label) for s in self.series]
+        return [
+            Series(
+                s.key,
+                s.unit,
+                s.kind,
+                step[s.key],
+                s.label,
+                tuple(Segment(one.first_day, one.what) for one in s.segments),
+            )
+            for s in self.series
+        ]
 
     @cached_property
     def pairs(self) -> tuple[tuple[PairSettings, Pair], ...]:
@@ -383,6 +434,14 @@ class Settings(Section):
             "other days": other_days if pair.working_days_only else [],
             "clocks": [self.network.standard_time, self.network.civil_zone],
         }
+        keys = set(self.series_of(pair))
+        borders = {
+            s.key: [one.first_day.isoformat() for one in s.segments]
+            for s in self.series
+            if s.key in keys and s.segments
+        }
+        if borders:  # only then, so that recipes without segments keep their hash
+            parts["segments"] = borders
         digest = hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
         return Pair(pair.key, pair.first, pair.second, digest, pair.label)
 

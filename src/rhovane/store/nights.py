@@ -178,6 +178,24 @@ class NightLedger(Session):
         last: NightRecord | None = known[0]
         return last
 
+    def night_of(self, as_of: date) -> NightRecord:
+        """The latest night that finished for a day.
+
+        Raises
+        ------
+        NotFound
+            None has.
+        """
+        finished = "outcome in ('complete', 'incomplete')"
+        found = self.rows(f"{_SELECT} where as_of = ? and {finished} order by id desc limit 1", [as_of])
+        if not found:
+            first, last = self.rows(f"select min(as_of), max(as_of) from night where {finished}")[0]
+            known = (
+                f"the ledger's nights reach from {first} to {last}" if first else "the ledger holds none yet"
+            )
+            raise NotFound(f"No night of {as_of} has finished; {known}. Name one that has.")
+        return _record(found[0])
+
 
 def _record(row: tuple[Any, ...]) -> NightRecord:
     number, kind, as_of, started, finished, outcome, steps, counts, settings, program, version = row
