@@ -10,20 +10,26 @@ from rhovane.model.errors import (
     StoreDamaged,
     StoreLocked,
 )
+from rhovane.model.notes import MOMENT_KINDS, STEP_KINDS, DataNote, NoteKind, NoteState
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
 from rhovane.model.series import Pair, Series, SeriesKind
 
 __all__ = [
+    "MOMENT_KINDS",
+    "STEP_KINDS",
     "Alert",
     "AlertEvent",
     "AlertState",
     "CorrelationEstimate",
+    "DataNote",
     "EventKind",
     "ExitCode",
     "FeedError",
     "Flag",
     "IngestOutcome",
     "NotFound",
+    "NoteKind",
+    "NoteState",
     "Outcome",
     "Pair",
     "ParsedFile",

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rhovane.pipeline.checks import LOOKBACK_DAYS, neighbours_of, without_left_out
 from rhovane.prepare import Days, Grid, PairMask, days_of, kept_hours, to_grid
 from rhovane.settings import PairSettings, Settings
 from rhovane.store import Store
@@ -38,8 +39,25 @@ def load_grid(
     last: dt.date,
     *,
     max_ingest_id: int | None = None,
+    checked: bool = True,
 ) -> Grid:
-    """Observations of the series from the first to the last day, both included (standard time)."""
+    """Observations of the series from the first to the last day, both included (standard time).
+
+    With ``checked`` they have passed the own checks of the settings, where there are any.
+    """
+    if checked and settings.check:
+        wanted = set(keys)
+        before = dt.timedelta(days=LOOKBACK_DAYS)
+        grid = load_grid(
+            settings,
+            store,
+            wanted | neighbours_of(settings, wanted),
+            first - before,
+            last,
+            max_ingest_id=max_ingest_id,
+            checked=False,
+        )
+        return without_left_out(settings, grid, 24 * LOOKBACK_DAYS).of(sorted(wanted))
     days: Days = days_of(settings.network.standard_offset)
     start, end = days.start_of(first), days.end_of(last)
     names = sorted(set(keys))

@@ -20,6 +20,7 @@ from rhovane.pipeline.context import Night, StepOutcome, Trouble
 from rhovane.pipeline.evidence import begin_hourly_scores, judge_days
 from rhovane.pipeline.ingesting import read_feed
 from rhovane.pipeline.memory import NightMemory
+from rhovane.pipeline.noting import note_data, note_pairs
 from rhovane.pipeline.raising import raise_alerts
 from rhovane.pipeline.stale import find_stale
 from rhovane.pipeline.windows import compute_windows
@@ -33,8 +34,10 @@ OWN_TRANSACTION = ("ingest",)  # commits by itself; all later steps share one tr
 STEPS: tuple[Step, ...] = (
     ("ingest", read_feed),
     ("stale", find_stale),
+    ("data notes", note_data),
     ("hourly scores", begin_hourly_scores),
     ("windows", compute_windows),
+    ("pair notes", note_pairs),
     ("evidence", judge_days),
     ("alerts", raise_alerts),
 )

@@ -1,5 +1,6 @@
 """Configuration: one TOML file → frozen, checked settings."""
 
+from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
 from rhovane.settings.load import load_settings, settings_from
 from rhovane.settings.schema import (
     AlertSettings,
@@ -14,7 +15,9 @@ from rhovane.settings.schema import (
 
 __all__ = [
     "AlertSettings",
+    "CheckSettings",
     "CorrelationSettings",
+    "DataNoteSettings",
     "PairSettings",
     "SectorMask",
     "SeriesSettings",

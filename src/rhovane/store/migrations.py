@@ -95,10 +95,18 @@ create table delivery (
 );
 """
 
+_NOTES = """
+create table data_note (
+    id integer, version integer, subject varchar, kind varchar, begins timestamp, ends timestamp, state varchar,
+    facts json, night_id integer
+);
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
+    Migration(4, "data notes", _NOTES),
 )
 
 
