@@ -1,4 +1,4 @@
-"""Commands that look: alerts, alert, status, export."""
+"""Commands that look: alerts, alert, notes, status, export."""
 
 from __future__ import annotations
 
@@ -9,11 +9,14 @@ from typing import TYPE_CHECKING
 import click
 
 from rhovane.cli.entry import Ending, main, print_json, reads_store, utc_now, with_json
-from rhovane.cli.wording import alert_lines, alert_table, caution_lines, status_lines
+from rhovane.cli.wording import alert_lines, alert_table, caution_lines, note_lines, status_lines
 
 if TYPE_CHECKING:
     from rhovane.settings import Settings
     from rhovane.store import Store
+
+
+MOST_NOTES = 12  # data notes shown under the alert list
 
 
 @main.command()
@@ -22,7 +25,7 @@ if TYPE_CHECKING:
 @click.option("--unreviewed", is_flag=True, help="Only alerts that nobody has acknowledged.")
 def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool) -> None:
     """List the alert log, newest alarm day first."""
-    from rhovane.review import alert_entries
+    from rhovane.review import alert_entries, current_notes
 
     entries = [e for e in alert_entries(store, utc_now()) if e.needs_review or not unreviewed]
     if as_json:
@@ -31,6 +34,31 @@ def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool) ->
     click.echo(f"{settings.network.name}: {len(entries)} alerts")
     click.echo("\n".join(alert_table(entries)))
     click.echo("\nOne in full: rhovane alert ID")
+    noted = current_notes(settings, store)
+    if noted:
+        click.echo(
+            f"\nData notes ({len(noted)}: what is wrong with the data themselves; no data is not no change)"
+        )
+        click.echo("\n".join(note_lines(noted, settings.network.standard_offset, MOST_NOTES)))
+
+
+@main.command()
+@reads_store
+@with_json
+@click.option("--all", "everything", is_flag=True, help="Also notes that are over or were withdrawn.")
+def notes(settings: Settings, store: Store, as_json: bool, everything: bool) -> None:
+    """List data notes: gaps, stuck values, dry gauges, steps in level, pairs not computable.
+
+    Those that last and those begun in the last 7 days; newest first.
+    """
+    from rhovane.review import all_notes, current_notes, notes_as_json
+
+    found = all_notes(store) if everything else current_notes(settings, store)
+    if as_json:
+        print_json(notes_as_json(found))
+        return
+    click.echo(f"{settings.network.name}: {len(found)} data notes (times are standard time)")
+    click.echo("\n".join(note_lines(found, settings.network.standard_offset)))
 
 
 @main.command()

@@ -7,7 +7,7 @@ import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-from rhovane.model import CorrelationEstimate
+from rhovane.model import CorrelationEstimate, DataNote
 
 if TYPE_CHECKING:
     from rhovane.pipeline import NightReport
@@ -78,6 +78,24 @@ def alert_table(entries: Sequence[AlertEntry], answers: dict[int, str] | None = 
         lines.append(
             f"{a.id:>4}  {a.alarm_day}  {a.onset_day}  {what:<27} {rho(a.before):>6} {rho(a.after):>6}  {tail}"
         )
+    return lines
+
+
+def note_lines(notes: Sequence[DataNote], offset: dt.timedelta, most: int | None = None) -> list[str]:
+    """Data notes, one after the other, days and hours in the network's standard time."""
+    from rhovane.review import note_state, note_words
+
+    lines: list[str] = []
+    for note in notes[:most]:
+        begin = (note.begin + offset).strftime("%Y-%m-%d %H:%M")
+        state = note_state(note)
+        if state == "over" and note.end is not None:
+            state = f"to {note.end + offset:%Y-%m-%d %H:%M}"
+        text = f"{begin}  {note.subject}: {note.kind.value}: {note_words(note)}"
+        text += f" [{state}]" if state else ""
+        lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 6)
+    if most is not None and len(notes) > most:
+        lines.append(f"  and {len(notes) - most} more: rhovane notes")
     return lines
 
 
@@ -160,11 +178,14 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
         lines.append("Pairs with no correlation that night (no data is not no change):")
         lines += [f"  {p['pair']}: {p['reason']}" for p in status.silent_pairs]
     if status.silent_series:
-        lines.append("Series behind:")
+        lines.append(
+            f"Series without data (no data is not no change): {len(status.silent_series)} of {status.series_watched}"
+        )
         lines += [
             f"  {s['series']}: "
             + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
             for s in status.silent_series
         ]
+    lines.append(f"Data notes that last: {status.notes_open} (rhovane notes)")
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

@@ -23,7 +23,9 @@ LOOKBACK_DAYS = checks.LOOKBACK_HOURS // 24
 
 def neighbours_of(settings: Settings, keys: set[str]) -> set[str]:
     """Series that the checks of other series compare with."""
-    return {c.neighbour for key in keys for c in settings.checks_of(key) if c.neighbour and c.neighbour != key}
+    return {
+        c.neighbour for key in keys for c in settings.checks_of(key) if c.neighbour and c.neighbour != key
+    }
 
 
 def own_flags(settings: Settings, grid: Grid, key: str) -> dict[str, NDArray[np.int8]]:

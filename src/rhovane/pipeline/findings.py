@@ -16,6 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.model import NoteKind
+from rhovane.pipeline.step_memory import StepMemory, kept, steps_of_days
 from rhovane.prepare import Days, Grid
 from rhovane.settings import Settings
 from rhovane.stats import data_faults as faults
@@ -26,7 +27,9 @@ HOUR_S = 3600
 DAY_S = 86_400
 WEEK_DAYS = 7
 DIFFERENCE_UNITS = ("K", "degC", "degF")  # a temperature has no natural zero: steps are differences
-SAME_CAUSE_DAYS = 3  # days apart at which steps of two series of a station have one cause outside the instruments
+SAME_CAUSE_DAYS = (
+    3  # days apart at which steps of two series of a station have one cause outside the instruments
+)
 LOOKBACK_DAYS = 3 * faults.DRY_HOURS // 24  # no look reaches further back than this before what is new
 
 
@@ -97,17 +100,22 @@ class Network:
 
 @dataclass(frozen=True)
 class Looker:
-    """The grid of a night and the first day that is new or revised."""
+    """The grid of a night and the first day that is new or revised.
+
+    ``new_from`` is that day series by series where it is known; with ``step_memory`` the days before are not judged again.
+    """
 
     settings: Settings
     network: Network
     grid: Grid
     days: Days
     since: dt.date
+    new_from: tuple[dt.date, ...] | None = None
+    step_memory: StepMemory | None = None
 
     def looks(self) -> tuple[Look, ...]:
-        """Every kind of finding about series."""
-        return (self.gaps(), self.stuck(), self.low_coverage(), self.dry(), self.ties(), self.steps())
+        """Every kind of finding about series but steps in level."""
+        return (self.gaps(), self.stuck(), self.low_coverage(), self.dry(), self.ties())
 
     def gaps(self) -> Look:
         """Series without observation for longer than allowed; an open one is a series that is behind."""
@@ -201,26 +209,34 @@ class Looker:
         ]
         return Look(NoteKind.TIES.value, since, 0, tuple(found))
 
-    def steps(self) -> Look:
-        """Sudden steps in level, those of a known unit and shifted zeros called so."""
+    def steps(self) -> tuple[Look, StepMemory]:
+        """Sudden steps in level, those of a known unit and shifted zeros called so; and what to remember of them."""
         reach = steps.AFTER_DAYS - 1 + steps.APART_DAYS + SAME_CAUSE_DAYS
-        start, values = self._hours(24 * (reach + steps.LOOKBACK_DAYS))
-        levels = steps.daily_levels(values)
-        first = len(levels) - self._new_days - reach
-        found = steps.level_steps(
-            levels,
+        start, values = self._hours(24 * (reach + SAME_CAUSE_DAYS + steps.APART_DAYS + steps.LOOKBACK_DAYS))
+        begin = self.grid_day(self.days.day_of(start))
+        since = self.grid_day(self.since)
+        now = steps_of_days(
+            values,
+            begin,
+            [self.grid_day(d) for d in self.new_from] if self.new_from else [since] * len(self.network.keys),
             self.network.groups,
             self.network.by_ratio.tolist(),
             strength=self.settings.data_notes.step_strength,
-            first=max(0, first - SAME_CAUSE_DAYS),
+            memory=self.step_memory,
         )
+        shown = kept(now, self.step_memory)
+        first = max(0, since - reach - shown.begin)
+        rows = slice(max(0, first - SAME_CAUSE_DAYS - steps.APART_DAYS), None)
+        table = steps.StepTable(shown.table.size[rows], shown.table.error[rows], shown.table.strength[rows])
+        found = steps.strongest_steps(table, first=0, offset=rows.start + shown.begin - begin)
+        least = first + shown.begin - begin
         findings = []
         for i, (day, column) in enumerate(zip(found.day.tolist(), found.series.tolist(), strict=True)):
-            if day >= first:
+            if day >= least:
                 kind, facts = self._called(found, i, values)
                 moment = start + DAY_S * day
                 findings.append(Finding(self.network.keys[column], kind, moment, moment, facts))
-        return Look("step", start + DAY_S * max(0, first), 0, tuple(findings))
+        return Look("step", start + DAY_S * max(0, least), 0, tuple(findings)), shown
 
     def _called(
         self, found: steps.LevelSteps, i: int, values: NDArray[np.float64]

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from rhovane.pipeline.arrays import load_grid
 from rhovane.pipeline.note_changes import KnownNotes
+from rhovane.pipeline.step_memory import StepMemory
 from rhovane.prepare import Grid, days_of
 from rhovane.settings import Settings
 from rhovane.stats.hourly_scores import SeriesScores
@@ -31,6 +32,7 @@ class NightMemory:
 
     watch: WatchMemory = field(default_factory=WatchMemory)
     notes: KnownNotes | None = None
+    steps: StepMemory | None = None
     _grid: Grid | None = None
     _evidence: Columns | None = None
     _recipes: tuple[str, ...] = ()
@@ -72,7 +74,7 @@ class NightMemory:
     def forget(self) -> None:
         """Remember nothing: what a failed night computed was not kept by the store."""
         self.watch = WatchMemory()
-        self._grid = self._evidence = self._findings = self.notes = None
+        self._grid = self._evidence = self._findings = self.notes = self.steps = None
         self._recipes = ()
         self._scores = {}
 

@@ -36,7 +36,20 @@ def note_data(night: Night) -> str:
         night.notes_from = since
         grid = night.grid()
         network = Network.of(night.settings, grid.keys, night.counts["first_hours"])
-        looks = Looker(night.settings, network, grid, night.days, since).looks()
+        memory = night.memory
+        looker = Looker(
+            night.settings,
+            network,
+            grid,
+            night.days,
+            since,
+            _new_from(night, grid.keys, since),
+            None if memory is None else memory.steps,
+        )
+        step_look, steps = looker.steps()
+        if memory is not None:
+            memory.steps = steps
+        looks = (*looker.looks(), step_look)
         if night.settings.check:
             raw = load_grid(
                 night.settings,
@@ -56,19 +69,34 @@ def note_data(night: Night) -> str:
 
 def _first_new_day(night: Night) -> dt.date | None:
     """First day with readings that the notes have not seen; None when there is none up to the night's last day."""
-    first_hours = [int(dt.datetime.fromisoformat(t).timestamp()) for t in night.counts["first_hours"].values()]
+    first_hours = [
+        int(dt.datetime.fromisoformat(t).timestamp()) for t in night.counts["first_hours"].values()
+    ]
     if not first_hours:
         return None
     begin = night.days.day_of(min(first_hours))
     last = night.previous
     if last is None or last.counts.get("notes") != night.settings.notes_hash:
         return begin if begin <= night.as_of else None
-    touched = [night.days.day_of(int(m.timestamp())) for m in night.changed.values()]
-    since = min([*touched, last.as_of + DAY])
+    since = min([*_touched(night).values(), last.as_of + DAY])
     if night.recompute_from is not None:
         since = min(since, night.recompute_from)
     since = max(since, begin)
     return since if since <= night.as_of else None
+
+
+def _new_from(night: Night, keys: tuple[str, ...], since: dt.date) -> tuple[dt.date, ...] | None:
+    """For each series the first day that is new or revised; None where all of them have to be looked at again."""
+    last = night.previous
+    touched = _touched(night)
+    if last is None or since < min([last.as_of + DAY, *touched.values()]):
+        return None
+    return tuple(min(touched.get(key, last.as_of + DAY), last.as_of + DAY) for key in keys)
+
+
+def _touched(night: Night) -> dict[str, dt.date]:
+    days = night.days
+    return {key: days.day_of(int(at.timestamp())) for key, at in night.changed.items()}
 
 
 def known_notes(night: Night) -> KnownNotes:
@@ -109,7 +137,7 @@ def _split_kinds(night: Night) -> tuple[NoteKind, ...]:
         case "every step":
             return STEP_KINDS
         case "unit switch":
-            return (NoteKind.UNIT_SWITCH, NoteKind.SHIFTED_ZERO)
+            return (NoteKind.UNIT_SWITCH,)
         case _:
             return ()
 
@@ -178,14 +206,18 @@ def _findings_by_start(night: Night) -> dict[int, dict[str, list[Finding]]]:
         key = str(table["pair_key"][0])
         rows = np.flatnonzero(table["lag"] == 0)
         if len(rows):
-            end_s = table["window_end"][rows].astype(np.int64)
+            end_s = table["window_end"][rows]
             start = int(end_s[0]) - 23 * HOUR_S
-            judged = night.days.start_of(_first_day(night, by_key[key]) + window_days * DAY)
-            missing = np.isnan(table["statistic"][rows]) & (end_s >= judged)
+            missing = np.isnan(table["statistic"][rows])
             before = any(
                 seconds(n.begin) < start and (n.end is None or seconds(n.end) >= start - HOUR_S)
                 for n in covered.get(key, ())
             )
+            if not before and not missing.any():
+                by_start.setdefault(start, {})[key] = []
+                continue
+            judged = night.days.start_of(_first_day(night, by_key[key]) + window_days * DAY)
+            missing &= end_s >= judged
             runs = faults.runs_of(np.concatenate(([before], missing))[:, None])
             by_start.setdefault(start, {})[key] = [
                 Finding(

@@ -32,6 +32,8 @@ class Status:
     unreviewed: int
     silent_series: list[dict[str, Any]]
     silent_pairs: list[dict[str, Any]]
+    series_watched: int
+    notes_open: int
     rejected_rows: int
     exit_code: ExitCode
 
@@ -45,6 +47,8 @@ class Status:
             "unreviewed": self.unreviewed,
             "silent_series": self.silent_series,
             "silent_pairs": self.silent_pairs,
+            "series_watched": self.series_watched,
+            "notes_open": self.notes_open,
             "rejected_rows": self.rejected_rows,
             "exit_code": int(self.exit_code),
         }
@@ -103,13 +107,17 @@ def network_status(
             "as_of": newest.as_of.isoformat(),
             "outcome": "interrupted" if newest.outcome == "running" else newest.outcome,
             "steps": newest.steps,
-            "counts": {k: v for k, v in newest.counts.items() if k not in ("recipes", "left", "first_hours")},
+            "counts": {
+                k: v for k, v in newest.counts.items() if k not in ("recipes", "left", "first_hours", "notes")
+            },
         },
         missed,
         counts_by_state(entries),
         sum(e.needs_review for e in entries),
         silent_series,
         silent_pairs,
+        len(settings.series),
+        sum(n.is_open for n in store.data_notes()),
         store.count_rejected(),
         code,
     )

@@ -45,7 +45,9 @@ class CheckSettings(Section):
     flat_fail_hours: int | None = Field(None, ge=2, le=720, description="The same, for fail.")
     flat_resolution: float = Field(0.0, ge=0, description="Values this near each other are one value.")
     climatology_suspect: float | None = Field(
-        None, gt=0, description="Robust standard deviations from the hour's usual value of the 60 days before."
+        None,
+        gt=0,
+        description="Robust standard deviations from the hour's usual value of the 60 days before.",
     )
     climatology_fail: float | None = Field(None, gt=0, description="The same, for fail.")
     neighbour: str = Field("", description="Key of a series of the same quantity to compare with.")

@@ -16,7 +16,9 @@ Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 Rows = NDArray[np.int64]
 
-CHANCE_OF_REPEATS = 1e-6  # a run that a series' usual share of repeated values makes likelier is no stuck value
+CHANCE_OF_REPEATS = (
+    1e-6  # a run that a series' usual share of repeated values makes likelier is no stuck value
+)
 USUAL_HOURS = 672  # hours before a run from which that share is taken
 LONGEST_STUCK_HOURS = 336  # no series is required to repeat a value for longer
 FEWEST_USUAL = 168  # pairs of successive observations that make a share
@@ -130,9 +132,12 @@ def dry_runs(gauge: Floats, neighbours: Floats, wet_hours: int) -> Runs:
         From the first such hour until the last hour before the gauge is wet again; ``series`` is 0 and ``measure`` the
         neighbours' amount in the hours that made it a run.
     """
-    sums = np.full(len(gauge), np.nan)
-    some = np.isfinite(neighbours).any(axis=1)
-    sums[some] = np.nanmedian(neighbours[some], axis=1)
+    if neighbours.shape[1] == 1:
+        sums = neighbours[:, 0]
+    else:
+        sums = np.full(len(gauge), np.nan)
+        some = np.isfinite(neighbours).any(axis=1)
+        sums[some] = np.nanmedian(neighbours[some], axis=1)
     contrary = (gauge == 0) & (sums > 0)
     count = np.cumsum(contrary)
     last_wet = np.maximum.accumulate(np.where(gauge > 0, count, 0))
@@ -152,18 +157,21 @@ def dry_runs(gauge: Floats, neighbours: Floats, wet_hours: int) -> Runs:
         span = slice(start, made + 1)
         amount.append(float(sums[span][contrary[span]].sum()))
         at = stop + 1
-    return Runs(np.zeros(len(begin), np.int64), np.array(begin, np.int64), np.array(end, np.int64), np.array(amount))
+    return Runs(
+        np.zeros(len(begin), np.int64), np.array(begin, np.int64), np.array(end, np.int64), np.array(amount)
+    )
 
 
 def weekly_ties(values: Floats) -> Floats:
     """Probability that two observations of a week are equal, shape (n_weeks, n_series).
 
-    ``values`` has shape (168 n_weeks, n_series). A value that repeats the hour before counts once, so that a stuck value
+    ``values`` has shape (168 n_weeks, n_series). A value that repeats the hour before it in the week counts once, so that a stuck value
     is not taken for a coarser resolution. NaN with fewer than 84 observations.
     """
-    fresh = values.copy()
-    fresh[1:][values[1:] == values[:-1]] = np.nan
-    weeks = np.sort(fresh.reshape(-1, WEEK_HOURS, values.shape[1]).transpose(0, 2, 1), axis=2)
+    by_week = values.reshape(-1, WEEK_HOURS, values.shape[1]).transpose(0, 2, 1)
+    fresh = by_week.copy()
+    fresh[:, :, 1:][by_week[:, :, 1:] == by_week[:, :, :-1]] = np.nan
+    weeks = np.sort(fresh, axis=2)
     count = np.isfinite(weeks).sum(axis=2)
     same = weeks[:, :, 1:] == weeks[:, :, :-1]
     place = np.arange(1, WEEK_HOURS)

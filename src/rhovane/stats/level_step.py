@@ -23,8 +23,12 @@ STRENGTH = 2.5  # step over the spread of the days within both sides
 STRENGTH_ALONE = 6.0  # the same for a series without neighbours, which the weather moves alone
 SEPARATION = 0.985  # share of (before, after) day pairs in the order of the step
 SMALLEST_FACTOR = 1.2
-OWN_SHARE = 0.5  # of the step against neighbours that the series itself must have made
+OWN_SHARE = 0.5  # of the step that the series itself must have made where its neighbours are few
+TELLING_NEIGHBOURS = (
+    3  # with so many others their median tells whether it was the series or a neighbour that moved
+)
 SMALLEST_LEVEL = 0.05  # of the level before; lower levels count as this, so that a zero has a logarithm
+MEDIAN_VARIANCE = np.pi / 2  # variance of a median over that of a mean, normal days
 LOOKBACK_DAYS = BEFORE_DAYS + AFTER_DAYS + 2 * APART_DAYS  # a day's steps depend on no earlier day
 CHUNK_DAYS = 64  # candidate days judged at once: bounds the memory
 
@@ -62,6 +66,15 @@ def daily_levels(values: Floats) -> Floats:
     return _median_of_sorted(hours, FEWEST_HOURS)
 
 
+@dataclass(frozen=True)
+class StepTable:
+    """What :func:`judge_steps` found on each day, arrays of shape (n_days, n_series); NaN where there is no step."""
+
+    size: Floats
+    error: Floats
+    strength: Floats
+
+
 def level_steps(
     levels: Floats,
     groups: Sequence[Sequence[int]],
@@ -96,74 +109,114 @@ def level_steps(
     Every series is centred on its median of the 28 days before; what is judged is the difference from the median
     of its neighbours so centred (a difference in differences). A step needs (i) ``strength`` times the spread of
     the days on both sides, (ii) nearly all pairs of a day before and a day after in its order (the
-    probability of Mann & Whitney 1947), (iii) a factor of 1.2 or, for differences, nothing more, and (iv) that at
-    least half of it is the series' own. A series without a neighbour that can be compared needs 6 times the spread.
+    probability of Mann & Whitney 1947, Annals of Mathematical Statistics 18), (iii) where series are compared by
+    ratios a factor of 1.2, and (iv) that at least half of it is the series' own. A series without a neighbour that
+    can be compared needs 6 times the spread.
+
+    Measured on 20 demo worlds with nothing planted: 21 steps in 810 series-years. A change of unit (NO2, 1.91) was
+    found in all of 16 worlds, on its day.
     """
-    n_days, n_series = levels.shape
-    is_ratio = np.asarray(ratio, dtype=bool)
-    size, error, power = (np.full(levels.shape, np.nan) for _ in range(3))
-    begin = max(first - APART_DAYS, FEWEST_BEFORE)
-    for start in range(begin, n_days - FEWEST_AFTER + 1, CHUNK_DAYS):
-        days = np.arange(start, min(start + CHUNK_DAYS, n_days - AFTER_DAYS + 1))
-        if len(days):
-            for group in groups:
-                columns = np.asarray(group)
-                found = _judge(levels[:, columns], days, is_ratio[columns], strength)
-                for whole, part in zip((size, error, power), found, strict=True):
-                    whole[days[0] : days[-1] + 1, columns] = part
-    strongest = _strongest_nearby(np.nan_to_num(np.abs(power)))
+    begin = max(0, first - APART_DAYS)
+    table = judge_steps(levels, groups, ratio, strength=strength, days=range(begin, len(levels)))
+    return strongest_steps(table, first=first - begin, offset=begin)
+
+
+def judge_steps(
+    levels: Floats,
+    groups: Sequence[Sequence[int]],
+    ratio: Sequence[bool],
+    *,
+    strength: float,
+    days: range,
+) -> StepTable:
+    """The step on each of ``days`` for each series, before the strongest of neighbouring days is chosen.
+
+    A day with fewer than ``AFTER_DAYS`` days from it on has none yet. Rows are those of ``days``.
+    """
+    widest = max((len(g) for g in groups), default=1)
+    place = np.full((len(groups), widest), -1)
+    for i, group in enumerate(groups):
+        place[i, : len(group)] = group
+    there = place >= 0
+    by_ratio = np.asarray(ratio, dtype=bool)[place]
+    tables = tuple(np.full((len(days), levels.shape[1]), np.nan) for _ in range(3))
+    last = min(days.stop, len(levels) - AFTER_DAYS + 1)
+    for start in range(max(days.start, FEWEST_BEFORE), last, CHUNK_DAYS):
+        chunk = np.arange(start, min(start + CHUNK_DAYS, last))
+        found = _judge(levels, chunk, place, there, by_ratio, strength)
+        rows = slice(start - days.start, start - days.start + len(chunk))
+        for table, part in zip(tables, found, strict=True):
+            table[rows, place[there]] = part[:, there]
+    return StepTable(*tables)
+
+
+def strongest_steps(table: StepTable, *, first: int = 0, offset: int = 0) -> LevelSteps:
+    """Of steps within ``APART_DAYS`` days of each other the strongest, from row ``first`` of the table on.
+
+    ``offset`` is added to the rows.
+    """
+    strongest = _strongest_nearby(np.nan_to_num(np.abs(table.strength)))
+    strongest[:first] = False
     day, series = np.nonzero(strongest)
-    keep = day >= first
-    day, series = day[keep], series[keep]
-    return LevelSteps(day, series, size[day, series], error[day, series], power[day, series])
+    found = (getattr(table, name)[day, series] for name in ("size", "error", "strength"))
+    return LevelSteps(day + offset, series, *found)
 
 
 def _judge(
-    levels: Floats, days: NDArray[np.int64], ratio: NDArray[np.bool_], strength: float
+    levels: Floats,
+    days: NDArray[np.int64],
+    place: NDArray[np.int64],
+    there: NDArray[np.bool_],
+    ratio: NDArray[np.bool_],
+    strength: float,
 ) -> tuple[Floats, Floats, Floats]:
-    """Size, error and strength of the step on each of ``days`` for each series; NaN where there is none."""
+    """Size, error and strength of the step on each of ``days``, by group and member; NaN where there is none."""
     rows = days[:, None] + np.arange(-BEFORE_DAYS, AFTER_DAYS)
-    block = np.where((rows >= 0)[:, :, None], levels[np.maximum(rows, 0)], np.nan)
-    middle = _median(block[:, :BEFORE_DAYS], FEWEST_BEFORE)[:, None, :]
+    block = levels[np.maximum(rows, 0)][:, :, place]  # day, day around it, group, member
+    block[~there[None, None] | (rows < 0)[:, :, None, None]] = np.nan
+    middle = _median(block[:, :BEFORE_DAYS], FEWEST_BEFORE)[:, None]
     with np.errstate(invalid="ignore", divide="ignore"):
         logs = np.log(np.maximum(block, SMALLEST_LEVEL * middle) / middle)
         centred = np.where(ratio, np.where(middle > 0, logs, np.nan), block - middle)
     others = _median_of_others(centred)
-    alone = ~np.isfinite(others).any(axis=1)
-    against = np.where(alone[:, None, :], centred, centred - others)
+    alone: NDArray[np.bool_] = np.logical_not(np.isfinite(others).any(axis=1))
+    against = np.where(alone[:, None], centred, centred - others)
     before, after = against[:, :BEFORE_DAYS], against[:, BEFORE_DAYS:]
-    mid_before, mid_after = _median(before, FEWEST_BEFORE), _median(after, FEWEST_AFTER)
-    size = mid_after - mid_before
-    own = _median(centred[:, BEFORE_DAYS:], FEWEST_AFTER)
+    size = _median(after, FEWEST_AFTER) - _median(before, FEWEST_BEFORE)
     spread, error = _spread_and_error(before, after)
     with np.errstate(invalid="ignore", divide="ignore"):
         power = size / spread
-        least = np.where(alone, max(strength, STRENGTH_ALONE), strength)
-        found = (np.abs(power) >= least) & (own * np.sign(size) >= OWN_SHARE * np.abs(size))
-        found &= ~ratio | (np.abs(size) >= np.log(SMALLEST_FACTOR))
-    at, column = np.nonzero(found)
-    order = _order(before[at, :, column], after[at, :, column])
-    found[at, column] = np.maximum(order, 1 - order) >= SEPARATION
-    return tuple(np.where(found, table, np.nan) for table in (size, error, power))  # type: ignore[return-value]
+    found = np.abs(power) >= np.where(alone, max(strength, STRENGTH_ALONE), strength)
+    found &= ~ratio | (np.abs(size) >= np.log(SMALLEST_FACTOR))
+    day, group, member = np.nonzero(found)
+    if len(day):
+        order = _order(before[day, :, group, member], after[day, :, group, member])
+        own = _median(centred[day, BEFORE_DAYS:, group, member], FEWEST_AFTER)
+        moved = size[day, group, member]
+        few = np.isfinite(size).sum(axis=-1)[day, group] <= TELLING_NEIGHBOURS
+        its_own = ~few | (own * np.sign(moved) >= OWN_SHARE * np.abs(moved))
+        found[day, group, member] = its_own & (np.maximum(order, 1 - order) >= SEPARATION)
+    size, error, power = (np.where(found, table, np.nan) for table in (size, error, power))
+    return size, error, power
 
 
 def _median_of_others(values: Floats) -> Floats:
     """For each entry of the last axis the median of the other entries; NaN without any."""
-    order = np.argsort(values, axis=2)  # NaN last
-    rank = np.empty_like(order)
-    np.put_along_axis(rank, order, np.broadcast_to(np.arange(values.shape[2]), values.shape), axis=2)
-    in_order = np.take_along_axis(values, order, axis=2)
-    n_others = np.isfinite(values).sum(axis=2, keepdims=True) - np.isfinite(values)
+    order = np.argsort(values, axis=-1)  # NaN last
+    rank = np.argsort(order, axis=-1)
+    in_order = np.take_along_axis(values, order, axis=-1)
+    known = np.isfinite(values)
+    n_others = known.sum(axis=-1, keepdims=True) - known
     lower, upper = np.maximum(n_others - 1, 0) // 2, n_others // 2
-    last = values.shape[2] - 1
-    low = np.take_along_axis(in_order, np.minimum(lower + (lower >= rank), last), axis=2)
-    high = np.take_along_axis(in_order, np.minimum(upper + (upper >= rank), last), axis=2)
+    last = values.shape[-1] - 1
+    low = np.take_along_axis(in_order, np.minimum(lower + (lower >= rank), last), axis=-1)
+    high = np.take_along_axis(in_order, np.minimum(upper + (upper >= rank), last), axis=-1)
     return np.where(n_others > 0, (low + high) / 2, np.nan)
 
 
 def _median(values: Floats, fewest: int) -> Floats:
     """Median along axis 1 of what is there; NaN with fewer than ``fewest`` values."""
-    return _median_of_sorted(np.sort(values, axis=1).swapaxes(1, -1), fewest)
+    return _median_of_sorted(np.sort(np.moveaxis(values, 1, -1), axis=-1), fewest)
 
 
 def _median_of_sorted(in_order: Floats, fewest: int) -> Floats:
@@ -182,14 +235,11 @@ def _spread_and_error(before: Floats, after: Floats) -> tuple[Floats, Floats]:
         count = known.sum(axis=1)
         filled = np.where(known, side, 0.0)
         mean = filled.sum(axis=1) / np.maximum(count, 1)
-        squares = squares + np.where(known, (side - mean[:, None, :]) ** 2, 0.0).sum(axis=1)
+        squares = squares + np.where(known, (side - mean[:, None]) ** 2, 0.0).sum(axis=1)
         counts.append(count)
     spread = np.sqrt(squares / np.maximum(counts[0] + counts[1] - 2, 1))
     inverse = 1 / np.maximum(counts[0], 1) + 1 / np.maximum(counts[1], 1)
     return spread, spread * np.sqrt(MEDIAN_VARIANCE * inverse)
-
-
-MEDIAN_VARIANCE = np.pi / 2  # variance of a median over that of a mean, normal days
 
 
 def _order(before: Floats, after: Floats) -> Floats:

@@ -21,7 +21,9 @@ Flags = NDArray[np.int8]
 
 PASS, NOT_EVALUATED, SUSPECT, FAIL, MISSING = 1, 2, 3, 4, 9
 DAY_HOURS = 24
-CLIMATOLOGY_DAYS = 60  # days before, from which the range of an hour of the day is taken: it moves with the season
+CLIMATOLOGY_DAYS = (
+    60  # days before, from which the range of an hour of the day is taken: it moves with the season
+)
 FEWEST_DAYS = 20  # observations of the same hour of the day that make a range
 NEIGHBOUR_HOURS = 672  # hours before, from which the usual difference from a neighbour is taken
 FEWEST_DIFFERENCES = 168
@@ -154,4 +156,5 @@ def _robust_distance(today: Floats, past: Floats, fewest: int) -> Floats:
         middle[enough] = np.nanmedian(past[:, enough], axis=0)
         spread[enough] = MAD_TO_SD * np.nanmedian(np.abs(past[:, enough] - middle[enough]), axis=0)
     spread[spread == 0] = np.nan
-    return np.abs(today - middle) / spread
+    distance: Floats = np.abs(today - middle) / spread
+    return distance

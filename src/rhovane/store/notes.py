@@ -41,7 +41,9 @@ class NoteBook(Session):
 
     def data_notes(self, *, every_version: bool = False) -> list[DataNote]:
         """The newest version of every data note, or all versions; in order of number and version."""
-        newest = "" if every_version else "qualify row_number() over (partition by id order by version desc) = 1"
+        newest = (
+            "" if every_version else "qualify row_number() over (partition by id order by version desc) = 1"
+        )
         found = self.rows(f"select {_COLUMNS} from data_note {newest} order by id, version")
         return [
             DataNote(
