@@ -9,7 +9,7 @@ import pytest
 
 from reference.naive_data_faults import naive_step
 from rhovane.stats import level_step as steps
-from rhovane.stats.unit_switch import matching_offset, matching_unit, shifted_zero
+from rhovane.stats.unit_switch import keeps_course, matching_offset, matching_unit, shifted_zero
 from rhovane_demo.world import make_world
 
 N_DAYS = 120
@@ -20,7 +20,7 @@ RATIO = [True] * 4
 def network(seed: int, n_days: int = N_DAYS) -> np.ndarray:
     """Hourly concentrations of four stations under common weather, shape (24 n_days, 4)."""
     rng = np.random.default_rng(seed)
-    weather = np.repeat(np.cumsum(rng.normal(0, 0.25, n_days)) * 0.6, 24)
+    weather = np.repeat(np.cumsum(rng.normal(0, 0.15, n_days)), 24) + rng.normal(0, 0.4, 24 * n_days)
     own = rng.normal(0, 0.3, (24 * n_days, 4)) + np.repeat(rng.normal(0, 0.06, (n_days, 4)), 24, axis=0)
     return np.round(np.array([40, 25, 12, 6]) * np.exp(weather[:, None] + own), 1)
 
@@ -58,11 +58,16 @@ def test_the_level_of_a_day_is_the_median_of_its_observations():
     assert np.isnan(levels[6, 0])
 
 
-@pytest.mark.parametrize("seed", range(8))
-def test_a_unit_switch_is_found_on_its_day_and_only_there(seed: int):
-    values = network(seed)
-    values[24 * 77 :, 2] *= 1.9125
-    assert found(values) == [(77, 2)]
+def test_a_unit_switch_is_found_and_dated_and_nothing_else_is():
+    dated = []
+    for seed in range(20):
+        values = network(seed)
+        values[24 * 77 :, 2] *= 1.9125
+        ((day, series),) = found(values)
+        assert series == 2, seed
+        dated.append(day)
+    assert dated.count(77) >= 19
+    assert set(dated) <= {76, 77, 78}
 
 
 @pytest.mark.parametrize("seed", range(8))
@@ -151,6 +156,16 @@ def test_molar_volume_factors_are_those_of_the_gas_law():
         assert matching_unit(quantity, math.log(at_25), 0.001, 4.0) is not None
         assert matching_unit(quantity, math.log(at_20), 0.001, 4.0) is not None
         assert matching_unit(quantity, math.log(at_20 + 0.05), 0.001, 4.0) is None
+
+
+def test_a_change_of_unit_keeps_the_course_of_the_day_and_a_drift_does_not():
+    values = network(10)
+    before, after, others = values[: 24 * 28, 1], values[24 * 28 : 24 * 35, 1], values[:, [0, 2, 3]]
+    sides = (others[: 24 * 28], others[24 * 28 : 24 * 35])
+    assert keeps_course(before, 1.9 * after, *sides)
+    assert not keeps_course(before, 0.3 * after + 25, *sides)
+    assert keeps_course(before, after, *(side[:, :0] for side in sides))
+    assert not keeps_course(before, np.full(len(after), np.nan), *sides)
 
 
 def test_a_shifted_zero_is_told_from_a_factor():

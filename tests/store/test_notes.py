@@ -31,8 +31,12 @@ def test_the_newest_version_is_read_and_all_versions_are_kept(tmp_path):
 
 
 def test_notes_of_a_night_that_is_rolled_back_are_gone(tmp_path):
-    with open_store(tmp_path / "s.duckdb") as store:
-        with pytest.raises(RhovaneError), store.transaction():
+    def note_and_fail(store):
+        with store.transaction():
             store.append_notes([OPEN])
             raise RhovaneError("stopped")
+
+    with open_store(tmp_path / "s.duckdb") as store:
+        with pytest.raises(RhovaneError, match="stopped"):
+            note_and_fail(store)
         assert store.data_notes() == []

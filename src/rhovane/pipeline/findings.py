@@ -21,7 +21,7 @@ from rhovane.prepare import Days, Grid
 from rhovane.settings import Settings
 from rhovane.stats import data_faults as faults
 from rhovane.stats import level_step as steps
-from rhovane.stats.unit_switch import matching_offset, matching_unit, shifted_zero
+from rhovane.stats.unit_switch import keeps_course, matching_offset, matching_unit, shifted_zero
 
 HOUR_S = 3600
 DAY_S = 86_400
@@ -228,7 +228,7 @@ class Looker:
         first = max(0, since - reach - shown.begin)
         rows = slice(max(0, first - SAME_CAUSE_DAYS - steps.APART_DAYS), None)
         table = steps.StepTable(shown.table.size[rows], shown.table.error[rows], shown.table.strength[rows])
-        found = steps.strongest_steps(table, first=0, offset=rows.start + shown.begin - begin)
+        found = steps.dated_steps(table, first=0, offset=rows.start + shown.begin - begin)
         least = first + shown.begin - begin
         findings = []
         for i, (day, column) in enumerate(zip(found.day.tolist(), found.series.tolist(), strict=True)):
@@ -257,11 +257,17 @@ class Looker:
         }
         if self._has_company(found, day, column):
             return NoteKind.LEVEL_STEP, facts
+        others = [c for group in self.network.groups if column in group for c in group if c != column]
+        before = values[24 * max(0, day - steps.BEFORE_DAYS) : 24 * day]
+        after = values[24 * day : 24 * (day + steps.AFTER_DAYS)]
         unit = matching_unit(quantity, size, error, strength)
-        before = values[24 * max(0, day - steps.BEFORE_DAYS) : 24 * day, column]
-        after = values[24 * day : 24 * (day + steps.AFTER_DAYS), column]
         if unit is not None:
-            return NoteKind.UNIT_SWITCH, facts | {"unit": rounded((unit.low + unit.high) / 2)}
+            factor = {"unit": rounded((unit.low + unit.high) / 2)}
+            kept_course = keeps_course(
+                before[:, column], after[:, column], before[:, others], after[:, others]
+            )
+            return (NoteKind.UNIT_SWITCH, facts | factor) if kept_course else (NoteKind.LEVEL_STEP, facts)
+        before, after = before[:, column], after[:, column]
         weather = float(np.nanmedian(after) / np.nanmedian(before)) / math.exp(size)
         offset = shifted_zero(before, after, weather)
         if offset is not None:

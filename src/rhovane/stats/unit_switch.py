@@ -8,6 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rhovane.stats.level_step import SMALLEST_LEVEL
+
 Floats = NDArray[np.float64]
 
 # Micrograms in a cubic metre of air that one ppb makes: molar mass in g/mol over the molar volume of an ideal gas at
@@ -23,6 +25,8 @@ KELVIN_OF_ZERO_CELSIUS = 273.15
 
 MOST_ERRORS = 2.5  # standard errors between a step and the unit's factor ...
 MOST_APART = 0.16  # ... and never more than this in the logarithm; see the study of planted switches
+MOST_SLOPE = 1.25  # factor by which the slope on the nearest neighbour may change with the unit
+FEWEST_JOINT = 48  # hours
 LEAST_STRENGTH = 3.0  # of a step that is called a unit switch
 
 
@@ -59,6 +63,60 @@ def matching_unit(quantity: str, log_factor: float, error: float, strength: floa
         if abs(size - nearest) <= allowed:
             return unit
     return None
+
+
+def keeps_course(before: Floats, after: Floats, others_before: Floats, others_after: Floats) -> bool:
+    """Whether the course of a series within the day answers to its neighbours as it did before a step.
+
+    A change of unit adds the same to every logarithm, so the departures from the day's median stay what they were; a
+    drift, a leak or a blocked inlet flattens them.
+
+    Parameters
+    ----------
+    before, after : ndarray of float64, shape (24 n_days,)
+        Hourly observations on the two sides of the step, whole days; above zero, NaN where there is none.
+    others_before, others_after : ndarray of float64, shape (24 n_days, n_others)
+        Neighbours at the same hours.
+
+    Returns
+    -------
+    bool
+        Whether the slope on the neighbour that is correlated best before the step has changed by less than a factor of
+        1.25; True without neighbours, False where it cannot be told.
+    """
+    if others_before.shape[1] == 0:
+        return True
+    mine, mine_after = _departures(before[:, None])[:, 0], _departures(after[:, None])[:, 0]
+    theirs, theirs_after = _departures(others_before), _departures(others_after)
+    fits = [_correlation_and_slope(mine, theirs[:, j]) for j in range(theirs.shape[1])]
+    best = max(range(len(fits)), key=lambda j: fits[j][0])
+    slope, slope_after = fits[best][1], _correlation_and_slope(mine_after, theirs_after[:, best])[1]
+    return slope > 0 and 1 / MOST_SLOPE <= slope_after / slope <= MOST_SLOPE
+
+
+def _departures(values: Floats) -> Floats:
+    """Departures of the logarithms from the median of their day; small values count as 5 % of the usual one."""
+    usual = np.nanmedian(values, axis=0) if np.isfinite(values).any() else np.full(values.shape[1], np.nan)
+    by_day = np.log(np.maximum(values, SMALLEST_LEVEL * usual)).reshape(-1, 24, values.shape[1])
+    known: NDArray[np.bool_] = np.asarray(np.isfinite(by_day).any(axis=1))
+    middle = np.full(known.shape, np.nan)
+    for column in range(values.shape[1]):
+        days = known[:, column]
+        middle[days, column] = np.nanmedian(by_day[days, :, column], axis=1)
+    departures: Floats = (by_day - middle[:, None]).reshape(values.shape)
+    return departures
+
+
+def _correlation_and_slope(y: Floats, x: Floats) -> tuple[float, float]:
+    """Of y on x over their joint hours; (-1, 0) with fewer than 48 of them or a constant side."""
+    both = np.isfinite(y) & np.isfinite(x)
+    if both.sum() < FEWEST_JOINT:
+        return -1.0, 0.0
+    covariance = np.cov(x[both], y[both])
+    if covariance[0, 0] == 0 or covariance[1, 1] == 0:
+        return -1.0, 0.0
+    slope = float(covariance[0, 1] / covariance[0, 0])
+    return slope * math.sqrt(covariance[0, 0] / covariance[1, 1]), slope
 
 
 def matching_offset(offset: float, error: float) -> float | None:
