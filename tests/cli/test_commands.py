@@ -83,6 +83,32 @@ def test_alerts_are_listed_for_people_and_for_machines(config: str):
     assert alert["events"][0]["kind"] == "raised"
 
 
+def test_data_notes_are_listed_for_people_and_for_machines_and_under_the_alerts(tmp_path: Path):
+    (tmp_path / "feed").mkdir()
+    (tmp_path / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
+    x, y = related_series(24 * 40, 0.9, seed=3)
+    text = HEADER + "".join(
+        row(h, "A", x[h]) + (row(h, "B", y[h]) if h < 24 * 30 else "") for h in range(24 * 40)
+    )
+    (tmp_path / "feed" / "a.csv").write_text(text, encoding="utf-8")
+    path = str(tmp_path / "monitor.toml")
+    assert run("nightly", "--as-of", "2025-02-09", "--config", path).exit_code == ExitCode.WELL
+    listed = run("notes", "--config", path)
+    assert listed.exit_code == ExitCode.WELL
+    assert "2025-01-31 00:00  B.NO2: gap: no observation [lasts]" in listed.output
+    assert max(len(line) for line in listed.output.splitlines()) <= 80
+    notes = json.loads(run("notes", "--json", "--config", path).output)
+    assert {(n["subject"], n["kind"], n["end"]) for n in notes} == {
+        ("B.NO2", "gap", None),
+        ("B.NO2", "low coverage", None),
+        ("A.NO2~B.NO2", "not computable", None),
+    }
+    assert "B.NO2: gap: no observation" in run("alerts", "--config", path).output
+    status = run("status", "--as-of", "2025-02-09", "--config", path).output
+    assert "Series without data (no data is not no change): 1 of 2" in status
+    assert "Data notes that last: 3" in status
+
+
 def test_one_alert_shows_what_it_rests_on_and_the_cautions(config: str):
     output = run("alert", "1", "--config", config).output
     for words in (

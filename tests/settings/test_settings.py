@@ -184,7 +184,7 @@ def described_keys(model: type[Any], prefix: str = "") -> set[str]:
     for name, field in model.model_fields.items():
         if name == "origin":
             continue
-        inner = re.findall(r"schema\.(\w+)", str(field.annotation))
+        inner = re.findall(r"(?:schema|data_quality)\.(\w+)", str(field.annotation))
         import rhovane.settings.schema as schema
 
         if inner and hasattr(getattr(schema, inner[0]), "model_fields"):

@@ -1,4 +1,4 @@
-"""Commands that look: alerts, alert, status, export."""
+"""Commands that look: alerts, alert, notes, status, export."""
 
 from __future__ import annotations
 
@@ -11,13 +11,16 @@ import click
 
 from rhovane.cli.alert_wording import alert_lines, alert_table, reproduction_lines
 from rhovane.cli.entry import Ending, main, print_json, reads_store, utc_now, with_json
-from rhovane.cli.wording import caution_lines, count_lines, status_lines
+from rhovane.cli.wording import caution_lines, count_lines, note_lines, status_lines
 from rhovane.model import ExitCode
 
 if TYPE_CHECKING:
     from rhovane.review import AlertEntry
     from rhovane.settings import Settings
     from rhovane.store import Store
+
+
+MOST_NOTES = 12  # data notes shown under the alert list
 
 
 @main.command()
@@ -29,7 +32,7 @@ if TYPE_CHECKING:
 )
 def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool, counts: bool) -> None:
     """List the alert log, newest alarm day first."""
-    from rhovane.review import alert_entries, log_counts
+    from rhovane.review import alert_entries, current_notes, log_counts
 
     now = utc_now()
     entries = [e for e in alert_entries(store, now) if e.needs_review or not unreviewed]
@@ -46,6 +49,31 @@ def alerts(settings: Settings, store: Store, as_json: bool, unreviewed: bool, co
     click.echo(f"{settings.network.name}: {len(entries)} alerts")
     click.echo("\n".join(alert_table(entries)))
     click.echo("\nOne in full: rhovane alert ID")
+    noted = current_notes(settings, store)
+    if noted:
+        click.echo(
+            f"\nData notes ({len(noted)}: what is wrong with the data themselves; no data is not no change)"
+        )
+        click.echo("\n".join(note_lines(noted, settings.network.standard_offset, MOST_NOTES)))
+
+
+@main.command()
+@reads_store
+@with_json
+@click.option("--all", "everything", is_flag=True, help="Also notes that are over or were withdrawn.")
+def notes(settings: Settings, store: Store, as_json: bool, everything: bool) -> None:
+    """List data notes: gaps, stuck values, dry gauges, steps in level, pairs not computable.
+
+    Those that last and those begun in the last 7 days; newest first.
+    """
+    from rhovane.review import all_notes, current_notes, notes_as_json
+
+    found = all_notes(store) if everything else current_notes(settings, store)
+    if as_json:
+        print_json(notes_as_json(found))
+        return
+    click.echo(f"{settings.network.name}: {len(found)} data notes (times are standard time)")
+    click.echo("\n".join(note_lines(found, settings.network.standard_offset)))
 
 
 @main.command()

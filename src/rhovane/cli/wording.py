@@ -8,6 +8,7 @@ from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from rhovane.model import DataNote
     from rhovane.pipeline import NightReport
     from rhovane.review import LogCounts, Status
     from rhovane.store import Check, StoredSiteLogEntry
@@ -93,6 +94,24 @@ def check_lines(checks: Sequence[Check]) -> list[str]:
     return lines
 
 
+def note_lines(notes: Sequence[DataNote], offset: dt.timedelta, most: int | None = None) -> list[str]:
+    """Data notes, one after the other, days and hours in the network's standard time."""
+    from rhovane.review import note_state, note_words
+
+    lines: list[str] = []
+    for note in notes[:most]:
+        begin = (note.begin + offset).strftime("%Y-%m-%d %H:%M")
+        state = note_state(note)
+        if state == "over" and note.end is not None:
+            state = f"to {note.end + offset:%Y-%m-%d %H:%M}"
+        text = f"{begin}  {note.subject}: {note.kind.value}: {note_words(note)}"
+        text += f" [{state}]" if state else ""
+        lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 6)
+    if most is not None and len(notes) > most:
+        lines.append(f"  and {len(notes) - most} more: rhovane notes")
+    return lines
+
+
 def status_lines(status: Status, now: dt.datetime) -> list[str]:
     """The state of the watch."""
     lines = [f"{status.network}, {now:%Y-%m-%d %H:%M} UTC"]
@@ -122,7 +141,9 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
         lines.append("Pairs with no correlation that night (no data is not no change):")
         lines += [f"  {p['pair']}: {p['reason']}" for p in status.silent_pairs]
     if status.silent_series:
-        lines.append("Series behind:")
+        lines.append(
+            f"Series without data (no data is not no change): {len(status.silent_series)} of {status.series_watched}"
+        )
         lines += [
             f"  {s['series']}: "
             + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
@@ -136,5 +157,6 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
             "Series with a new instrument or place (correlations across the border are not comparable):"
         )
         lines += [f"  {g['series']} from {g['first_day']}: {g['what']}" for g in status.segments]
+    lines.append(f"Data notes that last: {status.notes_open} (rhovane notes)")
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

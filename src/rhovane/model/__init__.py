@@ -12,18 +12,22 @@ from rhovane.model.errors import (
     StoreLocked,
 )
 from rhovane.model.estimates import CorrelationEstimate
+from rhovane.model.notes import MOMENT_KINDS, STEP_KINDS, DataNote, NoteKind, NoteState
 from rhovane.model.plain import plain_of
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
 from rhovane.model.series import Pair, Segment, Series, SeriesKind
 from rhovane.model.site_log import ReadingsUse, SiteLogEntry
 
 __all__ = [
+    "MOMENT_KINDS",
+    "STEP_KINDS",
     "Alert",
     "AlertEvent",
     "AlertSheet",
     "AlertState",
     "Bounded",
     "CorrelationEstimate",
+    "DataNote",
     "EpisodeDays",
     "EventKind",
     "ExitCode",
@@ -32,6 +36,8 @@ __all__ = [
     "Hint",
     "IngestOutcome",
     "NotFound",
+    "NoteKind",
+    "NoteState",
     "Outcome",
     "Pair",
     "ParsedFile",

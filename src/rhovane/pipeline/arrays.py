@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from rhovane.pipeline.checks import LOOKBACK_DAYS, neighbours_of, without_left_out
 from rhovane.pipeline.unused import Unused, unused_now
 from rhovane.prepare import Days, Grid, PairMask, days_of, kept_hours, to_grid
 from rhovane.settings import PairSettings, Settings
@@ -43,11 +44,29 @@ def load_grid(
     *,
     max_ingest_id: int | None = None,
     unused: Unused | None = None,
+    checked: bool = True,
 ) -> Grid:
     """Observations of the series from the first to the last day, both included (standard time).
 
     Hours of maintenance, and those that the site log takes out, have none: ``unused``, default as they stand now.
+    With ``checked`` they have passed the own checks of the settings, where there are any.
     """
+    if unused is None:
+        unused = unused_now(settings, store)
+    if checked and settings.check:
+        wanted = set(keys)
+        before = dt.timedelta(days=LOOKBACK_DAYS)
+        grid = load_grid(
+            settings,
+            store,
+            wanted | neighbours_of(settings, wanted),
+            first - before,
+            last,
+            max_ingest_id=max_ingest_id,
+            unused=unused,
+            checked=False,
+        )
+        return without_left_out(settings, grid, 24 * LOOKBACK_DAYS).of(sorted(wanted))
     days: Days = days_of(settings.network.standard_offset)
     start, end = days.start_of(first), days.end_of(last)
     names = sorted(set(keys))
@@ -63,8 +82,6 @@ def load_grid(
         flag=found.flag,
         accepted_flags=settings.accepted_flags(),
     )
-    if unused is None:
-        unused = unused_now(settings, store)
     if unused:
         for column, key in enumerate(grid.keys):
             hours = unused.hours(key, grid.hour_start, settings.network.civil_zone)

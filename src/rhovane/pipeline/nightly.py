@@ -20,6 +20,7 @@ from rhovane.pipeline.context import Night, StepOutcome, Trouble
 from rhovane.pipeline.evidence import begin_hourly_scores, judge_days
 from rhovane.pipeline.ingesting import read_feed
 from rhovane.pipeline.memory import NightMemory
+from rhovane.pipeline.noting import note_data, note_pairs
 from rhovane.pipeline.raising import raise_alerts
 from rhovane.pipeline.site_log import take_over_site_log
 from rhovane.pipeline.stale import find_stale
@@ -35,8 +36,10 @@ STEPS: tuple[Step, ...] = (
     ("ingest", read_feed),
     ("site log", take_over_site_log),
     ("stale", find_stale),
+    ("data notes", note_data),
     ("hourly scores", begin_hourly_scores),
     ("windows", compute_windows),
+    ("pair notes", note_pairs),
     ("evidence", judge_days),
     ("alerts", raise_alerts),
 )

@@ -24,6 +24,7 @@ def find_stale(night: Night) -> str:
     left = {} if last is None else dict(last.counts.get("left", {}))
     windows_left = {} if last is None else dict(last.counts.get("windows left", {}))
     changed = store.changed_since(0 if last is None else last.data_version)
+    night.changed = changed
     known = {} if last is None else last.counts.get("first_hours", {})
     first_hours = {k: dt.datetime.fromisoformat(v) for k, v in known.items()}
     for key, moment in changed.items():

@@ -35,6 +35,8 @@ class Status:
     silent_series: list[dict[str, Any]]
     silent_pairs: list[dict[str, Any]]
     not_judged: dict[str, str]
+    series_watched: int
+    notes_open: int
     rejected_rows: int
     segments: list[dict[str, Any]]
     exit_code: ExitCode
@@ -50,6 +52,8 @@ class Status:
             "silent_series": self.silent_series,
             "silent_pairs": self.silent_pairs,
             "not_judged": self.not_judged,
+            "series_watched": self.series_watched,
+            "notes_open": self.notes_open,
             "rejected_rows": self.rejected_rows,
             "segments": self.segments,
             "exit_code": int(self.exit_code),
@@ -125,7 +129,7 @@ def network_status(
             "counts": {
                 k: v
                 for k, v in newest.counts.items()
-                if k not in ("recipes", "left", "first_hours", "not used")
+                if k not in ("recipes", "left", "first_hours", "not used", "notes")
             },
         },
         missed,
@@ -134,6 +138,8 @@ def network_status(
         silent_series,
         silent_pairs,
         {} if last is None else dict(last.counts.get("not judged", {})),
+        len(settings.series),
+        sum(n.is_open for n in store.data_notes()),
         store.count_rejected(),
         segments_in_force(settings, reference),
         code,

@@ -1,6 +1,7 @@
 """Configuration: one TOML file → frozen, checked settings."""
 
 from rhovane.settings.calendar import CalendarEntry
+from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
 from rhovane.settings.load import load_settings, settings_from, settings_of_text
 from rhovane.settings.schema import (
     AlertSettings,
@@ -18,7 +19,9 @@ from rhovane.settings.site_log import load_site_log, site_log_entry
 __all__ = [
     "AlertSettings",
     "CalendarEntry",
+    "CheckSettings",
     "CorrelationSettings",
+    "DataNoteSettings",
     "PairSettings",
     "SectorMask",
     "SeriesSettings",

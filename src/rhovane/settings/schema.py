@@ -12,19 +12,15 @@ from functools import cached_property
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, PrivateAttr, field_validator, model_validator
+from pydantic import Field, PrivateAttr, field_validator, model_validator
 
 from rhovane.model import Flag, Pair, Segment, Series, Stage
 from rhovane.settings.calendar import CalendarEntry
+from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
+from rhovane.settings.section import Section
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
-
-
-class Section(BaseModel):
-    """A frozen part of the settings; an unknown key is a mistake, never ignored."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, str_strip_whitespace=False)
 
 
 class NetworkSettings(Section):
@@ -341,6 +337,8 @@ class Settings(Section):
     site_log: SiteLogSettings = Field(default_factory=lambda: SiteLogSettings())
     correlation: CorrelationSettings = Field(default_factory=lambda: CorrelationSettings())
     alerts: AlertSettings = Field(default_factory=lambda: AlertSettings())
+    data_notes: DataNoteSettings = Field(default_factory=lambda: DataNoteSettings())
+    check: tuple[CheckSettings, ...] = ()
     source: tuple[SourceSettings, ...] = Field(min_length=1)
     series: tuple[SeriesSettings, ...] = Field(min_length=1)
     pair: tuple[PairSettings, ...] = Field(min_length=1)
@@ -433,6 +431,8 @@ class Settings(Section):
             "correlation": self.correlation.model_dump(mode="json", exclude={"significance"}),
             "other days": other_days if pair.working_days_only else [],
             "clocks": [self.network.standard_time, self.network.civil_zone],
+            "splits": self.data_notes.model_dump(mode="json", include={"split_at", "step_strength"}),
+            "checks": [c.model_dump(mode="json") for k in self.series_of(pair) for c in self.checks_of(k)],
         }
         keys = set(self.series_of(pair))
         borders = {
@@ -449,6 +449,23 @@ class Settings(Section):
         """Every series that a pair's numbers rest on: members, controls, wind direction."""
         direction = (pair.sector.direction,) if pair.sector else ()
         return (pair.first, pair.second, *pair.adjusted_for, *direction)
+
+    def checks_of(self, key: str) -> list[CheckSettings]:
+        """Own quality checks that apply to a series."""
+        return [c for c in self.check if c.applies_to in (key, key.partition(".")[2])]
+
+    @cached_property
+    def notes_hash(self) -> str:
+        """Changes when a setting does on which data notes depend."""
+        parts = {
+            "notes": self.data_notes.model_dump(mode="json"),
+            "checks": [c.model_dump(mode="json") for c in self.check],
+            "flags": self.correlation.accepted_flags,
+            "windows": [self.correlation.window_hours, self.correlation.min_coverage],
+            "series": [s.model_dump(mode="json", exclude={"label"}) for s in self.series],
+            "clock": self.network.standard_time,
+        }
+        return hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
 
     def lags_of(self, pair: PairSettings) -> range:
         """Lags examined for a pair, in hours."""
@@ -488,6 +505,9 @@ class Settings(Section):
                 )
         for i, pair in enumerate(self.pair):
             found += self._pair_mistakes(f"pair[{i}] ({pair.key})", pair, known)
+        for i, check in enumerate(self.check):
+            where = f"check[{i}] ({check.applies_to})"
+            found += check.mistakes(where, {key: one.quantity for key, one in known.items()})
         return found
 
     def _pair_mistakes(

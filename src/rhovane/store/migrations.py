@@ -124,6 +124,13 @@ create table segment (
 );
 """
 
+_NOTES = """
+create table data_note (
+    id integer, version integer, subject varchar, kind varchar, begins timestamp, ends timestamp, state varchar,
+    facts json, night_id integer
+);
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
@@ -132,6 +139,7 @@ MIGRATIONS = (
     Migration(5, "settings that nights ran with", _SETTINGS),
     Migration(6, "readings before their confirmation", _CONFIRMATIONS),
     Migration(7, "segments of series", _SEGMENTS),
+    Migration(8, "data notes", _NOTES),
 )
 
 
