@@ -199,6 +199,25 @@ def test_a_window_never_mixes_two_units_and_says_why_it_is_not_computable(at_onc
     assert (note.begin, note.end) == (on_day(SWITCH), on_day(SWITCH + 5) - dt.timedelta(hours=1))
 
 
+def test_windows_use_the_newest_segment_of_a_series_only(tmp_path: Path):
+    moved = f'segments = [{{ first_day = {FIRST + 100 * DAY}, what = "moved across the road" }}]'
+    text = SETTINGS.replace('key = "D.NO2"\nunit = "ug/m3"', f'key = "D.NO2"\nunit = "ug/m3"\n{moved}')
+    settings = network_in(tmp_path, text)
+    (settings.work_folder / "feed" / "all.csv").write_text(
+        feed_lines(readings(), range(24 * N_DAYS)), encoding="utf-8"
+    )
+    with open_store(settings.store_path) as store:
+        last = FIRST + (N_DAYS - 1) * DAY
+        assert run_night(settings, store, as_of=last, now=moment(last)).outcome == "complete"
+        windows = store.read_windows("C.NO2~D.NO2", lag=0)
+    day = (windows["window_end"] - int(START.timestamp())) // 86_400
+    pairs = {int(d): int(n) for d, n in zip(day, windows["n_pairs"], strict=True)}
+    assert pairs[99] == 168
+    assert [pairs[100 + k] for k in range(8)] == [24, 48, 72, 96, 120, 144, 168, 168]
+    reason = windows["reason"][np.flatnonzero(day == 102)[0]]
+    assert reason.endswith(f"split: D.NO2 at {FIRST + 100 * DAY}")
+
+
 def test_a_gap_is_open_then_over_then_filled_and_every_version_is_kept(walked: Settings):
     versions = [
         n for n in notes_of(walked, every_version=True) if n.kind is NoteKind.GAP and n.subject == "C.NO2"
