@@ -10,6 +10,7 @@ from rhovane.model.errors import (
     StoreDamaged,
     StoreLocked,
 )
+from rhovane.model.messages import Message, MessageKind
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
 from rhovane.model.series import Pair, Series, SeriesKind
 
@@ -23,6 +24,8 @@ __all__ = [
     "FeedError",
     "Flag",
     "IngestOutcome",
+    "Message",
+    "MessageKind",
     "NotFound",
     "Outcome",
     "Pair",

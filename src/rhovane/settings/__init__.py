@@ -11,13 +11,18 @@ from rhovane.settings.schema import (
     SourceSettings,
     parse_offset,
 )
+from rhovane.settings.unattended import DeliverySettings, HttpDelivery, MailDelivery, ServiceSettings
 
 __all__ = [
     "AlertSettings",
     "CorrelationSettings",
+    "DeliverySettings",
+    "HttpDelivery",
+    "MailDelivery",
     "PairSettings",
     "SectorMask",
     "SeriesSettings",
+    "ServiceSettings",
     "Settings",
     "SourceSettings",
     "load_settings",

@@ -10,18 +10,14 @@ from functools import cached_property
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from rhovane.model import Flag, Pair, Series, Stage
+from rhovane.settings.section import Section
+from rhovane.settings.unattended import DeliverySettings, ServiceSettings
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
-
-
-class Section(BaseModel):
-    """A frozen part of the settings; an unknown key is a mistake, never ignored."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, str_strip_whitespace=False)
 
 
 class NetworkSettings(Section):
@@ -299,9 +295,26 @@ class AlertSettings(Section):
 
 
 class NightSettings(Section):
-    """When the night runs."""
+    """When the night runs, and what it may take."""
 
     at: str = Field("03:40", pattern=r"^([01]\d|2[0-3]):[0-5]\d$", description="Standard time, HH:MM.")
+    step_limit_minutes: float = Field(
+        60,
+        gt=0,
+        le=1440,
+        description="Minutes; longest time for one step. What is left goes to the next night.",
+    )
+    memory_limit_mb: int = Field(
+        4096,
+        ge=256,
+        le=1_048_576,
+        description="MB; peak memory of the process above which a night is incomplete.",
+    )
+
+    @property
+    def after_midnight(self) -> dt.timedelta:
+        """Time from midnight of standard time to the night."""
+        return dt.timedelta(hours=int(self.at[:2]), minutes=int(self.at[3:]))
 
 
 class Settings(Section):
@@ -313,6 +326,8 @@ class Settings(Section):
     calendar: CalendarSettings = Field(default_factory=lambda: CalendarSettings())
     correlation: CorrelationSettings = Field(default_factory=lambda: CorrelationSettings())
     alerts: AlertSettings = Field(default_factory=lambda: AlertSettings())
+    service: ServiceSettings = Field(default_factory=lambda: ServiceSettings())
+    delivery: DeliverySettings = Field(default_factory=lambda: DeliverySettings())
     source: tuple[SourceSettings, ...] = Field(min_length=1)
     series: tuple[SeriesSettings, ...] = Field(min_length=1)
     pair: tuple[PairSettings, ...] = Field(min_length=1)

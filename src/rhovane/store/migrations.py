@@ -95,10 +95,13 @@ create table delivery (
 );
 """
 
+_ATTEMPTS = "alter table delivery add column tried_at timestamp"
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
+    Migration(4, "attempts at delivery", _ATTEMPTS),
 )
 
 

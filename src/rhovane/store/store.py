@@ -5,12 +5,13 @@ from __future__ import annotations
 from rhovane.store.exports import Exports
 from rhovane.store.ingesting import ReadingWriter
 from rhovane.store.nights import NightLedger
+from rhovane.store.outbox import Outbox
 from rhovane.store.reading import ReadingReader
 from rhovane.store.results import Results
 from rhovane.store.upkeep import Upkeep
 
 
-class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, Upkeep):
+class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, Outbox, Upkeep):
     """An open store; made by :func:`rhovane.store.open_store`, used in a ``with`` block.
 
     Datetimes given without a zone are taken as UTC; datetimes returned say UTC. Spans of time are
