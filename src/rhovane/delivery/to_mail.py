@@ -28,7 +28,7 @@ def mail_of(settings: MailDelivery, message: Message, source: str) -> EmailMessa
     mail["Message-ID"] = f"<{message.id}@{settings.sender.partition('@')[2]}>"
     mail["Auto-Submitted"] = "auto-generated"  # RFC 3834: nobody's absence note need answer
     mail["X-Rhovane-Source"] = source
-    mail.set_content(message.text)
+    mail.set_content(message.text, cte="quoted-printable")  # passes servers that know 7 bits only
     return mail
 
 
@@ -52,23 +52,30 @@ def send_mail(
         try:
             server = _connected(settings, folder, timeout_s, seen)
             refused = _handed_over(server, settings, secret, mail_of(settings, message, source))
-        except smtplib.SMTPNotSupportedError as error:
-            raise Undelivered(f"{shown}: {error}; change delivery.mail.security") from None
-        except smtplib.SMTPAuthenticationError as error:
-            raise Undelivered(f"{shown}: log-in of {settings.user} was refused ({error.smtp_code})") from None
-        except smtplib.SMTPRecipientsRefused as error:
-            raise Undelivered(f"{shown}: refused {', '.join(sorted(error.recipients))}") from None
-        except smtplib.SMTPResponseException as error:
-            for_itself = isinstance(error, smtplib.SMTPDataError) and error.smtp_code >= 500
-            raise Undelivered(f"{shown} answered {error.smtp_code}", others_may_go=for_itself) from None
         except (smtplib.SMTPException, OSError) as error:
             late = over() or isinstance(error, TimeoutError) or "timed out" in str(error)
-            why = f"no answer within {timeout_s:g} s" if late else secret.hide_in(str(error))
-            raise Undelivered(f"{shown}: {why or type(error).__name__}") from None
+            why = f"no answer within {timeout_s:g} s" if late else _why(error, settings, secret)
+            for_itself = not late and isinstance(error, smtplib.SMTPDataError) and error.smtp_code >= 500
+            raise Undelivered(f"{shown} {why}", others_may_go=for_itself) from None
         finally:
             for one in seen:
                 one.close()
     return f"{shown}: refused {', '.join(sorted(refused))}; the others have it" if refused else None
+
+
+def _why(error: Exception, settings: MailDelivery, secret: Secret) -> str:
+    """What went wrong, in words that hold no secret."""
+    match error:
+        case smtplib.SMTPNotSupportedError():
+            return f"does not do as asked: {error} Change delivery.mail.security."
+        case smtplib.SMTPAuthenticationError():
+            return f"refused the log-in of {settings.user} ({error.smtp_code})"
+        case smtplib.SMTPRecipientsRefused():
+            return f"refused {', '.join(sorted(error.recipients))}"
+        case smtplib.SMTPResponseException():
+            return f"answered {error.smtp_code}"
+        case _:
+            return f"cannot be used: {secret.hide_in(str(error)) or type(error).__name__}"
 
 
 def _handed_over(
