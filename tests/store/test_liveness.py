@@ -29,7 +29,7 @@ def test_a_file_that_cannot_be_understood_is_no_sign_of_life(path, text):
     assert read_liveness(path) is None
 
 
-def test_a_service_is_alive_for_four_heartbeats(path):
+def test_a_service_is_alive_for_four_heartbeats():
     assert SIGN.alive(NOW + dt.timedelta(seconds=120))
     assert not SIGN.alive(NOW + dt.timedelta(seconds=121))
     assert not replace(SIGN, state="stopped").alive(NOW)

@@ -164,9 +164,9 @@ class Keeper:
         with self.open_store() as store:
             done = ingest_now(self.settings, store, [], None, now=self.clock.now())
         for one in done.outcomes:
-            self.log.info(
-                "file taken in", file=one.path, new=one.new, revised=one.revised, rejected=one.rejected
-            )
+            if not one.already_known:
+                counts = {"new": one.new, "revised": one.revised, "rejected": one.rejected}
+                self.log.info("file taken in", file=one.path, **counts)
         for trouble in done.troubles:
             self.log.warning(trouble.reason, step=trouble.step, part=trouble.part)
 
