@@ -82,7 +82,7 @@ def send_waiting(
     """
     sent = Sent()
     with open_store() as store:
-        waiting = [e for e in store.outbox(waiting=True) if e.channel in settings.delivery.channels]
+        waiting = left = store.outbox(waiting=True)
     now = clock()
     for channel in settings.delivery.channels:
         due = [
@@ -94,8 +94,8 @@ def send_waiting(
         if attempts:
             with open_store() as store:
                 store.record_attempts(attempts)
-    with open_store() as store:
-        left = [e for e in store.outbox(waiting=True) if e.channel in settings.delivery.channels]
+                left = store.outbox(waiting=True)
+    left = [e for e in left if e.channel in settings.delivery.channels]
     sent.waiting = len(left)
     sent.next_try = min((due_at(e, settings) for e in left), default=None)
     return sent
