@@ -237,6 +237,17 @@ def test_a_heartbeat_tells_of_a_clock_that_was_set_and_of_sleep(network):
     assert again.events() == ["suspended", "clock"], "a restart forgets nothing"
 
 
+def test_a_small_correction_of_the_clock_is_written_down_and_nobody_is_woken(network):
+    watch = Watch(network(FILE))
+    watch.keeper.beat()
+    watch.clock.set_to(watch.clock.now() + dt.timedelta(seconds=59))
+    watch.keeper.beat()
+    watch.keeper.run_due_nights()
+    assert watch.events() == ["clock corrected"]
+    with watch.open_store() as store:
+        assert store.outbox(kind=MessageKind.NOTICE) == []
+
+
 def test_little_disk_space_is_told_once(network):
     watch = Watch(network("[service]\nmin_free_mb = 100000000\n"))
     for _ in range(3):

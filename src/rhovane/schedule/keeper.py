@@ -28,6 +28,7 @@ from rhovane.store import EVENTS_KEPT, Liveness, Noticed, Store, read_liveness, 
 FIRST_PAUSE_S = 60.0  # before a night that failed is tried again; doubled each time
 LONGEST_PAUSE_S = 3600.0
 MOST_DOUBLINGS = 20  # the pause has reached its longest long before
+TOLD_FROM_S = 60.0  # a clock that is set by less was corrected, which happens after every start
 MB = 1_000_000
 
 
@@ -50,7 +51,7 @@ class Keeper:
     _next_send: dt.datetime | None = None
     _outbox_known: bool = False
     _disk_low: bool = False
-    _notices: list[Message] = field(default_factory=list)
+    _notices: deque[Message] = field(default_factory=deque)
     _doing: str = ""
     _events: deque[Noticed] = field(default_factory=lambda: deque(maxlen=EVENTS_KEPT))
     _report: NightReport | None = None
@@ -206,9 +207,13 @@ class Keeper:
             self._notices.append(notice(kind, text, moment, network=self.settings.network.name))
 
     def _post(self, store: Store, now: dt.datetime) -> None:
-        if self._notices:
-            waiting, self._notices = self._notices, []
-            post_notices(self.settings, store, waiting, now=now)
+        waiting = [self._notices.popleft() for _ in range(len(self._notices))]
+        if waiting:
+            try:
+                post_notices(self.settings, store, waiting, now=now)
+            except RhovaneError:
+                self._notices.extendleft(reversed(waiting))
+                raise
             self._outbox_known = False
 
     def beat(self, *, state: str = "running") -> Movement:
@@ -218,7 +223,9 @@ class Keeper:
         self._looked = look
         if moved.was_set:
             direction = "ahead" if moved.set_s > 0 else "back"
-            self.note("clock", f"The clock was set {direction} by {abs(moved.set_s):.0f} s.")
+            far = abs(moved.set_s) >= TOLD_FROM_S
+            text = f"The clock was set {direction} by {abs(moved.set_s):.0f} s."
+            self.note("clock" if far else "clock corrected", text, tell=far)
             self._outbox_known = False
         if moved.was_suspended:
             self.note("suspended", f"The machine slept for {moved.suspended_s:.0f} s.", tell=False)

@@ -14,7 +14,7 @@ from pydantic import Field, field_validator, model_validator
 
 from rhovane.model import Flag, Pair, Series, Stage
 from rhovane.settings.section import Section
-from rhovane.settings.unattended import DeliverySettings, ServiceSettings
+from rhovane.settings.unattended import DeliverySettings, NightSettings, ServiceSettings
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
@@ -292,29 +292,6 @@ class AlertSettings(Section):
     rebaseline_days: int = Field(
         110, ge=14, le=1000, description="Days after which a lasting change becomes the new normal, visibly."
     )
-
-
-class NightSettings(Section):
-    """When the night runs, and what it may take."""
-
-    at: str = Field("03:40", pattern=r"^([01]\d|2[0-3]):[0-5]\d$", description="Standard time, HH:MM.")
-    step_limit_minutes: float = Field(
-        60,
-        gt=0,
-        le=1440,
-        description="Minutes; longest time for one step. What is left goes to the next night.",
-    )
-    memory_limit_mb: int = Field(
-        4096,
-        ge=256,
-        le=1_048_576,
-        description="MB; peak memory of the process above which a night is incomplete.",
-    )
-
-    @property
-    def after_midnight(self) -> dt.timedelta:
-        """Time from midnight of standard time to the night."""
-        return dt.timedelta(hours=int(self.at[:2]), minutes=int(self.at[3:]))
 
 
 class Settings(Section):

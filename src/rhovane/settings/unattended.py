@@ -1,7 +1,8 @@
-"""Settings of the service and of what is sent out."""
+"""Settings of nights that run by themselves, of the service, and of what is sent out."""
 
 from __future__ import annotations
 
+import datetime as dt
 from typing import Literal, Self
 from urllib.parse import urlsplit
 
@@ -11,6 +12,29 @@ from rhovane.settings.section import Section
 
 Kind = Literal["alert", "digest", "notice"]
 LOOPBACK = ("localhost", "127.0.0.1", "::1")
+
+
+class NightSettings(Section):
+    """When the night runs, and what it may take."""
+
+    at: str = Field("03:40", pattern=r"^([01]\d|2[0-3]):[0-5]\d$", description="Standard time, HH:MM.")
+    step_limit_minutes: float = Field(
+        60,
+        gt=0,
+        le=1440,
+        description="Minutes; longest time for one step. What is left goes to the next night.",
+    )
+    memory_limit_mb: int = Field(
+        4096,
+        ge=256,
+        le=1_048_576,
+        description="MB; peak memory of the process above which a night is incomplete.",
+    )
+
+    @property
+    def after_midnight(self) -> dt.timedelta:
+        """Time from midnight of standard time to the night."""
+        return dt.timedelta(hours=int(self.at[:2]), minutes=int(self.at[3:]))
 
 
 class ServiceSettings(Section):
