@@ -15,7 +15,7 @@ from flow.unattended_walk import network_in, walk
 from rhovane.settings import Settings
 from rhovane.store import open_store
 
-KILLS, N_NIGHTS, SEED, LONGEST_S = 8, 9, 20, 0.8
+KILLS, N_NIGHTS, SEED, LONGEST_S = 8, 5, 20, 0.5
 
 
 def told(settings: Settings) -> dict[str, object]:

@@ -29,8 +29,8 @@ from rhovane.store import open_store
 from schedule.invented_clock import InventedClock, LogReader
 
 DAY, HOUR = dt.timedelta(days=1), dt.timedelta(hours=1)
-HISTORY_DAYS = 89  # taken in by the first night
-CHANGE_DAYS = (90, 150)  # the relation breaks, and comes back
+HISTORY_DAYS = 92  # taken in by the first night
+CHANGE_DAYS = (90, 114)  # the relation breaks, and comes back
 
 
 def network_in(folder: Path, *, lines: str = "") -> Settings:

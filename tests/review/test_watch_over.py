@@ -95,9 +95,10 @@ def test_a_clock_behind_the_ledger_and_one_that_was_set_are_concerns(network):
     assert kinds(found) == ["clock"]
     assert "2025-03-02 00:40 UTC, but a night began at 2025-03-02 03:40" in found.concerns[0].found
     events = tuple(Noticed(RAN + i * HOUR, "clock", f"set back {i}") for i in (-25, -1))
+    events += (Noticed(RAN, "upkeep failed", "disk full"),)
     sign = Liveness(1, RAN, RAN, 30, "stopped", events=(*events, Noticed(RAN, "suspended", "slept")))
     write_liveness(settings.store_path, sign)
-    assert [c.found for c in status(settings, RAN).concerns] == ["set back -1"]
+    assert [c.found for c in status(settings, RAN).concerns] == ["set back -1", "disk full"]
 
 
 def test_little_disk_space_is_a_concern_with_its_setting(network):

@@ -59,16 +59,16 @@ def every(step: dt.timedelta, first: dt.datetime, last: dt.datetime) -> list[dt.
         ((2024, 12, 29), (2025, 1, 3)),  # the turn of the year
     ],
 )
-def test_each_night_runs_once_within_a_minute_of_its_hour(first, last, offset, at):
+def test_each_night_runs_once_within_minutes_of_its_hour(first, last, offset, at):
     settings = network(offset, at)
-    moments = every(MINUTE, *(dt.datetime(*day, tzinfo=dt.UTC) for day in (first, last)))
+    moments = every(10 * MINUTE, *(dt.datetime(*day, tzinfo=dt.UTC) for day in (first, last)))
     done = dt.date(*first) - 3 * DAY
     while planned(settings, done + DAY) <= moments[0]:
         done += DAY
     ran = nights_run(settings, done, moments)
     assert [day for day, _ in ran] == [done + i * DAY for i in range(1, len(ran) + 1)]
     assert len(ran) >= 5
-    assert all(dt.timedelta(0) <= now - planned(settings, day) < MINUTE for day, now in ran)
+    assert all(dt.timedelta(0) <= now - planned(settings, day) < 10 * MINUTE for day, now in ran)
 
 
 def test_a_machine_that_slept_makes_up_for_every_night_in_order():

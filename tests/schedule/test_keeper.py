@@ -121,6 +121,16 @@ def test_a_store_with_faults_is_told_and_not_copied_over_a_good_copy(network, mo
     assert [json.loads(line)["subject"] for line in lines] == ["night 2025-01-10", "store"]
 
 
+def test_a_copy_that_cannot_be_made_is_told_and_spoils_nothing_else(network):
+    watch = Watch(network(FILE))
+    (watch.settings.work_folder / "backup").write_text("a file in the way")
+    watch.keeper.run_due_nights()
+    watch.keeper.send()
+    assert watch.nights() == dates(9, 9)
+    lines = (watch.settings.work_folder / "out.jsonl").read_text("utf-8").splitlines()
+    assert [json.loads(line)["subject"] for line in lines] == ["night 2025-01-10", "upkeep failed"]
+
+
 def test_a_night_that_fails_is_tried_again_after_growing_pauses_and_later_nights_wait(network, monkeypatch):
     watch = Watch(network())
     good = nightly.STEPS

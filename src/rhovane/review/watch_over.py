@@ -11,7 +11,15 @@ from typing import Any
 from rhovane.settings import Settings
 from rhovane.store import Liveness, Store, read_liveness
 
-TOLD_FOR = dt.timedelta(days=1)  # how long a clock that was moved is told
+TOLD_FOR = dt.timedelta(days=1)  # how long what the service noticed is told
+CLOCK_REMEDY = "Check the machine's time service. Nights go by date: none is run twice, and none is left out."
+# What the service notices and somebody has to look after, with what to do.
+REMEDIES = {
+    "clock": CLOCK_REMEDY,
+    "store": "Keep a copy of the file, and restore the latest copy that is whole.",
+    "upkeep failed": "The store was not checked or not copied. Remedy the cause; the next night tries again.",
+    "job failed": "This is a fault of the program; the log of the service has more. The job is tried again.",
+}
 CLOCK_AHEAD = dt.timedelta(minutes=1)  # a ledger entry further in the future than this is no rounding
 FAILING_ATTEMPTS = 3  # attempts at a delivery after which it counts as failing
 MB = 1_000_000
@@ -35,7 +43,8 @@ def concerns(settings: Settings, store: Store, now: dt.datetime) -> list[Concern
     liveness = read_liveness(settings.store_path)
     return [
         *_service(liveness, now),
-        *_clock(liveness, store, now),
+        *_noticed(liveness, now),
+        *_clock(store, now),
         *_disk(settings),
         *_deliveries(settings, store),
     ]
@@ -59,17 +68,22 @@ def _service(liveness: Liveness | None, now: dt.datetime) -> list[Concern]:
     ]
 
 
-def _clock(liveness: Liveness | None, store: Store, now: dt.datetime) -> list[Concern]:
-    found = []
-    newest = next(iter(store.nights(1)), None)
-    if newest is not None and newest.started - now > CLOCK_AHEAD:
-        found.append(
-            f"it shows {now:%Y-%m-%d %H:%M} UTC, but a night began at {newest.started:%Y-%m-%d %H:%M}"
-        )
+def _noticed(liveness: Liveness | None, now: dt.datetime) -> list[Concern]:
+    """What the service noticed within the last day and somebody has to look after."""
     events = () if liveness is None else liveness.events
-    found += [e.text for e in events if e.kind == "clock" and dt.timedelta(0) <= now - e.at <= TOLD_FOR]
-    remedy = "Check the machine's time service. Nights go by date: none is run twice, and none is left out."
-    return [Concern("clock", text, remedy) for text in found]
+    return [
+        Concern(e.kind, e.text, REMEDIES[e.kind])
+        for e in events
+        if e.kind in REMEDIES and dt.timedelta(0) <= now - e.at <= TOLD_FOR
+    ]
+
+
+def _clock(store: Store, now: dt.datetime) -> list[Concern]:
+    newest = next(iter(store.nights(1)), None)
+    if newest is None or newest.started - now <= CLOCK_AHEAD:
+        return []
+    found = f"it shows {now:%Y-%m-%d %H:%M} UTC, but a night began at {newest.started:%Y-%m-%d %H:%M}"
+    return [Concern("clock", found, CLOCK_REMEDY)]
 
 
 def _disk(settings: Settings) -> list[Concern]:

@@ -286,7 +286,7 @@ class Keeper:
             self.troubles = [error]
             return False
         except (RhovaneError, OSError) as error:
-            self.note(f"{step} failed", str(error), tell=False)
+            self.note(f"{step} failed", str(error), tell=step == "upkeep")
             self.troubles = [error]
             return False
         return True
