@@ -172,6 +172,22 @@ def test_a_step_that_fails_as_a_whole_leaves_reason_and_next_command(three_stati
     assert f"Next: rhovane nightly --as-of {LAST}" in digest.text
 
 
+def test_news_that_cannot_be_written_down_fail_the_night_visibly(three_stations, monkeypatch):
+    settings = three_stations(CHANNEL)
+
+    def fail(*_: object) -> None:
+        raise KeyError("headline")
+
+    monkeypatch.setattr(nightly, "post_news", fail)
+    report = night(settings)
+    assert (report.outcome, report.troubles[-1].reason) == ("failed", "KeyError: 'headline'")
+    with open_store(settings.store_path) as store:
+        assert [n.outcome for n in store.nights()] == ["failed"]
+        assert len(store.read_windows()["lag"]) == 0, (
+            "what cannot be told is not kept; the night is run again"
+        )
+
+
 # -- limits and stops ----------------------------------------------------------------------------------
 
 

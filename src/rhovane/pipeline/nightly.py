@@ -156,7 +156,7 @@ def run_night(
         outcomes.append(
             StepOutcome(step, 0.0, "failed; nothing of the night's results was kept", tuple(night.troubles))
         )
-        _finish(night, outcome, outcomes)
+        _finish(night, outcome, outcomes, tell=step != "ledger")
     return NightReport(night.id, as_of, outcome, tuple(outcomes), tuple(night.troubles), night.counts)
 
 
@@ -204,25 +204,20 @@ def _finish(
     night: Night,
     outcome: Literal["complete", "incomplete", "failed", "stopped"],
     outcomes: list[StepOutcome],
+    *,
+    tell: bool = True,
 ) -> None:
     """Write the night's last word and, in the same transaction, what is to be told of it."""
     with night.store.transaction():
         if outcome != "stopped":
             count_failing(night)
+        if tell and outcome != "stopped":
             post_news(night, outcome)
-        _write_ledger(night, outcome, outcomes)
-
-
-def _write_ledger(
-    night: Night,
-    outcome: Literal["complete", "incomplete", "failed", "stopped"],
-    outcomes: list[StepOutcome],
-) -> None:
-    night.store.finish_night(
-        night.id,
-        now=night.now,
-        outcome=outcome,
-        steps=[o.as_json() for o in outcomes],
-        counts=night.counts,
-        checkpoint=night.checkpoint_night,
-    )
+        night.store.finish_night(
+            night.id,
+            now=night.now,
+            outcome=outcome,
+            steps=[o.as_json() for o in outcomes],
+            counts=night.counts,
+            checkpoint=night.checkpoint_night,
+        )
