@@ -246,7 +246,8 @@ class Keeper:
             self._begun = now
             earlier = read_liveness(path)
             if earlier is not None:
-                self._events.extendleft(reversed(earlier.events[len(self._events) - EVENTS_KEPT :]))
+                room = EVENTS_KEPT - len(self._events)
+                self._events.extendleft(reversed(earlier.events[max(0, len(earlier.events) - room) :]))
         planned = newest_planned(self.settings, now)
         sign = Liveness(
             pid=os.getpid(),

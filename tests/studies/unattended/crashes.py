@@ -21,7 +21,7 @@ from flow import unattended_walk
 from flow.test_unattended_crash import same_state, state_of
 from flow.unattended_walk import network_in, walk
 
-N_NIGHTS, LONGEST_S, FIRST_SEED = 30, 1.0, 100
+N_NIGHTS, LONGEST_S, FIRST_SEED = 10, 2.0, 100
 
 
 def main(kills: int) -> None:
