@@ -94,10 +94,10 @@ def walk(
         after_night(night)
 
 
-def _announced(do: Callable[[], None], stage: str, at: Callable[[str], None]) -> Callable[[], None]:
-    def doing() -> None:
+def _announced(do: Callable[..., None], stage: str, at: Callable[[str], None]) -> Callable[..., None]:
+    def doing(**how: bool) -> None:
         at(stage)
-        do()
+        do(**how)
 
     return doing
 

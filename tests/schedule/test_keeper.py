@@ -121,6 +121,19 @@ def test_a_store_with_faults_is_told_and_not_copied_over_a_good_copy(network, mo
     assert [json.loads(line)["subject"] for line in lines] == ["night 2025-01-10", "store"]
 
 
+def test_a_copy_that_a_killed_service_did_not_get_to_is_made_up_for(network, monkeypatch):
+    watch = Watch(network())
+    with monkeypatch.context() as patched:
+        patched.setattr(Keeper, "_keep", lambda _self, **_how: None)
+        watch.keeper.run_due_nights()
+    (copies := watch.settings.work_folder / "backup").mkdir()
+    Watch(watch.settings).keeper.run_due_nights()
+    (copy,) = copies.glob("*.duckdb")
+    made = copy.stat().st_mtime_ns
+    Watch(watch.settings).keeper.run_due_nights()
+    assert copy.stat().st_mtime_ns == made, "a copy that holds every night is not made again"
+
+
 def test_a_copy_that_cannot_be_made_is_told_and_spoils_nothing_else(network):
     watch = Watch(network(FILE))
     (watch.settings.work_folder / "backup").write_text("a file in the way")

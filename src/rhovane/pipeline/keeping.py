@@ -3,11 +3,19 @@
 from __future__ import annotations
 
 import datetime as dt
+from pathlib import Path
 
 from rhovane.settings import Settings
 from rhovane.store import Store
+from rhovane.store.manifest import read_manifest
 
 BACKUP_FOLDER = "backup"
+
+
+def copy_due(settings: Settings, store: Store, day: dt.date) -> bool:
+    """Whether the copy of a day is missing or lacks a night that the store holds, because something came in between."""
+    held = read_manifest(_copy_of(settings, day))
+    return settings.service.backup and (held is None or held.nights < store.holds().nights)
 
 
 def keep_store(settings: Settings, store: Store, day: dt.date) -> list[str]:
@@ -23,7 +31,11 @@ def keep_store(settings: Settings, store: Store, day: dt.date) -> list[str]:
     """
     faults = store.verify() if settings.service.verify else []
     if settings.service.backup and not faults:
-        folder = settings.work_folder / BACKUP_FOLDER
-        folder.mkdir(exist_ok=True)
-        store.backup(folder / f"{settings.store_path.stem}-{day.isoweekday()}.duckdb")
+        copy = _copy_of(settings, day)
+        copy.parent.mkdir(exist_ok=True)
+        store.backup(copy)
     return faults
+
+
+def _copy_of(settings: Settings, day: dt.date) -> Path:
+    return settings.work_folder / BACKUP_FOLDER / f"{settings.store_path.stem}-{day.isoweekday()}.duckdb"

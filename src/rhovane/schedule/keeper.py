@@ -17,7 +17,15 @@ from dataclasses import dataclass, field
 
 from rhovane.alerts import notice
 from rhovane.model import Message, RhovaneError, StoreLocked
-from rhovane.pipeline import NightReport, keep_store, planned_moment, post_notices, run_night, send_waiting
+from rhovane.pipeline import (
+    NightReport,
+    copy_due,
+    keep_store,
+    planned_moment,
+    post_notices,
+    run_night,
+    send_waiting,
+)
 from rhovane.pipeline.checking import ingest_now
 from rhovane.schedule.clock import Clock, Look, Movement, movement
 from rhovane.schedule.due import DAY, due_nights, newest_planned
@@ -46,6 +54,7 @@ class Keeper:
     faults: list[str] = field(default_factory=list)
     troubles: list[RhovaneError | OSError] = field(default_factory=list)
     _newest_done: dt.date | None = None
+    _kept_for: dt.date | None = None
     _failures: int = 0
     _not_before: float = 0.0
     _next_send: dt.datetime | None = None
@@ -91,8 +100,8 @@ class Keeper:
             elif report is not None and report.outcome == "failed":
                 self._pause(f"the night of {report.as_of} failed")
             break
-        if finished and not self.stop.is_set():
-            self._guarded("upkeep", self._keep)
+        if self._newest_done is not None and self._kept_for != self._newest_done and not self.stop.is_set():
+            self._guarded("upkeep", lambda: self._keep(after_night=finished))
         self._outbox_known = False
         self.send()
 
@@ -144,14 +153,20 @@ class Keeper:
             at=planned_moment(self.settings, first),
         )
 
-    def _keep(self) -> None:
+    def _keep(self, *, after_night: bool) -> None:
+        """Check and copy the store; without a night before it only where an earlier process did not get that far."""
+        day = self._newest_done
+        assert day is not None
         with self.open_store() as store:
-            day = self._newest_done or self.clock.now().date()
+            if not after_night and not copy_due(self.settings, store, day):
+                self._kept_for = day
+                return
             self.faults = keep_store(self.settings, store, day)
             for fault in self.faults:
                 self.note("store", f"{fault}. Run: rhovane verify", at=planned_moment(self.settings, day))
             if not self.faults:
                 self.log.info("store checked and copied", night=str(day))
+            self._kept_for = day
             self._post(store, self.clock.now())
 
     # -- feed and outbox ------------------------------------------------------------------------
