@@ -1,6 +1,14 @@
 """Commands: each parses, calls one function, prints, and sets the exit code."""
 
-from rhovane.cli import decide, feed, keep, look, run, site  # the commands put themselves into the group
+from rhovane.cli import (
+    decide,
+    feed,
+    keep,
+    look,
+    run,
+    site,
+    unattended,
+)  # the commands put themselves into the group
 from rhovane.cli.entry import main
 
-__all__ = ["decide", "feed", "keep", "look", "main", "run", "site"]
+__all__ = ["decide", "feed", "keep", "look", "main", "run", "site", "unattended"]

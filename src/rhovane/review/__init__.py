@@ -1,17 +1,20 @@
 """What the analyst asks in the morning: the alert list, one alert in full, and what is silent and why."""
 
-from rhovane.review.alert_list import AlertEntry, alert_entries, alert_entry, record_decision
+from rhovane.review.alert_list import AlertEntry, alert_entries, alert_entry, record_decision, unreviewed
 from rhovane.review.exporting import export_table
 from rhovane.review.log import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.review.log_counts import LogCounts, log_counts
 from rhovane.review.nearby import Nearby, nearby_entries, site_log_json
 from rhovane.review.notes import all_notes, current_notes, note_state, note_words, notes_as_json
 from rhovane.review.provenance import Provenance, provenance_of
+from rhovane.review.silence import falling_coverage, silent_pairs, silent_series
 from rhovane.review.site_log import add_site_log_entry, withdraw_site_log_entry
 from rhovane.review.status import Status, network_status
+from rhovane.review.watch_over import Concern, concerns
 
 __all__ = [
     "AlertEntry",
+    "Concern",
     "LogCounts",
     "Nearby",
     "Provenance",
@@ -20,8 +23,10 @@ __all__ = [
     "alert_entries",
     "alert_entry",
     "all_notes",
+    "concerns",
     "current_notes",
     "export_table",
+    "falling_coverage",
     "log_alerts",
     "log_counts",
     "log_events",
@@ -34,6 +39,9 @@ __all__ = [
     "notes_as_json",
     "provenance_of",
     "record_decision",
+    "silent_pairs",
+    "silent_series",
     "site_log_json",
+    "unreviewed",
     "withdraw_site_log_entry",
 ]

@@ -7,6 +7,7 @@ from rhovane.store.exports import Exports
 from rhovane.store.ingesting import ReadingWriter
 from rhovane.store.nights import NightLedger
 from rhovane.store.notes import NoteBook
+from rhovane.store.outbox import Outbox
 from rhovane.store.reading import ReadingReader
 from rhovane.store.results import Results
 from rhovane.store.segments import Segments
@@ -15,7 +16,17 @@ from rhovane.store.upkeep import Upkeep
 
 
 class Store(
-    ReadingWriter, ReadingReader, NightLedger, NoteBook, Results, Segments, Exports, SiteLog, Copies, Upkeep
+    ReadingWriter,
+    ReadingReader,
+    NightLedger,
+    NoteBook,
+    Results,
+    Segments,
+    Exports,
+    SiteLog,
+    Outbox,
+    Copies,
+    Upkeep,
 ):
     """An open store; made by :func:`rhovane.store.open_store`, used in a ``with`` block.
 
