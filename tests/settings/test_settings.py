@@ -13,7 +13,7 @@ import pytest
 
 import rhovane_demo
 from rhovane.model import ExitCode, Flag, SettingsError
-from rhovane.settings import Settings, load_settings, parse_offset, settings_from
+from rhovane.settings import Settings, load_settings, parse_offset, schema, settings_from, source_schema
 
 PLACE = Path("monitor.toml")
 
@@ -53,7 +53,7 @@ def test_plain_settings_are_accepted_and_defaults_filled_in():
     assert settings.correlation.window_hours == 672
     assert settings.alerts.false_alarms_per_year == 4
     assert settings.pair[0].key == "A.NO2~B.NO2"
-    assert settings.accepted_flags() == {Flag.PASS, Flag.NOT_EVALUATED}
+    assert settings.accepted_flags() == {Flag.PASS, Flag.NOT_EVALUATED, Flag.BELOW_LIMIT}
 
 
 def test_an_unknown_key_is_refused_and_the_known_ones_are_named():
@@ -196,10 +196,9 @@ def described_keys(model: type[Any], prefix: str = "") -> set[str]:
         if name == "origin":
             continue
         inner = re.findall(r"schema\.(\w+)", str(field.annotation))
-        import rhovane.settings.schema as schema
-
-        if inner and hasattr(getattr(schema, inner[0]), "model_fields"):
-            keys |= described_keys(getattr(schema, inner[0]), f"{prefix}{name}.")
+        here = next((m for m in (schema, source_schema) if inner and hasattr(m, inner[0])), schema)
+        if inner and hasattr(getattr(here, inner[0]), "model_fields"):
+            keys |= described_keys(getattr(here, inner[0]), f"{prefix}{name}.")
         else:
             keys.add(f"{prefix}{name}")
     return keys

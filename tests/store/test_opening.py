@@ -12,6 +12,9 @@ from rhovane.store.manifest import manifest_path, read_manifest
 from rhovane.store.migrations import MIGRATIONS, Migration, applied_migrations, migrate
 from store.building import KEYS, NOW, hold, ingest_and_vanish, parsed_file, processes
 
+NUMBERS = [step.number for step in MIGRATIONS]
+LAST = NUMBERS[-1]
+
 
 def one_file(i):
     return parsed_file([{"series": KEYS[0], "hour": i, "value": float(i)}], name=f"feed/{i}.csv")
@@ -181,7 +184,7 @@ def test_migrations_are_numbered_without_gaps_and_applied_once(path):
     assert [step.number for step in MIGRATIONS] == list(range(1, len(MIGRATIONS) + 1))
     for _ in range(2):
         with open_store(path) as store:
-            assert [n for (n,) in store.rows("select number from migration")] == [1, 2, 3]
+            assert [n for (n,) in store.rows("select number from migration")] == NUMBERS
 
 
 def test_tables_have_neither_keys_nor_indexes(store):
@@ -193,7 +196,7 @@ def test_later_step_is_added_to_an_older_store_with_its_data(filled):
     added = (*MIGRATIONS, Migration(len(MIGRATIONS) + 1, "one more", "create table extra (a integer)"))
     with duckdb.connect(str(filled)) as connection:
         migrate(connection, "store", read_only=False, steps=added)
-        assert applied_migrations(connection) == [1, 2, 3, 4]
+        assert applied_migrations(connection) == [*NUMBERS, LAST + 1]
         assert connection.execute("select count(*) from reading").fetchone() == (5,)
         assert connection.execute("select count(*) from extra").fetchone() == (0,)
 
@@ -201,17 +204,17 @@ def test_later_step_is_added_to_an_older_store_with_its_data(filled):
 def test_failing_step_leaves_neither_its_tables_nor_its_record(filled):
     broken = (
         *MIGRATIONS,
-        Migration(4, "broken", "create table extra (a integer); create table extra (b integer)"),
+        Migration(LAST + 1, "broken", "create table extra (a integer); create table extra (b integer)"),
     )
     with duckdb.connect(str(filled)) as connection:
         with pytest.raises(duckdb.Error):
             migrate(connection, "store", read_only=False, steps=broken)
-        assert applied_migrations(connection) == [1, 2, 3]
+        assert applied_migrations(connection) == NUMBERS
         assert connection.execute("select 1 from duckdb_tables() where table_name = 'extra'").fetchall() == []
 
 
 def test_older_store_opened_for_reading_says_how_to_bring_it_up_to_date(filled):
     with duckdb.connect(str(filled)) as connection:
-        connection.execute("delete from migration where number = 3")
-    with pytest.raises(RhovaneError, match=r"step 2.*needs step 3.*rhovane ingest"):
+        connection.execute("delete from migration where number = ?", [LAST])
+    with pytest.raises(RhovaneError, match=rf"step {LAST - 1}.*needs step {LAST}.*rhovane ingest"):
         open_store(filled, read_only=True)

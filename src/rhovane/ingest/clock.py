@@ -76,6 +76,8 @@ def read_labels(cells: Sequence[Cell], source: SourceSettings) -> Instants:
     read_text = text_reader(source.time_format)
     clock = clock_of(source.clock)
     step_s = source.step_minutes * 60
+    # A civil day has 23, 24 or 25 hours: its start is found on the clock, then moved to what the caller expects.
+    day_s = step_s if source.step == "1d" and source.label == "end" else 0
 
     def verdict(cell: Cell) -> tuple[int, int] | Fault:
         if is_empty(cell):
@@ -92,13 +94,13 @@ def read_labels(cells: Sequence[Cell], source: SourceSettings) -> Instants:
             )
         if offset_s is not None:
             return wall_s - offset_s, wall_s - offset_s
-        found = clock(wall_s)
+        found = clock(wall_s - day_s)
         if found is None:
             return Fault(
                 f"{quoted(cell)} does not exist on the clock {source.clock!r}: it was put forward past this "
                 "label. Correct the clock of this source, or the label."
             )
-        return found
+        return found[0] + day_s, found[1] + day_s
 
     column = distinct(cells)
     answers, faults = judged(column, verdict, (0, 0))

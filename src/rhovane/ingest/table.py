@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from rhovane.ingest.cells import Cell, quoted, shown
 from rhovane.model import FeedError, RejectedRow
 
+MOST_NAMES = 30  # column names in one message
 LIKELY_DELIMITERS = {",": ",", ";": ";", "\t": "\\t", "|": "|"}
 
 
@@ -88,5 +89,7 @@ def missing_columns_reason(table: Table, absent: Sequence[str], needed: Sequence
 
 
 def listed(names: Iterable[str]) -> str:
-    """Column names for a message."""
-    return ", ".join(quoted(name) for name in names)
+    """Column names for a message; of very many only the first."""
+    every = list(names)
+    more = f" and {len(every) - MOST_NAMES} more" if len(every) > MOST_NAMES else ""
+    return ", ".join(quoted(name) for name in every[:MOST_NAMES]) + more

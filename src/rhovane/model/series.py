@@ -14,6 +14,7 @@ class Series:
 
     ``key`` is ``STATION.quantity``; ``step_minutes`` is the regular interval; values of a ``circular``
     series (wind direction) are never ranked; an ``accumulated`` series (rain) holds sums over the step.
+    ``speed`` is the key of the wind speed that weights a direction's mean over an hour ("": none does).
     """
 
     key: str
@@ -21,6 +22,7 @@ class Series:
     kind: SeriesKind = "linear"
     step_minutes: int = 60
     label: str = ""
+    speed: str = ""
 
     @property
     def station(self) -> str:

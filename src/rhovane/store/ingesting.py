@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from datetime import datetime
 from typing import NamedTuple
 
 import numpy as np
 
-from rhovane.model import IngestOutcome, ParsedFile, RhovaneError, Series
+from rhovane.model import Flag, IngestOutcome, ParsedFile, RhovaneError, Series
 from rhovane.store.clock import from_seconds, microseconds, naive_utc, seconds_of, timestamps
 from rhovane.store.precedence import (
     NEW,
@@ -20,7 +20,7 @@ from rhovane.store.precedence import (
     group_by_hour,
     settle,
 )
-from rhovane.store.reading import KNOWN_FILES
+from rhovane.store.reading import KNOWN_FILES, KNOWN_RULES
 from rhovane.store.session import Session
 
 _COLUMNS = ("series_key", "hour_start", "value", "flag", "stage", "result_time", "line")
@@ -103,12 +103,27 @@ class ReadingWriter(Session):
         self._made_known = list(series)
         return ids
 
+    def adopt_rules(self, rules: Mapping[str, str]) -> None:
+        """Take files whose settings were never remembered as read by those given, by source.
+
+        Only stores from before settings were remembered hold such files.
+        """
+        with self.transaction():
+            for table in ("ingest", "feed_file"):
+                for source, known in rules.items():
+                    self.execute(
+                        f"update {table} set rules = ? where source = ? and rules is null", [known, source]
+                    )
+        self._remembered.pop(KNOWN_RULES, None)
+
     def append_files(
         self, files: Sequence[ParsedFile], *, now: datetime, checkpoint: bool = True
     ) -> list[IngestOutcome]:
         """Add parsed files to the store, all of them or none; the outcome of each, in their order.
 
-        A file whose content (sha256) the ledger holds already for the same source adds nothing. Every
+        A file whose content (sha256) the ledger holds already for the same source, read by the same
+        settings, adds nothing. Read by other settings it takes the place of what it delivered before: readings
+        that it no longer delivers become missing, and the history keeps them. Every
         other file gets a ledger row and counts as if the files had come one after the other: see
         :mod:`rhovane.store.precedence` for what is new, revised or unchanged. For each outcome
         ``rows_read == new + revised + unchanged + rejected``.
@@ -125,7 +140,7 @@ class ReadingWriter(Session):
             each other. Nothing of any file was kept.
         """
         with self.transaction():
-            known = self._known_contents(files)
+            known, older = self._known_contents(files)
             next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
             fresh: dict[tuple[str, str], _Delivery] = {}
             for file in files:
@@ -133,8 +148,9 @@ class ReadingWriter(Session):
                 if content not in known and content not in fresh:
                     fresh[content] = _Delivery(file, next_id + len(fresh))
             deliveries = list(fresh.values())
-            counts = self._settle_and_write(deliveries)
+            counts = self._settle_and_write(deliveries, older)
             self._write_ledger(deliveries, counts, naive_utc(now))
+            self._withdraw({i: fresh[content].ingest_id for content, ids in older.items() for i in ids})
             outcomes = []
             told: set[tuple[str, str]] = set()
             for file in files:
@@ -151,14 +167,50 @@ class ReadingWriter(Session):
                 self.checkpoint_after_commit()
         return outcomes
 
-    def _known_contents(self, files: Sequence[ParsedFile]) -> dict[tuple[str, str], int]:
+    def _known_contents(
+        self, files: Sequence[ParsedFile]
+    ) -> tuple[dict[tuple[str, str], int], dict[tuple[str, str], list[int]]]:
+        """Contents read already by the settings of today, with their ingest; and earlier ingests of the others."""
         found = self.rows(
-            "select source, sha256, id from ingest where sha256 in (select unnest(?))",
+            "select source, sha256, id, rules from ingest where sha256 in (select unnest(?)) order by id",
             [[f.sha256 for f in files]],
         )
-        return {(source, sha256): number for source, sha256, number in found}
+        wanted = {(f.source, f.sha256): f.rules for f in files}
+        known: dict[tuple[str, str], int] = {}
+        older: dict[tuple[str, str], list[int]] = {}
+        for source, sha256, number, rules in found:
+            content = (source, sha256)
+            if content not in wanted:
+                continue
+            # The settings of the latest reading count: they may have been changed and changed back.
+            if not rules or not wanted[content] or rules == wanted[content]:
+                known[content] = number
+            else:
+                known.pop(content, None)
+            older.setdefault(content, []).append(number)
+        return known, {content: ids for content, ids in older.items() if content not in known}
 
-    def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
+    def _withdraw(self, replaced_by: dict[int, int]) -> None:
+        """What earlier ingests delivered and the ingests that replace them did not becomes missing."""
+        if not replaced_by:
+            return
+        staged = {"old": np.array(list(replaced_by)), "new": np.array(list(replaced_by.values()))}
+        self.execute(
+            f"insert into reading_history select {_ROW}, s.new from reading r join staged s on r.confirmed_by = s.old",
+            staged=staged,
+        )
+        self.execute(
+            f"""
+            update reading set value = null, flag = {int(Flag.MISSING)}, stage = 0, line = 0,
+                result_time = timestamp '1970-01-01', ingest_id = s.new, confirmed_by = s.new
+            from staged s where reading.confirmed_by = s.old
+            """,
+            staged=staged,
+        )
+
+    def _settle_and_write(
+        self, deliveries: Sequence[_Delivery], older: dict[tuple[str, str], list[int]]
+    ) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""
         ids = self.remembered(_SERIES_IDS)
         parts = [_records(delivery, ids) for delivery in deliveries]
@@ -167,6 +219,9 @@ class ReadingWriter(Session):
         rows = parts[0] if len(parts) == 1 else np.concatenate(parts)
         group, first = group_by_hour(rows)
         held, held_group, row_number = self._held(rows.take(first))
+        if older:
+            rules = {d.file.source: d.file.rules for d in deliveries if d.file.rules}
+            held["by_rules"] = ~np.isin(held["confirmed_by"], self._ingests_by_other_rules(rules))
         result = settle(rows, group, held, held_group)
         self._write_readings(result, held_group, row_number)
         counts = []
@@ -176,6 +231,10 @@ class ReadingWriter(Session):
             counts.append((int(of_file[NEW]), int(of_file[REVISED]), int(of_file[UNCHANGED])))
             begin += len(part)
         return counts
+
+    def _ingests_by_other_rules(self, rules: dict[str, str]) -> list[int]:
+        found = self.rows("select id, source, rules from ingest where rules is not null")
+        return [number for number, source, known in found if source in rules and known != rules[source]]
 
     def _held(self, hours: Records) -> tuple[Records, np.ndarray, np.ndarray]:
         """Current readings of the given hours, the group number of each, and where it stands in the table."""
@@ -199,7 +258,10 @@ class ReadingWriter(Session):
         )
         held = np.empty(len(found["position"]), READING)
         for name in READING.names or ():
-            held[name] = seconds_of(found[name]) if name in ("ts", "result_time") else found[name]
+            if name == "by_rules":
+                held[name] = 1
+            else:
+                held[name] = seconds_of(found[name]) if name in ("ts", "result_time") else found[name]
         return held, found["position"], found["row_number"]
 
     def _write_readings(self, result: Settlement, held_group: np.ndarray, row_number: np.ndarray) -> None:
@@ -232,6 +294,7 @@ class ReadingWriter(Session):
         columns = _text_columns(
             sha256=[d.file.sha256 for d in deliveries],
             source=[d.file.source for d in deliveries],
+            rules=[d.file.rules for d in deliveries],
             path=[d.file.path for d in deliveries],
         )
         columns["id"] = np.array([d.ingest_id for d in deliveries])
@@ -247,7 +310,7 @@ class ReadingWriter(Session):
         self.execute(
             """
             insert into ingest select id, sha256, file_rank, source, path, size_bytes, rows_read, rows_new,
-                rows_revised, rows_unchanged, rows_rejected, first_ts, last_ts, ? from staged
+                rows_revised, rows_unchanged, rows_rejected, first_ts, last_ts, ?, nullif(rules, '') from staged
             """,
             [now],
             columns,
@@ -279,11 +342,16 @@ class ReadingWriter(Session):
             self._remembered[KNOWN_FILES].update(
                 {path: (f.size_bytes, microseconds(f.modified) * 1000) for path, (f, _) in latest.items()}
             )
+        if KNOWN_RULES in self._remembered:
+            self._remembered[KNOWN_RULES].update(
+                {path: (f.source, f.rules) for path, (f, _) in latest.items()}
+            )
         pairs = list(latest.values())
         columns = _text_columns(
             path=list(latest),
             source=[f.source for f, _ in pairs],
             sha256=[f.sha256 for f, _ in pairs],
+            rules=[f.rules for f, _ in pairs],
         )
         columns["size_bytes"] = np.array([f.size_bytes for f, _ in pairs], np.int64)
         columns["mtime_ns"] = np.array([microseconds(f.modified) * 1000 for f, _ in pairs], np.int64)
@@ -292,7 +360,7 @@ class ReadingWriter(Session):
             """
             merge into feed_file using (select *, ?::timestamp as seen_at from staged) s using (path)
             when matched then update set source = s.source, size_bytes = s.size_bytes, seen_at = s.seen_at,
-                mtime_ns = s.mtime_ns, sha256 = s.sha256, ingest_id = s.ingest_id
+                mtime_ns = s.mtime_ns, sha256 = s.sha256, ingest_id = s.ingest_id, rules = s.rules
             when not matched then insert by name
             """,
             [now],
@@ -326,6 +394,7 @@ def _records(delivery: _Delivery, ids: dict[str, int]) -> Records:
     rows["stage"] = file.stage
     rows["result_time"] = file.result_time
     rows["line"] = file.line
+    rows["by_rules"] = 1
     rows["file_rank"] = _file_rank(file)
     rows["ingest_id"] = rows["confirmed_by"] = delivery.ingest_id
     infinite = np.isinf(rows["value"])

@@ -95,10 +95,16 @@ create table delivery (
 );
 """
 
+_RULES = """
+alter table ingest add column rules varchar;
+alter table feed_file add column rules varchar;
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
+    Migration(4, "the settings each file was read by", _RULES),
 )
 
 

@@ -14,6 +14,9 @@ A delivery is compared with the reading current at its arrival:
   ``ingest_id``, the ingest that first brought the value: nothing that a past night saw has changed;
 - otherwise **revised**: the one of greater precedence is current, the other goes to the history.
 
+A reading that rests on older settings of its source (``by_rules`` 0) gives way to any other: a file read
+again takes the place of what it delivered before.
+
 A history row was current from ``ingest_id`` until before ``superseded_by``; one that never was current
 names the earlier ingest that it lost to, so that this span is empty.
 """
@@ -32,6 +35,10 @@ READING = np.dtype(
         ("value", np.float64),  # NaN: missing
         ("flag", np.int8),
         ("stage", np.int8),
+        (
+            "by_rules",
+            np.int8,
+        ),  # 1; 0 for a reading held that its source's settings of today would not have given
         ("result_time", np.int64),  # whole seconds since 1970 UTC
         ("file_rank", np.uint64),  # first 64 bits of the file's sha256
         ("line", np.int64),
@@ -41,8 +48,8 @@ READING = np.dtype(
 )
 _BYTES = np.dtype((np.void, READING.itemsize))
 
-PRECEDENCE = ("stage", "result_time", "file_rank", "line", "flag", "value")
-CONFIRMATION = ("stage", "result_time", "file_rank", "line", "confirmed_by")
+PRECEDENCE = ("by_rules", "stage", "result_time", "file_rank", "line", "flag", "value")
+CONFIRMATION = ("by_rules", "stage", "result_time", "file_rank", "line", "confirmed_by")
 
 NEW, REVISED, UNCHANGED = range(3)
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -25,6 +25,7 @@ AS_OF_READINGS = """
 """
 
 
+KNOWN_RULES = "select path, source, rules from feed_file"
 KNOWN_FILES = "select path, size_bytes, mtime_ns from feed_file"
 
 
@@ -127,6 +128,28 @@ class ReadingReader(Session):
             found = self.rows(KNOWN_FILES)
             self._remembered[KNOWN_FILES] = {path: (size, mtime) for path, size, mtime in found}
         return self._remembered[KNOWN_FILES]
+
+    def files_by_other_rules(self, rules: Mapping[str, str]) -> dict[str, tuple[str, str]]:
+        """Files read last by other settings than those given, as path → (source, settings it was read by).
+
+        ``rules`` are today's settings by source. Files of other sources are left out. A file read before settings
+        were remembered was read by "".
+        """
+        return {
+            path: (source, known)
+            for path, (source, known) in self._rules_of_files().items()
+            if source in rules and known != rules[source]
+        }
+
+    def _rules_of_files(self) -> dict[str, tuple[str, str]]:
+        if KNOWN_RULES not in self._remembered:
+            found = self.rows(KNOWN_RULES)
+            self._remembered[KNOWN_RULES] = {path: (source, known or "") for path, source, known in found}
+        return self._remembered[KNOWN_RULES]
+
+    def files_of(self, sources: Sequence[str]) -> dict[str, str]:
+        """Files taken in from some sources, as path → source."""
+        return {path: source for path, (source, _) in self._rules_of_files().items() if source in sources}
 
     def span_of(self, keys: Sequence[str]) -> dict[str, tuple[datetime, datetime]]:
         """First and last hour stored of each series that has readings."""
