@@ -24,7 +24,11 @@ def feed(folder: Path) -> None:
     """Two files that overlap and disagree, one with a code that nobody mapped."""
     (folder / "feed").mkdir(parents=True)
     for name, hours, plus in (("a.csv", range(60), 0), ("b.csv", range(40, 24 * DAYS), 5)):
-        lines = [row(h, s, h % 7 + plus + (s == "B"), flag="S" if h % 11 == 0 else "G") for h in hours for s in "AB"]
+        lines = [
+            row(h, s, h % 7 + plus + (s == "B"), flag="S" if h % 11 == 0 else "G")
+            for h in hours
+            for s in "AB"
+        ]
         (folder / "feed" / name).write_text(HEADER + "".join(lines))
 
 

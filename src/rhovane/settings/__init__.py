@@ -8,12 +8,12 @@ from rhovane.settings.schema import (
     SectorMask,
     SeriesSettings,
     Settings,
-    SourceSettings,
-    parse_offset,
 )
+from rhovane.settings.source_schema import ColumnSettings, SourceSettings, parse_offset
 
 __all__ = [
     "AlertSettings",
+    "ColumnSettings",
     "CorrelationSettings",
     "PairSettings",
     "SectorMask",

@@ -91,6 +91,13 @@ class SeriesSettings(Section):
     )
     label: str = ""
 
+    @field_validator("unit")
+    @classmethod
+    def _unit(cls, value: str) -> str:
+        if value == "?":
+            raise ValueError("name the unit in which values are kept, such as ug/m3")
+        return value
+
     @property
     def quantity(self) -> str:
         """What is measured: the part of the key after the first dot."""

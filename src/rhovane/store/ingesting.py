@@ -8,7 +8,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from rhovane.model import Flag, IngestOutcome, ParsedFile, RhovaneError, Series
+from rhovane.model import IngestOutcome, ParsedFile, RhovaneError, Series
 from rhovane.store.clock import from_seconds, microseconds, naive_utc, seconds_of, timestamps
 from rhovane.store.precedence import (
     NEW,
@@ -21,10 +21,9 @@ from rhovane.store.precedence import (
     settle,
 )
 from rhovane.store.reading import KNOWN_FILES, KNOWN_RULES
-from rhovane.store.session import Session
+from rhovane.store.rereading import ROW, Rereading
 
 _COLUMNS = ("series_key", "hour_start", "value", "flag", "stage", "result_time", "line")
-_ROW = "series_id, ts, value, flag, stage, result_time, line, ingest_id, confirmed_by"
 
 
 class _Delivery(NamedTuple):
@@ -37,7 +36,7 @@ class _Delivery(NamedTuple):
 _SERIES_IDS = "select key, id from series"
 
 
-class ReadingWriter(Session):
+class ReadingWriter(Rereading):
     """Writing of series and readings."""
 
     _made_known: Sequence[Series] = ()
@@ -103,19 +102,6 @@ class ReadingWriter(Session):
         self._made_known = list(series)
         return ids
 
-    def adopt_rules(self, rules: Mapping[str, str]) -> None:
-        """Take files whose settings were never remembered as read by those given, by source.
-
-        Only stores from before settings were remembered hold such files.
-        """
-        with self.transaction():
-            for table in ("ingest", "feed_file"):
-                for source, known in rules.items():
-                    self.execute(
-                        f"update {table} set rules = ? where source = ? and rules is null", [known, source]
-                    )
-        self._remembered.pop(KNOWN_RULES, None)
-
     def append_files(
         self, files: Sequence[ParsedFile], *, now: datetime, checkpoint: bool = True
     ) -> list[IngestOutcome]:
@@ -140,7 +126,7 @@ class ReadingWriter(Session):
             each other. Nothing of any file was kept.
         """
         with self.transaction():
-            known, older = self._known_contents(files)
+            known, older = self.known_contents(files)
             next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
             fresh: dict[tuple[str, str], _Delivery] = {}
             for file in files:
@@ -150,7 +136,7 @@ class ReadingWriter(Session):
             deliveries = list(fresh.values())
             counts = self._settle_and_write(deliveries, older)
             self._write_ledger(deliveries, counts, naive_utc(now))
-            self._withdraw({i: fresh[content].ingest_id for content, ids in older.items() for i in ids})
+            self.withdraw({i: fresh[content].ingest_id for content, ids in older.items() for i in ids})
             outcomes = []
             told: set[tuple[str, str]] = set()
             for file in files:
@@ -158,70 +144,28 @@ class ReadingWriter(Session):
                 if content in fresh and content not in told:
                     told.add(content)
                     number = fresh[content].ingest_id
-                    outcomes.append(_outcome(file, number, counts[number - next_id]))
+                    outcomes.append(outcome_of(file, number, counts[number - next_id]))
                 else:
                     number = known.get(content) or fresh[content].ingest_id
-                    outcomes.append(_outcome(file, number, (0, 0, len(file.value)), already_known=True))
+                    outcomes.append(outcome_of(file, number, (0, 0, len(file.value)), already_known=True))
             self._remember_files(files, outcomes, naive_utc(now))
             if checkpoint:
                 self.checkpoint_after_commit()
         return outcomes
-
-    def _known_contents(
-        self, files: Sequence[ParsedFile]
-    ) -> tuple[dict[tuple[str, str], int], dict[tuple[str, str], list[int]]]:
-        """Contents read already by the settings of today, with their ingest; and earlier ingests of the others."""
-        found = self.rows(
-            "select source, sha256, id, rules from ingest where sha256 in (select unnest(?)) order by id",
-            [[f.sha256 for f in files]],
-        )
-        wanted = {(f.source, f.sha256): f.rules for f in files}
-        known: dict[tuple[str, str], int] = {}
-        older: dict[tuple[str, str], list[int]] = {}
-        for source, sha256, number, rules in found:
-            content = (source, sha256)
-            if content not in wanted:
-                continue
-            # The settings of the latest reading count: they may have been changed and changed back.
-            if not rules or not wanted[content] or rules == wanted[content]:
-                known[content] = number
-            else:
-                known.pop(content, None)
-            older.setdefault(content, []).append(number)
-        return known, {content: ids for content, ids in older.items() if content not in known}
-
-    def _withdraw(self, replaced_by: dict[int, int]) -> None:
-        """What earlier ingests delivered and the ingests that replace them did not becomes missing."""
-        if not replaced_by:
-            return
-        staged = {"old": np.array(list(replaced_by)), "new": np.array(list(replaced_by.values()))}
-        self.execute(
-            f"insert into reading_history select {_ROW}, s.new from reading r join staged s on r.confirmed_by = s.old",
-            staged=staged,
-        )
-        self.execute(
-            f"""
-            update reading set value = null, flag = {int(Flag.MISSING)}, stage = 0, line = 0,
-                result_time = timestamp '1970-01-01', ingest_id = s.new, confirmed_by = s.new
-            from staged s where reading.confirmed_by = s.old
-            """,
-            staged=staged,
-        )
 
     def _settle_and_write(
         self, deliveries: Sequence[_Delivery], older: dict[tuple[str, str], list[int]]
     ) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""
         ids = self.remembered(_SERIES_IDS)
-        parts = [_records(delivery, ids) for delivery in deliveries]
+        parts = [delivered_records(d.file, d.ingest_id, ids) for d in deliveries]
         if not sum(map(len, parts)):
             return [(0, 0, 0)] * len(parts)
         rows = parts[0] if len(parts) == 1 else np.concatenate(parts)
         group, first = group_by_hour(rows)
-        held, held_group, row_number = self._held(rows.take(first))
+        held, held_group, row_number = self.held_readings(rows.take(first))
         if older:
-            rules = {d.file.source: d.file.rules for d in deliveries if d.file.rules}
-            held["by_rules"] = ~np.isin(held["confirmed_by"], self._ingests_by_other_rules(rules))
+            self.mark_other_rules(held, [d.file for d in deliveries])
         result = settle(rows, group, held, held_group)
         self._write_readings(result, held_group, row_number)
         counts = []
@@ -232,11 +176,7 @@ class ReadingWriter(Session):
             begin += len(part)
         return counts
 
-    def _ingests_by_other_rules(self, rules: dict[str, str]) -> list[int]:
-        found = self.rows("select id, source, rules from ingest where rules is not null")
-        return [number for number, source, known in found if source in rules and known != rules[source]]
-
-    def _held(self, hours: Records) -> tuple[Records, np.ndarray, np.ndarray]:
+    def held_readings(self, hours: Records) -> tuple[Records, np.ndarray, np.ndarray]:
         """Current readings of the given hours, the group number of each, and where it stands in the table."""
         columns = {
             "position": np.arange(len(hours)),
@@ -269,7 +209,7 @@ class ReadingWriter(Session):
         was_held[held_group] = True
         fresh = result.winner.compress(~was_held)
         if len(fresh):
-            self.execute(f"insert into reading select {_ROW} from staged", staged=_table(fresh))
+            self.execute(f"insert into reading select {ROW} from staged", staged=_table(fresh))
         changed = result.changed[held_group]
         if changed.any():
             self.execute(
@@ -282,7 +222,7 @@ class ReadingWriter(Session):
             )
         if len(result.history):
             self.execute(
-                f"insert into reading_history select {_ROW}, superseded_by from staged",
+                f"insert into reading_history select {ROW}, superseded_by from staged",
                 staged=_table(result.history) | {"superseded_by": result.superseded_by},
             )
 
@@ -368,9 +308,8 @@ class ReadingWriter(Session):
         )
 
 
-def _records(delivery: _Delivery, ids: dict[str, int]) -> Records:
-    """The readings of a file as records, in file order."""
-    file = delivery.file
+def delivered_records(file: ParsedFile, ingest_id: int, ids: Mapping[str, int]) -> Records:
+    """The readings of a file as records, in file order, for the ingest with a number."""
     n = len(file.value)
     lengths = {name: len(getattr(file, name)) for name in _COLUMNS}
     if set(lengths.values()) != {n}:
@@ -396,7 +335,7 @@ def _records(delivery: _Delivery, ids: dict[str, int]) -> Records:
     rows["line"] = file.line
     rows["by_rules"] = 1
     rows["file_rank"] = _file_rank(file)
-    rows["ingest_id"] = rows["confirmed_by"] = delivery.ingest_id
+    rows["ingest_id"] = rows["confirmed_by"] = ingest_id
     infinite = np.isinf(rows["value"])
     if infinite.any():
         raise RhovaneError(
@@ -431,7 +370,7 @@ def _span(file: ParsedFile) -> tuple[datetime, datetime] | None:
     return naive_utc(from_seconds(hours.min())), naive_utc(from_seconds(hours.max()))
 
 
-def _outcome(
+def outcome_of(
     file: ParsedFile, ingest_id: int, counts: tuple[int, int, int], *, already_known: bool = False
 ) -> IngestOutcome:
     span = _span(file)

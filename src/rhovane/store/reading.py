@@ -94,6 +94,10 @@ class ReadingReader(Session):
             found["flag"],
         )
 
+    def known_series(self) -> frozenset[str]:
+        """Keys of the series that the store knows."""
+        return frozenset(key for (key,) in self.rows("select key from series"))
+
     def changed_since(self, ingest_id: int) -> dict[str, datetime]:
         """For each series the first hour whose value or flag later ingests brought or revised.
 
