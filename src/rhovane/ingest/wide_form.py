@@ -168,9 +168,9 @@ def _file_notes(
     if absent:
         needed = [*fixed, *source.series]
         reason = missing_columns_reason(table, absent, needed, source.delimiter)
-        notes.append(RejectedRow(0, "", table.header_text, f"{reason} The other columns were read."))
+        notes.append(RejectedRow(0, "", shown(table.header_text), f"{reason} The other columns were read."))
     extra = [name for name in table.header if name and name not in source.series and name not in fixed]
     if extra:
         reason = f"Columns that are not listed under [source.series] were not read: {listed(extra)}. List them to keep them."
-        notes.append(RejectedRow(0, "", table.header_text, reason))
+        notes.append(RejectedRow(0, "", shown(table.header_text), reason))
     return notes

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import dataclasses
 import datetime as dt
 from collections import Counter
@@ -12,7 +13,7 @@ from typing import Any
 
 import numpy as np
 
-from rhovane.ingest import describe_rejections, list_files
+from rhovane.ingest import ReadParquet, describe_rejections, list_files
 from rhovane.model import FeedError, IngestOutcome, ParsedFile
 from rhovane.pipeline.context import Night, Trouble
 from rhovane.pipeline.feed_signs import Sign, by_source, find_signs
@@ -25,7 +26,7 @@ from rhovane.pipeline.ingesting import (
     source_of,
 )
 from rhovane.settings import Settings, SourceSettings
-from rhovane.store import Store, preview_files
+from rhovane.store import Store, parquet_reader, preview_files
 
 HOUR_S = 3600
 
@@ -81,7 +82,9 @@ class SourceCheck:
 
 def dry_run(settings: Settings, store: Store | None) -> list[SourceCheck]:
     """Parse every file of every source and say what is in it; nothing is written."""
-    checked = [_check_source(source, settings, store) for source in settings.source]
+    with contextlib.ExitStack() as stack:
+        reader = stack.enter_context(parquet_reader()) if store is None else store.read_parquet
+        checked = [_check_source(source, settings, reader) for source in settings.source]
     parsed = [file for _, files in checked for file in files]
     outcomes = preview_files(parsed, store)
     fresh = [file for file, outcome in zip(parsed, outcomes, strict=True) if not outcome.already_known]
@@ -114,7 +117,7 @@ def _hours_of(file: ParsedFile) -> set[tuple[str, int]]:
 
 
 def _check_source(
-    source: SourceSettings, settings: Settings, store: Store | None
+    source: SourceSettings, settings: Settings, reader: ReadParquet
 ) -> tuple[SourceCheck, list[ParsedFile]]:
     """What is in the files of a source, before the store is asked, and the files as parsed."""
     try:
@@ -128,7 +131,7 @@ def _check_source(
     first = last = None
     for file in listed:
         try:
-            parsed = parse_feed_file(settings.work_folder / file.place, source, settings, file.place, store)
+            parsed = parse_feed_file(settings.work_folder / file.place, source, settings, file.place, reader)
         except FeedError as error:
             reasons["file cannot be read"] += 1
             lines.append(str(error))

@@ -189,7 +189,8 @@ def _shift_sign(settings: Settings, key: str, shifts: list[tuple[str, Shift]], s
         key,
         "unit",
         f"from about {since} its ratio to {neighbours} is {factor:.3g} times what it was; {what} is a factor of {value:.3g}. "
-        "Check the unit that its source delivers, and declare it: units of this source.",
+        "Check the unit that its source delivers and declare it under units of this source; a source of the air that really "
+        "became weaker or stronger can look the same.",
     )
 
 

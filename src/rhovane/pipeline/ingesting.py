@@ -5,11 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator
 from pathlib import Path
 
-from rhovane.ingest import StillWritten, describe_rejections, list_files, parse_file
+from rhovane.ingest import ReadParquet, StillWritten, describe_rejections, list_files, parse_file
 from rhovane.model import FeedError, IngestOutcome, ParsedFile, RhovaneError, StoreDamaged
 from rhovane.pipeline.context import Night
 from rhovane.settings import Settings, SourceSettings
-from rhovane.store import Store, read_parquet
 
 STEP = "ingest"
 
@@ -116,7 +115,7 @@ def source_of(path: Path, settings: Settings, source_name: str | None = None) ->
 def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) -> ParsedFile | None:
     """One feed file as readings and rejected rows; None, with the reason noted, when it cannot be opened."""
     try:
-        one = parse_feed_file(path, source, night.settings, shown, night.store)
+        one = parse_feed_file(path, source, night.settings, shown, night.store.read_parquet)
     except StillWritten:
         night.left.append(shown)
         return None
@@ -159,10 +158,9 @@ def _append_or_note(night: Night, files: list[ParsedFile]) -> list[IngestOutcome
 
 
 def parse_feed_file(
-    path: Path, source: SourceSettings, settings: Settings, shown: str, store: Store | None
+    path: Path, source: SourceSettings, settings: Settings, shown: str, reader: ReadParquet
 ) -> ParsedFile:
     """One feed file as readings and rejected rows, known to the ledger by the place ``shown``."""
-    reader = read_parquet if store is None else store.read_parquet
     return parse_file(
         path,
         source,

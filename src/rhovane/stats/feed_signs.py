@@ -19,7 +19,7 @@ FLAT_HOURS = (
 EQUAL_SHARE = 0.98  # of the joint hours in which two series must be equal to count as one feed
 LEAST_JOINT = 48  # joint hours below which two series are not compared
 LEAST_DISTINCT = 6  # distinct values below which equality says nothing
-FAR_OUT = 3.0  # spans between the 5th and 95th percentile, beyond which a repeated value is no reading
+FAR_OUT = 3.0  # spans of the others, by which a repeated value must stand apart to be no reading
 SLIP_MARGIN = 0.15  # in rank correlation, by which the other lag must win in the block and lose before it
 LEAST_RELATION = 0.3  # rank correlation that a neighbour must reach for a lag to mean anything
 LEAST_DAYS = 5  # days with a ratio, in the block and before it
@@ -64,27 +64,30 @@ def repeated_outliers(values: Floats) -> list[tuple[float, int]]:
 
     Notes
     -----
-    A value counts when it comes three times or more, or is written with nines only (-99, -999.9, 9999) and
-    comes twice, and lies more than ``FAR_OUT`` spans (5th to 95th percentile of the other values) from them.
+    A value counts when it comes three times or more and lies ``FAR_OUT`` spans away from every other value; or
+    is written with nines only (-99, -999.9, 9999), comes twice, and lies one span away. The span is that from the
+    0.5th to the 99.5th percentile of the values that do not stand apart.
     """
     known = values[np.isfinite(values)]
-    if len(known) <= LEAST_DISTINCT:
+    distinct, counts = np.unique(known, return_counts=True)
+    if len(distinct) <= LEAST_DISTINCT:
         return []
-    lower, upper = np.percentile(known, [25, 75])
-    # Nothing nearer than this can be far out of the others; few values are looked at closely.
-    near = (known >= lower - (upper - lower)) & (known <= upper + (upper - lower))
-    distinct, counts = np.unique(known[~near], return_counts=True)
+    gap = np.diff(distinct)
+    below, above = np.append(np.inf, gap), np.append(gap, np.inf)
+    alone = np.minimum(below, above)
     found: list[tuple[float, int]] = []
-    for value, count in zip(distinct.tolist(), counts.tolist(), strict=True):
-        if count < (2 if _nines(value) else 3):
-            continue
-        others = known[known != value]
-        if len(others) < LEAST_DISTINCT:
-            continue
-        low, high = np.percentile(others, [5, 95])
-        reach = FAR_OUT * max(high - low, 1e-9)
-        if value < low - reach or value > high + reach:
-            found.append((value, count))
+    # A code stands apart: nothing nearer to its neighbour than a tenth of the middle half can be one.
+    lower, upper = np.percentile(known, [25, 75])
+    candidate = (counts >= 2) & (alone > 0.1 * (upper - lower))
+    others = known[~np.isin(known, distinct[candidate])]
+    if len(others) <= LEAST_DISTINCT:
+        return []
+    low, high = np.percentile(others, [0.5, 99.5])
+    for i in np.flatnonzero(candidate).tolist():
+        value = float(distinct[i])
+        far = 1.0 if _nines(value) else FAR_OUT
+        if (counts[i] >= 3 or _nines(value)) and alone[i] > far * max(high - low, 1e-9):
+            found.append((value, int(counts[i])))
     return sorted(found, key=lambda one: -one[1])
 
 

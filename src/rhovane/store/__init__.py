@@ -4,7 +4,7 @@ from rhovane.store.alert_log import NewAlert, NewAlertEvent, StoredAlert, Stored
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
 from rhovane.store.previewing import preview_files
-from rhovane.store.reading import Readings, read_parquet
+from rhovane.store.reading import Readings, parquet_reader, read_parquet
 from rhovane.store.results import EVIDENCE_COLUMNS, LATER_COLUMNS, WINDOW_COLUMNS
 from rhovane.store.store import Store
 
@@ -20,6 +20,7 @@ __all__ = [
     "StoredAlert",
     "StoredAlertEvent",
     "open_store",
+    "parquet_reader",
     "preview_files",
     "read_parquet",
 ]

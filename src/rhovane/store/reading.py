@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -211,8 +212,15 @@ def read_parquet(path: Path) -> dict[str, np.ndarray]:
     FeedError
         There is no such file, or it is not a Parquet file.
     """
+    with parquet_reader() as read:
+        return read(path)
+
+
+@contextmanager
+def parquet_reader() -> Iterator[Callable[[Path], dict[str, np.ndarray]]]:
+    """A reader as :func:`read_parquet` for many files: the engine starts once."""
     with duckdb.connect(":memory:", config={"threads": 1}) as connection:
-        return _parquet_columns(connection, path)
+        yield lambda path: _parquet_columns(connection.cursor(), path)
 
 
 def _parquet_columns(connection: duckdb.DuckDBPyConnection, path: Path) -> dict[str, np.ndarray]:
