@@ -84,6 +84,8 @@ class Distinct:
 
 def distinct(cells: Sequence[Cell]) -> Distinct:
     """The distinct cells of a column, in order of first appearance, and where they stand."""
+    if hasattr(cells, "index") and hasattr(cells, "cells"):  # a column that is coded already
+        return Distinct(cells.cells, cells.index)
     position = {cell: i for i, cell in enumerate(dict.fromkeys(cells))}
     index = np.fromiter(map(position.__getitem__, cells), dtype=np.int64, count=len(cells))
     return Distinct(list(position), index)
@@ -92,7 +94,16 @@ def distinct(cells: Sequence[Cell]) -> Distinct:
 def combined(first: Distinct, second: Distinct) -> Distinct:
     """The distinct tuples of two columns of equal length."""
     width = max(len(second.cells), 1)
-    pairs, index = np.unique(first.index * width + second.index, return_inverse=True)
+    both = first.index * width + second.index
+    size = len(first.cells) * width
+    if size <= len(both):
+        # Few combinations: marking those that occur is ten times as fast as sorting all rows.
+        occurs = np.zeros(size, dtype=bool)
+        occurs[both] = True
+        pairs = np.flatnonzero(occurs)
+        index = (np.cumsum(occurs) - 1)[both]
+    else:
+        pairs, index = np.unique(both, return_inverse=True)
     cells = [(first.cells[p // width], second.cells[p % width]) for p in pairs.tolist()]
     return Distinct(cells, index)
 

@@ -172,7 +172,7 @@ def _readings(
 ) -> Readings:
     read = read_long if source.form.startswith("long") else read_wide
     readings = read(table, source, series, modified_s=whole_seconds(modified))
-    if not table.line and not table.rejected:
+    if not len(table.line) and not table.rejected:
         raise FeedError("The file holds a header and no rows. Check whether the source delivers.")
     return readings
 

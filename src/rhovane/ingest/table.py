@@ -5,6 +5,9 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
+import numpy as np
+from numpy.typing import NDArray
+
 from rhovane.ingest.cells import Cell, quoted, shown
 from rhovane.model import FeedError, RejectedRow
 
@@ -22,8 +25,8 @@ class Table:
     """
 
     header: tuple[str, ...]
-    line: Sequence[int]
-    column: Callable[[str], list[Cell]]
+    line: Sequence[int] | NDArray[np.int64]
+    column: Callable[[str], Sequence[Cell]]
     row_text: Callable[[int], str]
     rejected: tuple[RejectedRow, ...] = ()
     header_text: str = ""

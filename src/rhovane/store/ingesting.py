@@ -326,7 +326,7 @@ def delivered_records(file: ParsedFile, ingest_id: int, ids: Mapping[str, int]) 
             "Nothing was kept."
         )
     rows = np.empty(n, READING)
-    rows["series_id"] = np.fromiter((ids[key] for key in file.series_key), np.int32, n)
+    rows["series_id"] = np.fromiter(map(ids.__getitem__, file.series_key), np.int32, n)
     rows["ts"] = file.hour_start
     rows["value"] = file.value
     rows["flag"] = file.flag
