@@ -143,10 +143,11 @@ def test_confirmation_by_a_later_stage_changes_no_value_but_resists_an_earlier_s
 
 
 def test_outranks_compares_one_property_after_the_other_and_puts_missing_last():
-    def one(stage=1, result_time=0, file_rank=0, line=2, flag=1, value=0.0):
-        return np.array([(1, 0, value, flag, stage, result_time, file_rank, line, 1, 1)], READING)
+    def one(stage=1, result_time=0, file_rank=0, line=2, flag=1, value=0.0, by_rules=1):
+        return np.array([(1, 0, value, flag, stage, by_rules, result_time, file_rank, line, 1, 1)], READING)
 
     ascending = [
+        one(by_rules=0, stage=2, result_time=9),
         one(value=np.nan),
         one(value=-1.0),
         one(value=2.0),

@@ -26,6 +26,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.ingest.cells import Cell, Fault, distinct, is_empty, judged, quoted
+from rhovane.ingest.plain_labels import plain_labels
 from rhovane.settings import SourceSettings, parse_offset
 
 EPOCH = datetime(1970, 1, 1)
@@ -103,6 +104,12 @@ def read_labels(cells: Sequence[Cell], source: SourceSettings) -> Instants:
         return found[0] + day_s, found[1] + day_s
 
     column = distinct(cells)
+    if not source.clock.startswith("civil "):
+        wall = plain_labels(column.cells, source.time_format)
+        if wall is not None and not (wall % step_s).any():
+            offset_s = 0 if source.clock == "UTC" else round(parse_offset(source.clock).total_seconds())
+            instant = (wall - offset_s)[column.index]
+            return Instants(instant, instant, [])
     answers, faults = judged(column, verdict, (0, 0))
     both = np.array(answers, dtype=np.int64).reshape(-1, 2)[column.index]
     return Instants(both[:, 0], both[:, 1], faults)

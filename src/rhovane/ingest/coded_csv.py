@@ -105,8 +105,9 @@ def code_rows(body: bytes, *, delimiter: str, width: int, encoding: str) -> Code
 @njit(cache=True, nogil=True)
 def _code_cells(data, delimiter, table, first, length, n_distinct, codes, begin, good):  # type: ignore[no-untyped-def]
     """Fill the outputs of :func:`code_rows`; False when a column has too many distinct cells."""
-    width, size = table.shape
-    mask = size - 1
+    width = table.shape[0]
+    mask = table.shape[1] - 1
+    last = np.full(width, -1, dtype=np.int64)
     n = len(data)
     at = 0
     for row in range(len(begin)):
@@ -121,6 +122,20 @@ def _code_cells(data, delimiter, table, first, length, n_distinct, codes, begin,
         if fields == width:
             cell = at
             for j in range(width):
+                # Most columns of most rows hold what they held in the row before.
+                code = last[j]
+                if code >= 0:
+                    size = length[j, code]
+                    stop = cell + size
+                    if stop == end if j == width - 1 else stop < end and data[stop] == delimiter:
+                        other = first[j, code]
+                        k = 0
+                        while k < size and data[other + k] == data[cell + k]:
+                            k += 1
+                        if k == size:
+                            codes[j, row] = code
+                            cell = stop + 1
+                            continue
                 h = np.uint32(FNV_OFFSET)
                 stop = cell
                 while stop < end and data[stop] != delimiter:
@@ -149,6 +164,7 @@ def _code_cells(data, delimiter, table, first, length, n_distinct, codes, begin,
                     length[j, code] = stop - cell
                     n_distinct[j] += 1
                 codes[j, row] = code
+                last[j] = code
                 cell = stop + 1
         at = end + 1
     return True

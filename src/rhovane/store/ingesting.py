@@ -163,7 +163,9 @@ class ReadingWriter(Rereading):
             return [(0, 0, 0)] * len(parts)
         rows = parts[0] if len(parts) == 1 else np.concatenate(parts)
         group, first = group_by_hour(rows)
-        held, held_group, row_number = self.held_readings(rows.take(first))
+        held, held_group, row_number = self.held_readings(
+            rows["series_id"].take(first), rows["ts"].take(first)
+        )
         if older:
             self.mark_other_rules(held, [d.file for d in deliveries])
         result = settle(rows, group, held, held_group)
@@ -176,14 +178,14 @@ class ReadingWriter(Rereading):
             begin += len(part)
         return counts
 
-    def held_readings(self, hours: Records) -> tuple[Records, np.ndarray, np.ndarray]:
+    def held_readings(self, series_id: np.ndarray, ts: np.ndarray) -> tuple[Records, np.ndarray, np.ndarray]:
         """Current readings of the given hours, the group number of each, and where it stands in the table."""
         columns = {
-            "position": np.arange(len(hours)),
-            "series_id": hours["series_id"],
-            "ts": timestamps(hours["ts"]),
+            "position": np.arange(len(ts)),
+            "series_id": series_id,
+            "ts": timestamps(ts),
         }
-        span = [from_seconds(hours["ts"].min()), from_seconds(hours["ts"].max())]
+        span = [from_seconds(ts.min()), from_seconds(ts.max())]
         found = self.columns(
             """
             select w.position, r.rowid as row_number, r.series_id, r.ts, r.value, r.flag, r.stage,
@@ -207,7 +209,7 @@ class ReadingWriter(Rereading):
     def _write_readings(self, result: Settlement, held_group: np.ndarray, row_number: np.ndarray) -> None:
         was_held = np.zeros(len(result.winner), np.bool_)
         was_held[held_group] = True
-        fresh = result.winner.compress(~was_held)
+        fresh = result.winner.compress(~was_held) if len(held_group) else result.winner
         if len(fresh):
             self.execute(f"insert into reading select {ROW} from staged", staged=_table(fresh))
         changed = result.changed[held_group]

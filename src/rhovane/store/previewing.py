@@ -44,7 +44,7 @@ def preview_files(files: Sequence[ParsedFile], store: Store | None) -> list[Inge
         group, first = group_by_hour(rows)
         held, held_group = np.empty(0, READING), np.empty(0, np.int64)
         if store is not None:
-            held, held_group, _ = store.held_readings(rows.take(first))
+            held, held_group, _ = store.held_readings(rows["series_id"].take(first), rows["ts"].take(first))
             store.mark_other_rules(held, list(first_of.values()))
         verdicts = settle(rows, group, held, held_group).verdict
         ends = np.cumsum([len(part) for part in parts])[:-1]
