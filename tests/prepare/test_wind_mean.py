@@ -6,7 +6,7 @@ from rhovane.model import Series
 from rhovane.prepare import to_grid
 
 STEPS = 6  # ten-minute steps in an hour
-DIRECTION = Series("A.wind_direction", "deg", "circular", 10, "", "A.wind_speed")
+DIRECTION = Series("A.wind_direction", "deg", "circular", 10, speed="A.wind_speed")
 SPEED = Series("A.wind_speed", "m/s", "linear", 10)
 
 

@@ -14,6 +14,7 @@ import numpy as np
 from reference.naive_store import NaiveDelivery, NaiveFile
 from rhovane.model import ParsedFile, RejectedRow, Series
 from rhovane.store import open_store
+from rhovane.store.exports import STATES_AS_OF
 
 NOW = dt.datetime(2024, 5, 1, 3, 40, tzinfo=dt.UTC)
 LONG_AGO, FAR_AHEAD = dt.datetime(1971, 1, 1), dt.datetime(2100, 1, 1)
@@ -125,21 +126,26 @@ def seen(store, upto: int | None = None) -> dict[tuple[str, int], tuple]:
     return content
 
 
+def states_as_of(store, upto):
+    """(series, hour) -> (value, flag, stage, result time) as after an ingest."""
+    rows = store.rows(
+        f"""
+        select s.key, epoch(r.ts)::bigint, r.value, r.flag, r.stage, epoch(r.result_time)::bigint
+        from ({STATES_AS_OF}) r join series s on s.id = r.series_id
+        """,
+        {"upto": upto},
+    )
+    content = {(key, ts): tuple(rest) for key, ts, *rest in rows}
+    assert len(content) == len(rows), "an hour has two states"
+    return content
+
+
 def value_and_flag(content):
     """The part of a content that a past night saw."""
     return {key: (value, flag) for key, (value, flag, *_) in content.items()}
 
 
 # -- what other processes do -------------------------------------------------------------------------
-
-
-def ingest_one_by_one(path: Path, files, ready) -> None:
-    """Take in files, each in a transaction of its own."""
-    with open_store(path) as store:
-        store.ensure_series(SERIES)
-        ready.set()
-        for file in files:
-            store.append_files([file], now=NOW)
 
 
 def ingest_and_vanish(path: Path, files) -> None:

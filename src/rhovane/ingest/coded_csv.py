@@ -88,6 +88,7 @@ def code_rows(body: bytes, *, delimiter: str, width: int, encoding: str) -> Code
     begin = np.empty(n_lines, dtype=np.int64)
     good = np.empty(n_lines, dtype=np.bool_)
     for most in MOST_DISTINCT:
+        most = min(most, 1 << n_lines.bit_length())  # a short file of many columns needs little room
         first = np.zeros((width, most), dtype=np.int64)
         length = np.zeros((width, most), dtype=np.int64)
         n_distinct = np.zeros(width, dtype=np.int64)

@@ -1,6 +1,8 @@
 """Configuration: one TOML file → frozen, checked settings."""
 
-from rhovane.settings.load import load_settings, settings_from
+from rhovane.settings.calendar import CalendarEntry
+from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
+from rhovane.settings.load import load_settings, settings_from, settings_of_text
 from rhovane.settings.schema import (
     AlertSettings,
     CorrelationSettings,
@@ -8,19 +10,28 @@ from rhovane.settings.schema import (
     SectorMask,
     SeriesSettings,
     Settings,
+    hash_of,
 )
+from rhovane.settings.site_log import load_site_log, site_log_entry
 from rhovane.settings.source_schema import ColumnSettings, SourceSettings, parse_offset
 
 __all__ = [
     "AlertSettings",
+    "CalendarEntry",
+    "CheckSettings",
     "ColumnSettings",
     "CorrelationSettings",
+    "DataNoteSettings",
     "PairSettings",
     "SectorMask",
     "SeriesSettings",
     "Settings",
     "SourceSettings",
+    "hash_of",
     "load_settings",
+    "load_site_log",
     "parse_offset",
     "settings_from",
+    "settings_of_text",
+    "site_log_entry",
 ]

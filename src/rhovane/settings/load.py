@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import re
 import tomllib
 from collections import Counter
@@ -11,6 +12,7 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 
 from rhovane.model import SettingsError
+from rhovane.settings.calendar import CalendarEntry, load_calendar
 from rhovane.settings.schema import Settings, describe
 
 _HEADER = re.compile(r"\s*(\[{1,2})\s*([\w.-]+)\s*\]{1,2}")
@@ -18,12 +20,12 @@ _KEY = re.compile(r'\s*("[^"]*"|[\w-]+)\s*=')
 
 
 def load_settings(path: Path) -> Settings:
-    """Read the settings file.
+    """Read the settings file and the calendar it names.
 
     Raises
     ------
     SettingsError
-        The file is missing, is not TOML, or holds mistakes; the message lists all of them.
+        A file is missing, is not TOML, or holds mistakes; the message lists all of them.
     """
     try:
         text = path.read_bytes().decode("utf-8")
@@ -38,11 +40,18 @@ def load_settings(path: Path) -> Settings:
         raise SettingsError(
             f"{path}: not valid TOML: {error}. Nothing was run. Edit the file and retry."
         ) from error
-    return settings_from(raw, path, text)
+    settings = settings_from(raw, path, text)
+    if settings.calendar.file:
+        place = path.parent / settings.calendar.file
+        settings = settings.with_calendar(load_calendar(place, settings.series_by_key()))
+    return settings
 
 
 def settings_from(raw: dict[str, Any], path: Path, text: str = "") -> Settings:
-    """Settings from a parsed TOML table; ``path`` is where it came from, ``text`` tells the lines of mistakes."""
+    """Settings from a parsed TOML table, without calendar entries.
+
+    ``path`` is where it came from, ``text`` tells the lines of mistakes.
+    """
     if "origin" in raw:
         raise _refusal(path, [("origin", "not a setting")])
     try:
@@ -53,6 +62,12 @@ def settings_from(raw: dict[str, Any], path: Path, text: str = "") -> Settings:
     if found:
         raise _refusal(path, found)
     return settings
+
+
+def settings_of_text(text: str, path: Path) -> Settings:
+    """Settings and calendar from the text that ``Settings.text`` made of them."""
+    raw, calendar = json.loads(text)
+    return settings_from(raw, path).with_calendar([CalendarEntry.model_validate(entry) for entry in calendar])
 
 
 def _refusal(path: Path, mistakes: list[tuple[str, str]]) -> SettingsError:

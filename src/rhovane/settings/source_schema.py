@@ -9,18 +9,13 @@ import re
 from functools import cached_property
 from typing import Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from rhovane.model import Flag, Stage
+from rhovane.settings.section import Section
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60, "1d": 1440}
-
-
-class Section(BaseModel):
-    """A frozen part of the settings; an unknown key is a mistake, never ignored."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, str_strip_whitespace=False)
 
 
 class ColumnSettings(Section):

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from rhovane.model import IngestOutcome, ParsedFile
-from rhovane.store.ingesting import delivered_records, outcome_of
+from rhovane.store.deliveries import Delivery, outcome_of, records_of
 from rhovane.store.precedence import NEW, READING, REVISED, UNCHANGED, group_by_hour, settle
 from rhovane.store.store import Store
 
@@ -37,7 +37,7 @@ def preview_files(files: Sequence[ParsedFile], store: Store | None) -> list[Inge
         if content not in known and content not in fresh:
             fresh[content] = len(fresh)
     first_of = {content: next(f for f in files if (f.source, f.sha256) == content) for content in fresh}
-    parts = [delivered_records(file, last + 1 + i, ids) for i, file in enumerate(first_of.values())]
+    parts = [records_of(Delivery(file, last + 1 + i), ids) for i, file in enumerate(first_of.values())]
     counts = [(0, 0, 0)] * len(parts)
     if sum(map(len, parts)):
         rows = np.concatenate(parts)
