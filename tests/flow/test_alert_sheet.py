@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import datetime as dt
+import os
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -41,6 +42,10 @@ def network(tmp_path_factory: pytest.TempPathFactory) -> Settings:
     def deliver(name: str, first: int, last: int, shift: float = 0.0) -> None:
         text = "".join(row(h, "A", x[h]) + row(h, "B", y[h] + shift) for h in range(24 * first, 24 * last))
         (folder / "feed" / name).write_text(HEADER + text, encoding="utf-8")
+        written = (
+            START.timestamp() + 86_400 * last
+        )  # the later file revises the earlier, however quick the night
+        os.utime(folder / "feed" / name, (written, written))
 
     with open_store(settings.store_path) as store:
         deliver("a.csv", 0, 360)

@@ -264,6 +264,29 @@ def test_a_series_that_falls_silent_is_noted_shown_and_counted(tmp_path: Path):
     assert only(shown, NoteKind.NOT_COMPUTABLE, "A.NO2~B.NO2").is_open
 
 
+def test_daily_readings_are_not_taken_for_hourly_ones_with_gaps(tmp_path: Path):
+    daily = (
+        '[[source]]\nname = "filters"\nform = "wide csv"\nfiles = "filters/*.csv"\nclock = "UTC"\nlabel = "start"\n'
+        'step = "1d"\ntime_format = "%Y-%m-%d"\ncolumns = { time = "day" }\nseries = { e = "E.NO2" }\n'
+        '[[series]]\nkey = "E.NO2"\nunit = "ug/m3"\n'
+    )
+    settings = network_in(tmp_path, SETTINGS + daily)
+    (tmp_path / "feed" / "a.csv").write_text(feed_lines(readings(), range(24 * 40)), encoding="utf-8")
+    (tmp_path / "filters").mkdir()
+    days = [d for d in range(40) if d not in (20, 21)]
+    lines = [f"{FIRST + d * DAY},{20 + d % 3 + d / 10}\n" for d in days]
+    (tmp_path / "filters" / "e.csv").write_text("day,e\n" + "".join(lines), encoding="utf-8")
+    last = FIRST + 39 * DAY
+    with open_store(settings.store_path) as store:
+        assert run_night(settings, store, as_of=last, now=moment(last)).outcome == "complete"
+        found = [n for n in store.data_notes() if n.subject == "E.NO2"]
+    assert {n.kind for n in found} == {NoteKind.GAP, NoteKind.LOW_COVERAGE}
+    assert only(found, NoteKind.GAP, "E.NO2").begin == START + 19 * DAY + dt.timedelta(hours=1)
+    low = only(found, NoteKind.LOW_COVERAGE, "E.NO2")
+    assert low.facts["share"] == pytest.approx(5 / 7, abs=1e-3)
+    assert low.end is not None
+
+
 def test_own_checks_leave_hours_out_of_windows_and_say_so(tmp_path: Path):
     check = '[[check]]\napplies_to = "A.NO2"\nhigh = 500.0\nspike_suspect = 600.0\n'
     values = readings()

@@ -282,3 +282,28 @@ def test_patterns_of_plain_numbers_read_what_strptime_reads():
                 expected = None
             found = read(text)
             assert (found[0] if found else None) == expected, (pattern, text)
+
+
+@pytest.mark.parametrize("label", ["start", "end"])
+def test_days_of_the_civil_clock_have_23_24_and_25_hours(parse, label):
+    shift = 1 if label == "end" else 0
+    dates = [f"2024-{m:02d}-{d + shift:02d}" for m, d in ((3, 30), (3, 31), (10, 26), (10, 27))]
+    dates = ["2024-04-01" if d == "2024-03-32" else d for d in dates]
+    parsed = parse(long_text(dates), long_source(clock=CIVIL, label=label, step="1d", time_format="%Y-%m-%d"))
+    assert parsed.rejected == ()
+    assert parsed.hour_start.tolist() == [
+        SPRING - 25 * HOUR,
+        SPRING - HOUR,
+        AUTUMN - 26 * HOUR,
+        AUTUMN - 2 * HOUR,
+    ]
+
+
+def test_a_label_inside_a_day_is_not_on_the_step_of_a_day(parse):
+    parsed = parse(long_text(["2024-03-01 00:00", "2024-03-02 06:00"]), long_source(step="1d"))
+    assert places(parsed) == [(3, "time", "2024-03-02 06:00")]
+
+
+def test_only_days_may_be_labelled_without_an_hour():
+    with pytest.raises(ValueError, match="only a step of 1d needs no hour"):
+        long_source(time_format="%Y-%m-%d")

@@ -214,3 +214,45 @@ def test_a_picture_is_no_feed_file(parse):
     assert "The header" in unreadable(
         parse(b"\x89PNG\r\n\x1a\n\x00\x00\x00\rIHDR\x00\x00\x01" * 30, long_source())
     )
+
+
+def test_preamble_comments_and_two_header_rows_keep_their_line_numbers(parse):
+    text = (
+        'Network of 1901; "unclosed\n\nwritten by hand\n'
+        "# units below\ntime,no2,o3\n,ug/m3,ug/m3\n# first day\n2024-03-01 00:00,1,2\n\n2024-03-01 01:00,x,4\n# end\n"
+    )
+    source = wide_source(
+        preamble_lines=3, comment="#", header_rows=2, series={"no2 ug/m3": "KEL.NO2", "o3 ug/m3": "KEL.O3"}
+    )
+    parsed = parse(text, source)
+    assert parsed.value.tolist() == [1, 2, 4]
+    assert places(parsed) == [(10, "no2 ug/m3", "x")]
+    assert parsed.line.tolist() == [8, 8, 10]
+
+
+def test_a_file_without_a_header_has_numbered_columns(parse):
+    source = long_source(header_rows=0, columns={"time": "1", "station": "2", "quantity": "3", "value": "4"})
+    parsed = parse("2024-03-01 00:00,KEL,NO2,1\n2024-03-01 01:00,KEL,NO2\n", source)
+    assert parsed.value.tolist() == [1]
+    assert [row.line for row in parsed.rejected] == [2]
+
+
+def test_header_rows_of_different_width_are_refused(parse):
+    assert "different numbers of columns (3, 2)" in only_reason(
+        parse("time,no2,o3\n,u\n", wide_source(header_rows=2))
+    )
+    assert "1 lines, but 3 name the columns" in only_reason(parse("time,no2\n", wide_source(header_rows=3)))
+
+
+def test_comments_that_were_not_declared_are_rejected_and_a_repeated_header_row_is_told(parse):
+    text = "time,no2,o3,temp\n# note\n2024-03-01 00:00,1,2,3\n"
+    assert [row.line for row in parse(text, wide_source()).rejected] == [2]
+    twice = "time,no2\nx,u\n2024-03-01 00:00,1\nx,u\n"
+    parsed = parse(twice, wide_source(header_rows=2, columns={"time": "time x"}, series={"no2 u": "KEL.NO2"}))
+    assert "repeats the header" in only_reason(parsed)
+
+
+def test_what_the_program_exports_with_its_cautions_can_be_read_back(parse):
+    text = "# Cautions: these lines\n# begin with a hash\ntime,station,quantity,value\n2024-03-01 00:00,KEL,NO2,1\n"
+    assert parse(text, long_source(comment="#")).value.tolist() == [1]
+    assert "lacks" in only_reason(parse(text, long_source()))

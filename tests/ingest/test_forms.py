@@ -9,7 +9,7 @@ import pandas as pd
 import pytest
 
 from ingest.small_network import NETWORK, WRITTEN, long_source, only_reason, places, read_parquet, wide_source
-from rhovane.ingest import parse_file
+from rhovane.ingest import StillWritten, parse_file
 from rhovane.model import FeedError, Flag
 
 HEADER = "time,station,quantity,value\n"
@@ -301,8 +301,8 @@ def test_a_parquet_file_that_changes_while_it_is_read_is_refused(parse_columns):
         path.write_bytes(b"PAR1 something else PAR1")
         return columns
 
-    parsed = parse_columns(long_frame(), long_source(form="long parquet"), reader)
-    assert "changed while it was read" in only_reason(parsed)
+    with pytest.raises(StillWritten, match="changed while it was read"):
+        parse_columns(long_frame(), long_source(form="long parquet"), reader)
 
 
 def test_columns_of_unequal_length_are_refused(parse_columns):

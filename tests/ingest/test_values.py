@@ -57,7 +57,7 @@ def test_decimal_comma_inside_quotes_with_comma_delimiter(parse):
     ("text", "says"),
     [
         ("n/a", 'list "n/a" under missing'),
-        ("< 0.5", 'list "< 0.5" under missing'),
+        ("< 0.5", 'below_limit = "half"'),
         ("12.5*", "is not a number"),
         ("1_000", "is not a number"),
         ("1 000", "is not a number"),

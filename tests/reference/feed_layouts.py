@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import json
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta, timezone
 from zoneinfo import ZoneInfo
@@ -72,3 +73,58 @@ def _write(rows: list[list[str]], layout: Layout) -> bytes:
     if not layout.final_line_end:
         text = text.removesuffix(layout.line_end)
     return text.encode(layout.encoding)
+
+
+SENSORTHINGS_SHAPES = ("page", "pages", "bare", "datastreams", "things", "data arrays")
+
+
+def write_sensorthings(
+    readings: list[tuple[tuple[str, str], int, float | None]],
+    shape: str,
+    *,
+    label: str = "start",
+    interval: bool = True,
+    step_minutes: int = 60,
+) -> bytes:
+    """Readings ((Datastream id, name), start in s UTC, value or None) as SensorThings 1.1 JSON of a shape."""
+
+    def iso(instant: int) -> str:
+        return datetime.fromtimestamp(instant, UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
+
+    def phenomenon(start: int) -> str:
+        end = start + 60 * step_minutes
+        if interval:
+            return f"{iso(start)}/{iso(end)}"
+        return iso(end if label == "end" else start)
+
+    def stream(one: tuple[str, str]) -> dict:
+        unit = {"name": "microgram per cubic metre", "symbol": "µg/m3"}
+        return {"@iot.id": one[0], "name": one[1], "unitOfMeasurement": unit}
+
+    def body(start: int, value: float | None) -> dict:
+        return {"phenomenonTime": phenomenon(start), "resultTime": iso(start + 7200), "result": value}
+
+    whole = [body(t, v) | {"Datastream": stream(s)} for s, t, v in readings]
+    streams = dict.fromkeys(s for s, _, _ in readings)
+    expanded = [
+        stream(s) | {"Observations": [body(t, v) for s2, t, v in readings if s2 == s]} for s in streams
+    ]
+    names = ["result", "phenomenonTime", "resultTime"]
+    arrays = [
+        {
+            "Datastream": stream(s),
+            "components": names,
+            "dataArray": [[o[n] for n in names] for o in one["Observations"]],
+        }
+        for s, one in zip(streams, expanded, strict=True)
+    ]
+    half = len(whole) // 2
+    documents = {
+        "page": {"value": whole},
+        "pages": [{"value": whole[:half], "@iot.nextLink": "http://x/?$skip=9"}, {"value": whole[half:]}],
+        "bare": whole,
+        "datastreams": {"value": expanded},
+        "things": {"value": [{"name": "KEL", "Datastreams": expanded}]},
+        "data arrays": arrays,
+    }
+    return json.dumps(documents[shape], ensure_ascii=False).encode()

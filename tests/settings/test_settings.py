@@ -54,7 +54,7 @@ def test_plain_settings_are_accepted_and_defaults_filled_in():
     assert settings.correlation.window_hours == 672
     assert settings.alerts.false_alarms_per_year == 4
     assert settings.pair[0].key == "A.NO2~B.NO2"
-    assert settings.accepted_flags() == {Flag.PASS, Flag.NOT_EVALUATED}
+    assert settings.accepted_flags() == {Flag.PASS, Flag.NOT_EVALUATED, Flag.BELOW_LIMIT}
 
 
 def test_an_unknown_key_is_refused_and_the_known_ones_are_named():

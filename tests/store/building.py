@@ -14,6 +14,7 @@ import numpy as np
 from reference.naive_store import NaiveDelivery, NaiveFile
 from rhovane.model import ParsedFile, RejectedRow, Series
 from rhovane.store import open_store
+from rhovane.store.exports import STATES_AS_OF
 
 NOW = dt.datetime(2024, 5, 1, 3, 40, tzinfo=dt.UTC)
 LONG_AGO, FAR_AHEAD = dt.datetime(1971, 1, 1), dt.datetime(2100, 1, 1)
@@ -122,6 +123,20 @@ def seen(store, upto: int | None = None) -> dict[tuple[str, int], tuple]:
         for p, ts, v, f in zip(r.position, r.ts, r.value, r.flag, strict=True)
     }
     assert len(content) == len(r), "an hour was read twice"
+    return content
+
+
+def states_as_of(store, upto):
+    """(series, hour) -> (value, flag, stage, result time) as after an ingest."""
+    rows = store.rows(
+        f"""
+        select s.key, epoch(r.ts)::bigint, r.value, r.flag, r.stage, epoch(r.result_time)::bigint
+        from ({STATES_AS_OF}) r join series s on s.id = r.series_id
+        """,
+        {"upto": upto},
+    )
+    content = {(key, ts): tuple(rest) for key, ts, *rest in rows}
+    assert len(content) == len(rows), "an hour has two states"
     return content
 
 

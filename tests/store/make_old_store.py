@@ -11,6 +11,7 @@ an earlier step, from the rows that its tables would have held.
 from __future__ import annotations
 
 import argparse
+import dataclasses
 import datetime as dt
 import tempfile
 from pathlib import Path
@@ -24,6 +25,7 @@ from rhovane.store.migrations import latest_known, migrate
 from store.building import KEYS, NOW, SERIES, parsed_file, random_files
 
 STORES = Path(__file__).parent / "stores"
+READ_AGAIN_SINCE = 9  # step from which on files are read again by other settings
 SAMPLES = {
     **dict.fromkeys(("TINYINT", "SMALLINT", "INTEGER", "BIGINT", "UBIGINT", "DOUBLE", "BOOLEAN"), 1),
     "VARCHAR": "x",
@@ -33,7 +35,7 @@ SAMPLES = {
 }
 
 
-def fill(store: Store) -> None:
+def fill(store: Store, step: int) -> None:
     """Some rows in every table: by the program where it writes them, samples in tables that are still unused."""
     store.ensure_series([*SERIES, Series("MILLBRIDGE.rain", "mm", "accumulated", label="tipping bucket")])
     store.keep_segments([Series(KEYS[0], "ug/m3", segments=(Segment(NOW.date(), "new inlet"),))], now=NOW)
@@ -49,16 +51,21 @@ def fill(store: Store) -> None:
     )
     for file in (*files, *stages, broken):
         store.append_files([file], now=NOW)
-    for step in range(2):
-        moment = NOW + dt.timedelta(days=step)
+    if step >= READ_AGAIN_SINCE:
+        rows = [{"series": KEYS[1], "hour": 60 + hour, "value": 1.0} for hour in range(3)]
+        before, now = parsed_file(rows, name="feed/again.csv"), parsed_file(rows[:2], name="feed/again.csv")
+        store.append_files([dataclasses.replace(before, rules="a")], now=NOW)
+        store.append_files([dataclasses.replace(now, sha256=before.sha256, rules="b")], now=NOW)
+    for turn in range(2):
+        moment = NOW + dt.timedelta(days=turn)
         night = store.begin_night(
             kind="nightly", as_of=moment.date(), now=moment, settings_hash="s", program_version="0"
         )
         windows = {"window_end": [3600, 7200], "lag": 0, "n_pairs": 9, "coverage": 1.0, "n_effective": 5.0}
-        windows |= {"statistic": [0.1 * step, float("nan")], "p_value": 0.1, "low": -0.1, "high": 0.9}
+        windows |= {"statistic": [0.1 * turn, float("nan")], "p_value": 0.1, "low": -0.1, "high": 0.9}
         store.write_windows(night, {"pair_key": ["a~b", "a~b"], "reason": ["", "constant"], **windows})
         day = {"pair_key": ["a~b"], "recipe_hash": "r", "day": NOW.date()}
-        store.write_evidence(night, dict.fromkeys(EVIDENCE_COLUMNS, float(step)) | day)
+        store.write_evidence(night, dict.fromkeys(EVIDENCE_COLUMNS, float(turn)) | day)
         (number,) = store.append_alerts([NewAlert("a~b", moment.date(), night, {"direction": "weaker"})])
         store.append_alert_events(
             [
@@ -66,7 +73,7 @@ def fill(store: Store) -> None:
                 NewAlertEvent(number, moment, "note", "ana", "it's"),
             ]
         )
-        store.finish_night(night, now=moment, outcome="complete", steps=[{"step": "x"}], counts={"n": step})
+        store.finish_night(night, now=moment, outcome="complete", steps=[{"step": "x"}], counts={"n": turn})
     for table in store.tables_of():
         if not store.value(f"select count(*) from {table}"):
             kinds = store.rows(
@@ -98,7 +105,7 @@ def old_store(step: int) -> str:
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "new.duckdb"
         with open_store(path) as store:
-            fill(store)
+            fill(store, step)
         with duckdb.connect() as old:
             migrate(old, "old", read_only=False, upto=step)
             old.execute(f"attach '{path}' as now (read_only)")

@@ -8,7 +8,6 @@ import pytest
 from reference.naive_store import NaiveStore
 from rhovane.store import open_store
 from rhovane.store.clock import from_seconds
-from rhovane.store.exports import STATES_AS_OF
 from rhovane.store.precedence import READING, group_by_hour, outranks
 from store.building import (
     FIRST_HOUR,
@@ -19,6 +18,7 @@ from store.building import (
     parsed_file,
     random_files,
     seen,
+    states_as_of,
     value_and_flag,
 )
 
@@ -82,21 +82,7 @@ def test_state_as_of_an_ingest_is_the_state_recorded_after_it(store, seed):
     assert store.value("select count(*) from reading_confirmation") > 0
     for ingest_id, content in recorded.items():
         assert seen(store, ingest_id) == value_and_flag(content)
-        assert states(store, ingest_id) == content, "stage and result time too"
-
-
-def states(store, upto):
-    """(series, hour) -> (value, flag, stage, result time) as after an ingest."""
-    rows = store.rows(
-        f"""
-        select s.key, epoch(r.ts)::bigint, r.value, r.flag, r.stage, epoch(r.result_time)::bigint
-        from ({STATES_AS_OF}) r join series s on s.id = r.series_id
-        """,
-        {"upto": upto},
-    )
-    content = {(key, ts): tuple(rest) for key, ts, *rest in rows}
-    assert len(content) == len(rows), "an hour has two states"
-    return content
+        assert states_as_of(store, ingest_id) == content, "stage and result time too"
 
 
 def one_delivery_an_hour(rng, number):
@@ -217,10 +203,11 @@ def test_confirmation_by_a_later_stage_changes_no_value_but_resists_an_earlier_s
 
 
 def test_outranks_compares_one_property_after_the_other_and_puts_missing_last():
-    def one(stage=1, result_time=0, file_rank=0, line=2, flag=1, value=0.0):
-        return np.array([(1, 0, value, flag, stage, result_time, file_rank, line, 1, 1)], READING)
+    def one(stage=1, result_time=0, file_rank=0, line=2, flag=1, value=0.0, by_rules=1):
+        return np.array([(1, 0, value, flag, stage, by_rules, result_time, file_rank, line, 1, 1)], READING)
 
     ascending = [
+        one(by_rules=0, stage=2, result_time=9),
         one(value=np.nan),
         one(value=-1.0),
         one(value=2.0),

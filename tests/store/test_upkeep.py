@@ -30,7 +30,12 @@ def test_what_was_checked_is_told_with_its_extent(used):
         ("insert into reading select * from reading limit 1", "reading: 2 rows share 1 keys"),
         ("insert into ingest select * from ingest where id = 3", "ingest: 2 rows share 1 keys"),
         ("insert into series (id, key) values (9, 'ASHFORD.NO2')", "series: 2 rows share 1 keys (key)"),
-        ("delete from reading_history where rowid = 0", "revised rows of all files = superseded readings"),
+        ("delete from reading_history where rowid = 0", "revised and withdrawn rows of all files"),
+        ("update ingest set rows_withdrawn = 1 where id = 2", "revised and withdrawn rows of all files"),
+        (
+            "insert into ingest select * replace (99 as id) from ingest where id = 3",
+            "ingest 99: times that the same content was read by the same settings: 2 and 1",
+        ),
         ("delete from rejected where ingest_id = 3 and line > 0", "ingest 3: rejected rows of each file"),
         ("update ingest set rows_read = rows_read + 1 where id = 2", "ingest 2: rows read = new + revised"),
         (

@@ -18,7 +18,7 @@ from rhovane.cli.entry import (
     with_settings,
     writes_store,
 )
-from rhovane.model import ExitCode
+from rhovane.model import ExitCode, SettingsError
 
 if TYPE_CHECKING:
     from rhovane.settings import Settings
@@ -52,10 +52,41 @@ def check(config: Path, as_json: bool) -> None:
     )
     for source in found:
         click.echo(f"{source.name}: {source.summary()}")
+        for line in source.details():
+            click.echo(f"  {line}")
         for line in source.rejections[:MOST_LINES]:
             click.echo(f"  {line}")
         if len(source.rejections) > MOST_LINES:
             click.echo(f"  … and {len(source.rejections) - MOST_LINES} more (all with --json)")
+
+
+@main.command()
+@click.argument("folder", type=click.Path(path_type=Path, file_okay=False))
+@with_settings
+def init(config: Path, folder: Path) -> None:
+    """Draft the settings file --config from the sample files in FOLDER.
+
+    Clock, label and what else the files cannot say stay open, and the draft does not load until they are
+    answered. An existing file is never overwritten.
+    """
+    import os
+
+    from rhovane.ingest import draft_settings
+
+    if config.exists():
+        raise SettingsError(f"{config} exists and was not touched. Name another file with --config.")
+    work_folder = Path(os.path.relpath(folder.resolve(), config.resolve().parent)).as_posix()
+    text = draft_settings(folder, work_folder)
+    try:
+        config.parent.mkdir(parents=True, exist_ok=True)
+        config.write_text(text, encoding="utf-8")
+    except OSError as error:
+        raise SettingsError(f"{config} cannot be written ({error.strerror}). Name another file.") from error
+    questions = [n for n, line in enumerate(text.splitlines(), start=1) if '= "?"' in line]
+    click.echo(
+        f"{config}: a draft with {len(questions)} open questions, on lines {', '.join(map(str, questions))}."
+    )
+    click.echo(f"Answer them, then run `rhovane check --config {config}`.")
 
 
 @main.command()

@@ -26,6 +26,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.ingest.cells import Cell, Fault, distinct, is_empty, judged, quoted
+from rhovane.ingest.plain_labels import plain_labels
 from rhovane.settings import SourceSettings, parse_offset
 
 EPOCH = datetime(1970, 1, 1)
@@ -76,6 +77,8 @@ def read_labels(cells: Sequence[Cell], source: SourceSettings) -> Instants:
     read_text = text_reader(source.time_format)
     clock = clock_of(source.clock)
     step_s = source.step_minutes * 60
+    # A civil day has 23, 24 or 25 hours: its start is found on the clock, then moved to what the caller expects.
+    day_s = step_s if source.step == "1d" and source.label == "end" else 0
 
     def verdict(cell: Cell) -> tuple[int, int] | Fault:
         if is_empty(cell):
@@ -92,15 +95,21 @@ def read_labels(cells: Sequence[Cell], source: SourceSettings) -> Instants:
             )
         if offset_s is not None:
             return wall_s - offset_s, wall_s - offset_s
-        found = clock(wall_s)
+        found = clock(wall_s - day_s)
         if found is None:
             return Fault(
                 f"{quoted(cell)} does not exist on the clock {source.clock!r}: it was put forward past this "
                 "label. Correct the clock of this source, or the label."
             )
-        return found
+        return found[0] + day_s, found[1] + day_s
 
     column = distinct(cells)
+    if not source.clock.startswith("civil "):
+        wall = plain_labels(column.cells, source.time_format)
+        if wall is not None and not (wall % step_s).any():
+            offset_s = 0 if source.clock == "UTC" else round(parse_offset(source.clock).total_seconds())
+            instant = (wall - offset_s)[column.index]
+            return Instants(instant, instant, [])
     answers, faults = judged(column, verdict, (0, 0))
     both = np.array(answers, dtype=np.int64).reshape(-1, 2)[column.index]
     return Instants(both[:, 0], both[:, 1], faults)

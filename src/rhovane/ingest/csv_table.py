@@ -8,16 +8,27 @@ from __future__ import annotations
 
 import csv
 from collections.abc import Callable, Sequence
+from itertools import islice
 
 from rhovane.ingest.cells import Cell, quoted, shown
 from rhovane.ingest.table import Table
 from rhovane.model import FeedError, RejectedRow
 
+LEAST_BYTES = 2_000_000  # of a file that is worth loading compiled code for
+MOST_CODED = 64  # columns up to which each can have a table of its distinct cells; 30 MB each at the most
 UTF8_MARK = b"\xef\xbb\xbf"
 UTF16_MARKS = (b"\xff\xfe", b"\xfe\xff")
 
 
-def read_csv_table(data: bytes, *, delimiter: str, encoding: str) -> Table:
+def read_csv_table(
+    data: bytes,
+    *,
+    delimiter: str,
+    encoding: str,
+    preamble_lines: int = 0,
+    comment: str = "",
+    header_rows: int = 1,
+) -> Table:
     """The rows of a CSV file; rows with too few or too many columns are set apart.
 
     Parameters
@@ -28,7 +39,14 @@ def read_csv_table(data: bytes, *, delimiter: str, encoding: str) -> Table:
         One character.
     encoding : str
         "utf-8", "utf-16" or "latin-1". Bytes that are no text stay in their cells, marked, and are a fault
-        only of the rows that use these cells.
+        of the rows that use these cells.
+    preamble_lines : int
+        Lines before the header that are passed over, whatever they hold.
+    comment : str
+        Lines that begin with this text are passed over, as blank lines are; "" for none.
+    header_rows : int
+        Rows that name the columns. The name of a column is its texts, joined by one space; with no such row
+        the columns are called "1", "2" and so on.
 
     Raises
     ------
@@ -37,18 +55,35 @@ def read_csv_table(data: bytes, *, delimiter: str, encoding: str) -> Table:
     """
     if not data.strip():
         raise FeedError("The file is empty. Ask the source to deliver it again, or remove it.")
+    if len(data) >= LEAST_BYTES and not (preamble_lines or comment) and header_rows == 1:
+        table = _large_table(data, delimiter, encoding)
+        if table is not None:
+            return table
     text = _decode(data, encoding)
     lines = text.split("\n")
     ends_whole = lines[-1] == ""
     if ends_whole:
         lines.pop()
-    first = next((i for i, line in enumerate(lines) if line.strip()), None)
-    if first is None:
-        raise FeedError("The file holds blank lines only. Ask the source to deliver it again, or remove it.")
-    header_text = lines[first]
-    header = tuple(name.strip() for name in _header_fields(header_text, delimiter, data, encoding))
-    body = lines[first + 1 :]
-    column, line, rejected = _split(body, first + 2, delimiter, len(header), header_text, ends_whole)
+    if preamble_lines or (comment and comment in text):
+        # Blank lines are passed over, and keep their place in the count of lines.
+        passed = preamble_lines
+        lines = [
+            "" if i < passed or (comment and line.startswith(comment)) else line
+            for i, line in enumerate(lines)
+        ]
+    wanted = max(header_rows, 1)
+    at = list(islice((i for i, line in enumerate(lines) if line.strip()), wanted))
+    if len(at) < wanted:
+        found = "blank lines only" if not at else f"{len(at)} lines, but {header_rows} name the columns"
+        raise FeedError(f"The file holds {found}. Ask the source to deliver it again, or remove it.")
+    header_texts = [lines[i] for i in at]
+    header = _names([_header_fields(text, delimiter, data, encoding) for text in header_texts])
+    begin = at[-1] + 1
+    if header_rows == 0:
+        header, header_texts, begin = tuple(str(j + 1) for j in range(len(header))), [], at[0]
+    column, line, rejected = _split(
+        lines[begin:], begin + 1, delimiter, len(header), header_texts, ends_whole
+    )
     position = {name: i for i, name in enumerate(header)}
     return Table(
         header,
@@ -56,7 +91,59 @@ def read_csv_table(data: bytes, *, delimiter: str, encoding: str) -> Table:
         lambda name: column(position[name]),
         lambda row: shown(lines[line[row] - 1]),
         tuple(rejected),
+        "\n".join(header_texts),
+    )
+
+
+def _large_table(data: bytes, delimiter: str, encoding: str) -> Table | None:
+    """The rows of a large file without quotes, cut by compiled code; None if it needs a closer look."""
+    body = data.removeprefix(UTF8_MARK) if encoding == "utf-8" else data
+    body = body.replace(b"\r\n", b"\n") if b"\r" in body else body
+    head, _, body = body.partition(b"\n")
+    plain = (
+        encoding != "utf-16"
+        and delimiter.isascii()
+        and not any(mark in body for mark in (b'"', b"\0", b"\r"))
+    )
+    if not plain or not head.strip() or body.startswith(head + b"\n") or b"\n" + head + b"\n" in body:
+        return None
+    header_text = head.decode(encoding, "surrogateescape")
+    header = _names([_header_fields(header_text, delimiter, data, encoding)])
+    if not 2 <= len(header) <= MOST_CODED or not body:
+        return None
+    from rhovane.ingest.coded_csv import code_rows  # compiled code is loaded for large files only
+
+    rows = code_rows(body, delimiter=delimiter, width=len(header), encoding=encoding)
+    if rows is None:
+        return None
+    rejected = []
+    for line in rows.bad.tolist():
+        text = rows.text_of(line)
+        cut = line == len(rows.begin) - 1 and not body.endswith(b"\n")
+        reason = _fields(text, delimiter, len(header), [header_text], cut=cut) if text.strip() else []
+        if isinstance(reason, str):
+            rejected.append(RejectedRow(line + 2, "", shown(text), reason))
+    position = {name: j for j, name in enumerate(header)}
+    return Table(
+        header,
+        rows.line + 2,
+        lambda name: rows.column(position[name]),
+        lambda row: shown(rows.text_of(int(rows.line[row]))),
+        tuple(rejected),
         header_text,
+    )
+
+
+def _names(rows: list[list[str]]) -> tuple[str, ...]:
+    """Names of the columns from the rows of a header."""
+    if len({len(row) for row in rows}) > 1:
+        counts = ", ".join(str(len(row)) for row in rows)
+        raise FeedError(
+            f"The {len(rows)} header rows have different numbers of columns ({counts}). Correct header_rows or "
+            "preamble_lines of this source, or the file."
+        )
+    return tuple(
+        " ".join(filter(None, (text.strip() for text in texts))) for texts in zip(*rows, strict=True)
     )
 
 
@@ -97,12 +184,22 @@ def _header_fields(header_text: str, delimiter: str, data: bytes, encoding: str)
 
 
 def _split(
-    body: list[str], first_line: int, delimiter: str, width: int, header_text: str, ends_whole: bool
+    body: list[str],
+    first_line: int,
+    delimiter: str,
+    width: int,
+    header_texts: list[str],
+    ends_whole: bool,
 ) -> tuple[Callable[[int], list[Cell]], Sequence[int], list[RejectedRow]]:
     """The cells of a column by its position, the line of each row, and the rejected lines."""
     joined = delimiter.join(body)
     whole = range(first_line, first_line + len(body))
-    if width > 1 and "\0" not in joined and "\r" not in joined and header_text not in body:
+    if (
+        width > 1
+        and "\0" not in joined
+        and "\r" not in joined
+        and not any(text in body for text in header_texts)
+    ):
         if '"' in joined:
             found = _quoted_rows(body, delimiter, width)
             if found is not None:
@@ -118,7 +215,7 @@ def _split(
         if not text.strip():
             continue
         cut = i == len(body) - 1 and not ends_whole
-        fields = _fields(text, delimiter, width, header_text, cut=cut)
+        fields = _fields(text, delimiter, width, header_texts, cut=cut)
         if isinstance(fields, str):
             rejected.append(RejectedRow(first_line + i, "", shown(text), fields))
         else:
@@ -137,13 +234,13 @@ def _quoted_rows(body: list[str], delimiter: str, width: int) -> list[list[str]]
     return rows if len(rows) == len(body) and set(map(len, rows)) == {width} else None
 
 
-def _fields(text: str, delimiter: str, width: int, header_text: str, *, cut: bool) -> list[str] | str:
+def _fields(text: str, delimiter: str, width: int, header_texts: list[str], *, cut: bool) -> list[str] | str:
     """The fields of one line, or why it is rejected."""
     if "\0" in text:
         return (
             "The line holds NUL bytes, as after a crash or a failed copy. Ask the source to deliver it again."
         )
-    if text == header_text:
+    if text in header_texts:
         return "The line repeats the header, as in files joined together. Remove the line."
     try:
         # The csv module decides where there are quotes; without them it would only take longer.

@@ -10,6 +10,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import NamedTuple
 
+from rhovane.ingest.table_schema import SUFFIX
 from rhovane.model import FeedError
 from rhovane.settings import SourceSettings
 
@@ -79,14 +80,19 @@ def _in_folder(folder: Path, prefix: str, name_pattern: str) -> Iterator[ListedF
     with os.scandir(folder) as entries:
         for entry in entries:
             name = entry.name
-            if fits(name) and (hidden_too or name[0] != ".") and entry.is_file():
+            if (
+                fits(name)
+                and (hidden_too or name[0] != ".")
+                and not name.endswith(SUFFIX)
+                and entry.is_file()
+            ):
                 yield _listed(entry.stat(), before + name)
 
 
 def _below(work_folder: Path, pattern: str) -> Iterator[ListedFile]:
     for name in glob.iglob(pattern, root_dir=work_folder, recursive=True):
         path = work_folder / name
-        if path.is_file():
+        if path.is_file() and not name.endswith(SUFFIX):
             yield _listed(path.stat(), Path(name).as_posix())
 
 

@@ -2,15 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import math
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.ingest.cells import (
+    BELOW_SHARE,
+    NOT_DETECTED,
+    BelowLimit,
     Cell,
     Distinct,
     Fault,
+    Numbers,
     code_of,
     combined,
     distinct,
@@ -63,8 +68,16 @@ def read_long(
     hour_start = _read_hours(table, source, which, faults)
     status = read_status(table, source, modified_s=modified_s, faults=faults)
     cells = table.column(names.value)
-    numbers = read_numbers(cells, decimal=source.decimal, missing=source.missing)
+    numbers = read_numbers(
+        cells, decimal=source.decimal, missing=source.missing, below_limit=below_limit_of(source)
+    )
     says_missing = status.flag == Flag.MISSING
+    flag = status.flag
+    if numbers.below is not None:
+        value_of = [bound_of(source, str(code)) for code in codes.cells]
+        numbers, unsaid = with_bounds(numbers, [value_of[i] for i in codes.index.tolist()])
+        faults.add(names.value, cells, unsaid)
+        flag = flag_below(flag, numbers)
     # A flag that says "missing" makes an empty cell an answer; a text in its place stays a fault.
     faults.add(
         names.value, cells, [f for f in numbers.faults if not (says_missing[f[0]] and is_empty(cells[f[0]]))]
@@ -76,7 +89,7 @@ def read_long(
         which,
         hour_start,
         value,
-        np.where(missing, Flag.MISSING, status.flag).astype(np.int8),
+        np.where(missing, Flag.MISSING, flag).astype(np.int8),
         status.stage,
         status.result_time,
         np.array(table.line, dtype=np.int64),
@@ -191,6 +204,48 @@ def _convert(
     offset = np.array([answer.offset for answer in answers])[situations.index]
     converted: NDArray[np.float64] = value * factor + offset
     return converted
+
+
+def below_limit_of(source: SourceSettings) -> BelowLimit | None:
+    """How a source writes values below a detection limit; None where it does not."""
+    if source.below_limit == "reject":
+        return None
+    return BelowLimit(source.below_limit, frozenset(source.not_detected))
+
+
+def bound_of(source: SourceSettings, code: str) -> float | Fault:
+    """What "not detected" stands for in the series with a code, in the unit of the feed."""
+    limit = source.limits.get(code)
+    if limit is None and source.below_limit != "missing":
+        return Fault(
+            f"The detection limit of {quoted(code)} is not known. Declare it, in the unit of the feed: "
+            f"{quoted(code)} under [source.limits]."
+        )
+    return math.nan if limit is None else BELOW_SHARE[source.below_limit] * limit
+
+
+def with_bounds(numbers: Numbers, bounds: Sequence[float | Fault]) -> tuple[Numbers, list[tuple[int, str]]]:
+    """The numbers with their bounds where the cells do not say them, and the rows whose bound is not known."""
+    assert numbers.below is not None
+    value, missing, below = numbers.value.copy(), numbers.missing.copy(), numbers.below.copy()
+    unsaid = []
+    for row in np.flatnonzero(below == NOT_DETECTED).tolist():
+        bound = bounds[row]
+        if isinstance(bound, Fault):
+            unsaid.append((row, bound.reason))
+        elif math.isnan(bound):
+            missing[row], below[row] = True, 0
+        else:
+            value[row] = bound
+    return Numbers(value, missing, numbers.faults, below), unsaid
+
+
+def flag_below(flag: NDArray[np.int8], numbers: Numbers) -> NDArray[np.int8]:
+    """Flags with good readings below a limit marked as such; a worse flag stays."""
+    if numbers.below is None:
+        return flag
+    good = (flag == Flag.PASS) | (flag == Flag.NOT_EVALUATED)
+    return np.where(good & (numbers.below > 0), Flag.BELOW_LIMIT, flag).astype(np.int8)
 
 
 def conversion_for(

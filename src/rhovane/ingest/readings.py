@@ -70,6 +70,8 @@ def find_repeats(readings: Readings) -> list[tuple[int, str]]:
     if len(readings.series) < 2:
         return []
     span = readings.hour_start - readings.hour_start.min()
+    if _all_apart(readings.series, span):
+        return []
     slot = readings.series * (int(span.max()) + 1) + span
     order = np.argsort(slot, kind="stable")
     same = slot[order[1:]] == slot[order[:-1]]
@@ -93,6 +95,18 @@ def find_repeats(readings: Readings) -> list[tuple[int, str]]:
         standing[int(slot[position])] = winner
         replaced.append((loser, _another(readings, winner, loser)))
     return sorted(replaced)
+
+
+def _all_apart(series: NDArray[np.int64], span: NDArray[np.int64]) -> bool:
+    """Whether no two readings share series and time; False also where looking would take too much memory."""
+    unit = max(int(np.gcd.reduce(span)), 1)
+    n_times = int(span.max()) // unit + 1
+    size = n_times * (int(series.max()) + 1)
+    if size > 4 * len(span) + 1000:
+        return False
+    seen = np.zeros(size, dtype=bool)
+    seen[series * n_times + span // unit] = True
+    return int(np.count_nonzero(seen)) == len(span)
 
 
 def _another(readings: Readings, winner: int, loser: int) -> str:

@@ -5,9 +5,13 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
+import numpy as np
+from numpy.typing import NDArray
+
 from rhovane.ingest.cells import Cell, quoted, shown
 from rhovane.model import FeedError, RejectedRow
 
+MOST_NAMES = 30  # column names in one message
 LIKELY_DELIMITERS = {",": ",", ";": ";", "\t": "\\t", "|": "|"}
 
 
@@ -21,8 +25,8 @@ class Table:
     """
 
     header: tuple[str, ...]
-    line: Sequence[int]
-    column: Callable[[str], list[Cell]]
+    line: Sequence[int] | NDArray[np.int64]
+    column: Callable[[str], Sequence[Cell]]
     row_text: Callable[[int], str]
     rejected: tuple[RejectedRow, ...] = ()
     header_text: str = ""
@@ -88,5 +92,7 @@ def missing_columns_reason(table: Table, absent: Sequence[str], needed: Sequence
 
 
 def listed(names: Iterable[str]) -> str:
-    """Column names for a message."""
-    return ", ".join(quoted(name) for name in names)
+    """Column names for a message; of very many only the first."""
+    every = list(names)
+    more = f" and {len(every) - MOST_NAMES} more" if len(every) > MOST_NAMES else ""
+    return ", ".join(quoted(name) for name in every[:MOST_NAMES]) + more

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from rhovane.ingest.cells import Cell, Fault, is_empty, read_numbers, shown
 from rhovane.ingest.clock import read_labels, settle_repeated_hours
-from rhovane.ingest.long_form import conversion_for
+from rhovane.ingest.long_form import below_limit_of, bound_of, conversion_for, flag_below, with_bounds
 from rhovane.ingest.readings import Readings, find_repeats
 from rhovane.ingest.status import read_status, status_columns
 from rhovane.ingest.table import RowFaults, Table, listed, missing_columns_reason, require_columns
@@ -76,7 +76,7 @@ def read_wide(
     if not whole.all():
         columns = [[column[row] for row in rows] for column in columns]
     cells = list(chain.from_iterable(columns))  # column by column, judged in one go
-    value, missing, faults = _read_cells(cells, mapped, source, series, status.flag[rows])
+    value, flag, faults = _read_cells(cells, mapped, source, series, status.flag[rows])
     kept = np.ones(value.shape, dtype=bool)
     for i, reason in faults:
         j, row = divmod(i, len(rows))
@@ -91,7 +91,7 @@ def read_wide(
         np.tile([unique_keys.index(key) for key in keys], len(rows)),
         spread(hour_start),
         value.ravel(),
-        np.where(missing.ravel(), Flag.MISSING, spread(status.flag)).astype(np.int8),
+        flag.ravel(),
         spread(status.stage),
         spread(status.result_time),
         spread(np.array(table.line, dtype=np.int64)),
@@ -113,17 +113,27 @@ def _read_cells(
     source: SourceSettings,
     series: Mapping[str, SeriesSettings],
     row_flag: NDArray[np.int8],
-) -> tuple[NDArray[np.float64], NDArray[np.bool_], list[tuple[int, str]]]:
+) -> tuple[NDArray[np.float64], NDArray[np.int8], list[tuple[int, str]]]:
     """The cells of all mapped columns, one column after the other.
 
-    Values in the units of their series and where they are missing, both of shape (n_rows, n_columns); faults as
+    Values in the units of their series and their flags, both of shape (n_rows, n_columns); faults as
     (position among the cells, reason).
     """
-    numbers = read_numbers(cells, decimal=source.decimal, missing=source.missing)
-    says_missing = np.tile(row_flag == Flag.MISSING, len(mapped))
+    numbers = read_numbers(
+        cells, decimal=source.decimal, missing=source.missing, below_limit=below_limit_of(source)
+    )
+    flag = np.tile(row_flag, len(mapped))
+    says_missing = flag == Flag.MISSING
+    unsaid: list[tuple[int, str]] = []
+    if numbers.below is not None:
+        bounds = [bound_of(source, name) for name in mapped]
+        numbers, unsaid = with_bounds(numbers, [bound for bound in bounds for _ in row_flag])
+        flag = flag_below(flag, numbers)
     # A flag that says "missing" makes an empty cell an answer; a text in its place stays a fault.
     faults = [f for f in numbers.faults if not (says_missing[f[0]] and is_empty(cells[f[0]]))]
+    faults += unsaid
     missing = numbers.missing | says_missing
+    flag = np.where(missing, Flag.MISSING, flag).astype(np.int8)
     shape = (len(mapped), len(row_flag))
     value = np.where(missing, np.nan, numbers.value).reshape(shape)
     for j, name in enumerate(mapped):
@@ -132,7 +142,7 @@ def _read_cells(
             faults += [(j * shape[1] + int(i), known.reason) for i in np.flatnonzero(~np.isnan(value[j]))]
         elif not known.changes_nothing:
             value[j] = value[j] * known.factor + known.offset
-    return value.T, missing.reshape(shape).T, faults
+    return value.T, flag.reshape(shape).T, faults
 
 
 def _read_hours(table: Table, source: SourceSettings, faults: RowFaults) -> NDArray[np.int64]:
@@ -158,9 +168,9 @@ def _file_notes(
     if absent:
         needed = [*fixed, *source.series]
         reason = missing_columns_reason(table, absent, needed, source.delimiter)
-        notes.append(RejectedRow(0, "", table.header_text, f"{reason} The other columns were read."))
+        notes.append(RejectedRow(0, "", shown(table.header_text), f"{reason} The other columns were read."))
     extra = [name for name in table.header if name and name not in source.series and name not in fixed]
     if extra:
         reason = f"Columns that are not listed under [source.series] were not read: {listed(extra)}. List them to keep them."
-        notes.append(RejectedRow(0, "", table.header_text, reason))
+        notes.append(RejectedRow(0, "", shown(table.header_text), reason))
     return notes

@@ -9,12 +9,17 @@ from enum import IntEnum
 
 
 class Flag(IntEnum):
-    """Quality of a reading: the values of IOOS QARTOD, the inner alphabet for every foreign code."""
+    """Quality of a reading: the values of IOOS QARTOD, the inner alphabet for every foreign code.
+
+    BELOW_LIMIT is ours: a good reading of which only a bound is known, below the detection limit. Its value
+    stands for the bound by a rule that its source declares.
+    """
 
     PASS = 1
     NOT_EVALUATED = 2
     SUSPECT = 3
     FAIL = 4
+    BELOW_LIMIT = 6
     MISSING = 9
 
 
@@ -53,7 +58,8 @@ class ParsedFile:
 
     ``rows_read`` counts the readings the file holds: rows of a long file, cells of a wide one. Always
     ``rows_read == len(value) + len(rejected_rows_that_are_readings)``; rejected entries with
-    ``line == 0`` concern the file and do not count.
+    ``line == 0`` concern the file and do not count. ``rules`` names the settings it was read by ("": not
+    said): the same bytes read by other rules are another delivery, which takes the place of the first.
     """
 
     source: str
@@ -70,6 +76,7 @@ class ParsedFile:
     result_time: Sequence[int]
     line: Sequence[int]
     rejected: Sequence[RejectedRow] = field(default_factory=tuple)
+    rules: str = ""
 
 
 @dataclass(frozen=True)

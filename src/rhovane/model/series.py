@@ -24,6 +24,7 @@ class Series:
     ``key`` is ``STATION.quantity``; ``step_minutes`` is the regular interval; values of a ``circular``
     series (wind direction) are never ranked; an ``accumulated`` series (rain) holds sums over the step.
     ``segments`` are its changes of instrument and place, in order of day.
+    ``speed`` is the key of the wind speed that weights a direction's mean over an hour ("": none does).
     """
 
     key: str
@@ -32,6 +33,7 @@ class Series:
     step_minutes: int = 60
     label: str = ""
     segments: tuple[Segment, ...] = ()
+    speed: str = ""
 
     @property
     def station(self) -> str:

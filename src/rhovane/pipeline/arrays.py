@@ -69,7 +69,8 @@ def load_grid(
         return without_left_out(settings, grid, 24 * LOOKBACK_DAYS).of(sorted(wanted))
     days: Days = days_of(settings.network.standard_offset)
     start, end = days.start_of(first), days.end_of(last)
-    names = sorted(set(keys))
+    wanted = set(keys)
+    names = sorted(wanted | {speed for key in wanted if (speed := settings.speed_of(key))})
     found = store.read_readings(names, days.moment(start), days.moment(end), max_ingest_id=max_ingest_id)
     known = {s.key: s for s in settings.domain_series()}
     grid = to_grid(

@@ -2,17 +2,21 @@
 
 from __future__ import annotations
 
+import contextlib
 import dataclasses
 import datetime as dt
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
-from rhovane.ingest import describe_rejections, list_files
-from rhovane.model import FeedError, IngestOutcome
+import numpy as np
+
+from rhovane.ingest import ReadParquet, describe_rejections, list_files
+from rhovane.model import FeedError, IngestOutcome, ParsedFile
 from rhovane.pipeline.context import Night, Trouble
+from rhovane.pipeline.feed_signs import Sign, by_source, find_signs
 from rhovane.pipeline.ingesting import (
     append,
     parse_feed_file,
@@ -22,7 +26,9 @@ from rhovane.pipeline.ingesting import (
     source_of,
 )
 from rhovane.settings import Settings, SourceSettings
-from rhovane.store import Store
+from rhovane.store import Store, parquet_reader, preview_files
+
+HOUR_S = 3600
 
 
 @dataclass(frozen=True)
@@ -39,6 +45,11 @@ class SourceCheck:
     rejected_by_reason: dict[str, int]
     rejections: tuple[str, ...]
     trouble: str | None = None
+    new: int = 0
+    revised: int = 0
+    unchanged: int = 0
+    hours_by_series: dict[str, int] = field(default_factory=dict)
+    signs: tuple[Sign, ...] = ()
 
     def summary(self) -> str:
         """One line."""
@@ -49,8 +60,16 @@ class SourceCheck:
         span = f", {self.first:%Y-%m-%d %H:%M} to {self.last:%Y-%m-%d %H:%M} UTC" if self.first else ""
         return (
             f"{self.files} files ({self.known_files} already read), {self.rows} rows, "
-            f"{self.good} readings, {sum(self.rejected_by_reason.values())} rejected{span}"
+            f"{self.good} readings, {sum(self.rejected_by_reason.values())} rejected{span}; "
+            f"{self.new} new, {self.revised} revised, {self.unchanged} unchanged"
         )
+
+    def details(self) -> list[str]:
+        """Hours of every series, what was rejected and why, and suspicious signs."""
+        lines = [f"{key}: {hours} hours" for key, hours in self.hours_by_series.items()]
+        lines += [f"rejected {count} times: {reason}" for reason, count in self.rejected_by_reason.items()]
+        lines += [f"LOOK AT {sign.series} ({sign.kind}): {sign.text}" for sign in self.signs]
+        return lines
 
     def as_json(self) -> dict[str, Any]:
         """Plain values for ``--json``."""
@@ -63,29 +82,62 @@ class SourceCheck:
 
 def dry_run(settings: Settings, store: Store | None) -> list[SourceCheck]:
     """Parse every file of every source and say what is in it; nothing is written."""
-    known = set() if store is None else {str(sha) for sha in store.ingests()["sha256"]}
-    return [_check_source(source, settings, known, store) for source in settings.source]
+    with contextlib.ExitStack() as stack:
+        reader = stack.enter_context(parquet_reader()) if store is None else store.read_parquet
+        checked = [_check_source(source, settings, reader) for source in settings.source]
+    parsed = [file for _, files in checked for file in files]
+    outcomes = preview_files(parsed, store)
+    fresh = [file for file, outcome in zip(parsed, outcomes, strict=True) if not outcome.already_known]
+    signs = by_source(find_signs(settings, fresh, store), settings)
+    done = []
+    for check, files in checked:
+        mine = [outcome for outcome in outcomes if outcome.source == check.name]
+        first_time = [outcome for outcome in mine if not outcome.already_known]
+        hours = Counter(key for key, _ in set().union(*map(_hours_of, files)))
+        done.append(
+            dataclasses.replace(
+                check,
+                known_files=len(mine) - len(first_time),
+                new=sum(o.new for o in first_time),
+                revised=sum(o.revised for o in first_time),
+                unchanged=sum(o.unchanged for o in first_time),
+                hours_by_series=dict(sorted(hours.items())),
+                signs=tuple(signs[check.name]),
+            )
+        )
+    return done
+
+
+def _hours_of(file: ParsedFile) -> set[tuple[str, int]]:
+    """Series and hour of everything that a file delivers, missing values left out."""
+    hours = np.asarray(file.hour_start, dtype=np.int64) // HOUR_S
+    there = np.isfinite(np.asarray(file.value, dtype=float))
+    keys = np.asarray(file.series_key, dtype=object)
+    return set(zip(keys[there].tolist(), hours[there].tolist(), strict=True))
 
 
 def _check_source(
-    source: SourceSettings, settings: Settings, known: set[str], store: Store | None
-) -> SourceCheck:
+    source: SourceSettings, settings: Settings, reader: ReadParquet
+) -> tuple[SourceCheck, list[ParsedFile]]:
+    """What is in the files of a source, before the store is asked, and the files as parsed."""
     try:
         listed = list_files(source, settings.work_folder)
     except FeedError as error:
-        return SourceCheck(source.name, 0, 0, 0, 0, None, None, {}, (), str(error))
+        return SourceCheck(source.name, 0, 0, 0, 0, None, None, {}, (), str(error)), []
     reasons: Counter[str] = Counter()
     lines: list[str] = []
-    rows = good = already = 0
+    rows = good = 0
+    files: list[ParsedFile] = []
     first = last = None
     for file in listed:
         try:
-            parsed = parse_feed_file(settings.work_folder / file.place, source, settings, file.place, store)
+            parsed = parse_feed_file(settings.work_folder / file.place, source, settings, file.place, reader)
         except FeedError as error:
             reasons["file cannot be read"] += 1
             lines.append(str(error))
             continue
-        already += parsed.sha256 in known
+        if parsed.sha256:
+            files.append(parsed)
         rows += parsed.rows_read
         good += len(parsed.value)
         reasons.update(r.reason for r in parsed.rejected)
@@ -94,10 +146,10 @@ def _check_source(
             low, high = int(min(parsed.hour_start)), int(max(parsed.hour_start))
             first = low if first is None else min(first, low)
             last = high if last is None else max(last, high)
-    return SourceCheck(
+    check = SourceCheck(
         source.name,
         len(listed),
-        already,
+        0,
         rows,
         good,
         _moment(first),
@@ -105,6 +157,7 @@ def _check_source(
         dict(reasons.most_common()),
         tuple(lines),
     )
+    return check, files
 
 
 def _moment(second: int | None) -> dt.datetime | None:

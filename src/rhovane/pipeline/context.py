@@ -120,6 +120,7 @@ class Night:
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
+    left: list[str] = field(default_factory=list)
     watched: list[WatchedPair] = field(default_factory=list)
     counts: dict[str, Any] = field(default_factory=dict)
     scored: dict[str, NDArray[np.generic]] = field(default_factory=dict)

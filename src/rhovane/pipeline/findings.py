@@ -61,19 +61,23 @@ class Look:
 
 @dataclass(frozen=True)
 class Network:
-    """What the looks need to know of the series, in the order of the grid's columns."""
+    """What the looks need to know of the series, in the order of the grid's columns.
+
+    ``hours_each`` are the hours that a reading on the grid stands for: 24 for daily readings, otherwise 1.
+    """
 
     keys: tuple[str, ...]
     first_hour: NDArray[np.int64]
+    hours_each: NDArray[np.int64]
     accumulates: NDArray[np.bool_]
     by_ratio: NDArray[np.bool_]
-    groups: tuple[tuple[int, ...], ...]  # linear series of one quantity and unit
-    gauges: tuple[tuple[int, ...], ...]  # accumulating series of one quantity
+    groups: tuple[tuple[int, ...], ...]  # linear series of one quantity and unit, hour by hour
+    gauges: tuple[tuple[int, ...], ...]  # accumulating series of one quantity, hour by hour
 
     @classmethod
     def of(cls, settings: Settings, keys: Sequence[str], first_hours: Mapping[str, str]) -> Network:
         """The series of the settings, and the first hour ever read of each (ISO text)."""
-        known = settings.series_by_key()
+        known = {s.key: s for s in settings.domain_series()}
         series = [known[key] for key in keys]
         never = int(dt.datetime.max.replace(tzinfo=dt.UTC).timestamp())
         first = [
@@ -84,13 +88,14 @@ class Network:
         def alike(kind: str) -> tuple[tuple[int, ...], ...]:
             found: dict[tuple[str, str], list[int]] = {}
             for i, one in enumerate(series):
-                if one.kind == kind:
+                if one.kind == kind and one.step_minutes <= 60:
                     found.setdefault((one.quantity, one.unit), []).append(i)
             return tuple(tuple(members) for members in found.values())
 
         return cls(
             tuple(keys),
             np.array(first, dtype=np.int64),
+            np.array([max(s.step_minutes // 60, 1) for s in series], dtype=np.int64),
             np.array([s.kind == "accumulated" for s in series]),
             np.array([s.unit not in DIFFERENCE_UNITS for s in series]),
             alike("linear"),
@@ -164,7 +169,7 @@ class Looker:
         correlation = self.settings.correlation
         window = max(1, correlation.window_hours // 24)
         start, values = self._hours(24 * window)
-        per_day = np.isfinite(values).reshape(-1, 24, values.shape[1]).sum(axis=1)
+        per_day = np.isfinite(values).reshape(-1, 24, values.shape[1]).sum(axis=1) * self.network.hours_each
         first_day = -((start - self.network.first_hour) // DAY_S)
         runs = faults.low_coverage_runs(per_day, first_day, window, correlation.min_coverage)
         found = []

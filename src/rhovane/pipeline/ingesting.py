@@ -5,20 +5,20 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator
 from pathlib import Path
 
-from rhovane.ingest import describe_rejections, list_files, parse_file
+from rhovane.ingest import ReadParquet, StillWritten, describe_rejections, list_files, parse_file
 from rhovane.model import FeedError, IngestOutcome, ParsedFile, RhovaneError, StoreDamaged
 from rhovane.pipeline.context import OUT_OF_TIME, PART_ERRORS, Night, reason_of
 from rhovane.settings import Settings, SourceSettings
-from rhovane.store import Store, read_parquet
 
 STEP = "ingest"
 
 
 def read_feed(night: Night) -> str:
-    """Read what arrived since the last look and append it to the store."""
+    """Read what arrived since the last look, and what was read by other settings, and append it to the store."""
     parsed: list[ParsedFile] = []
     known = night.store.known_files()
-    for source, place in _new_files(night, known):
+    other_rules = _read_by_other_rules(night)
+    for source, place in _new_files(night, known, other_rules):
         if not night.may_go_on():
             night.failed(STEP, "the rest of the feed", OUT_OF_TIME)
             break
@@ -27,11 +27,51 @@ def read_feed(night: Night) -> str:
             parsed.append(one)
     append(night, parsed)
     new, revised, rejected = (night.counts[k] for k in ("readings new", "readings revised", "rows rejected"))
-    return f"{len(parsed)} files: {new} readings new, {revised} revised, {rejected} rows rejected"
+    told = [f"{len(parsed)} files: {new} readings new, {revised} revised, {rejected} rows rejected"]
+    if night.left:
+        told.append(f"{len(night.left)} files left for the next pass, as they are still being written")
+    return "; ".join([*told, *_told_again(night, other_rules, [file.path for file in parsed])])
 
 
-def _new_files(night: Night, known: dict[str, tuple[int, int]]) -> Iterator[tuple[SourceSettings, str]]:
-    """Source and place of every file that arrived or changed since it was read last."""
+def _read_by_other_rules(night: Night) -> dict[str, str]:
+    """Places of files that were read by other settings than those of today, with the source of each.
+
+    A change of one source concerns every source that delivers one of its series: which of two readings of
+    an hour stands can only be decided anew where both are read again.
+    """
+    sources = night.settings.source
+    rules = {s.name: s.reading_rules for s in sources}
+    found = night.store.files_by_other_rules(rules)
+    if any(not known for _, known in found.values()):
+        night.store.adopt_rules(rules)
+        found = night.store.files_by_other_rules(rules)
+    changed = {name for name, _ in found.values()}
+    if not changed:
+        return {}
+    touched = {key for s in sources if s.name in changed for key in s.series.values()}
+    beside = [s.name for s in sources if s.name not in changed and touched & set(s.series.values())]
+    return {place: name for place, (name, _) in found.items()} | night.store.files_of(beside)
+
+
+def _told_again(night: Night, other_rules: dict[str, str], read: list[str]) -> list[str]:
+    """What became of files read by other settings, source by source."""
+    told = []
+    again = set(read)
+    for name in sorted(set(other_rules.values())):
+        places = [place for place, source in other_rules.items() if source == name]
+        n_again = sum(place in again for place in places)
+        text = f"source {name}: settings changed; {n_again} files read again"
+        gone = [p for p in places if p not in again and not (night.settings.work_folder / p).exists()]
+        if gone:
+            text += f", {len(gone)} no longer there (their readings stand as they were read)"
+        told.append(text)
+    return told
+
+
+def _new_files(
+    night: Night, known: dict[str, tuple[int, int]], other_rules: dict[str, str]
+) -> Iterator[tuple[SourceSettings, str]]:
+    """Source and place of every file that arrived or changed since it was read last, or is to be read again."""
     if night.arrived is not None:
         for path in night.arrived:
             yield source_of(path, night.settings), shown_path(path, night.settings)
@@ -43,7 +83,12 @@ def _new_files(night: Night, known: dict[str, tuple[int, int]]) -> Iterator[tupl
             night.failed(STEP, f"source {source.name}", str(error))
             continue
         for file in listed:
-            if known.get(file.place) != (file.size_bytes, file.modified_ns):
+            if known.get(file.place) == (file.size_bytes, file.modified_ns) and file.place not in other_rules:
+                continue
+            age_s = night.now.timestamp() - file.modified_ns / 1e9
+            if 0 <= age_s < source.settle_s:
+                night.left.append(file.place)
+            else:
                 yield source, file.place
 
 
@@ -73,7 +118,10 @@ def source_of(path: Path, settings: Settings, source_name: str | None = None) ->
 def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) -> ParsedFile | None:
     """One feed file as readings and rejected rows; None, with the reason noted, when it cannot be opened."""
     try:
-        one = parse_feed_file(path, source, night.settings, shown, night.store)
+        one = parse_feed_file(path, source, night.settings, shown, night.store.read_parquet)
+    except StillWritten:
+        night.left.append(shown)
+        return None
     except FeedError as error:
         night.failed(STEP, shown, str(error))
         return None
@@ -116,11 +164,17 @@ def _append_or_note(night: Night, files: list[ParsedFile]) -> list[IngestOutcome
 
 
 def parse_feed_file(
-    path: Path, source: SourceSettings, settings: Settings, shown: str, store: Store | None
+    path: Path, source: SourceSettings, settings: Settings, shown: str, reader: ReadParquet
 ) -> ParsedFile:
     """One feed file as readings and rejected rows, known to the ledger by the place ``shown``."""
-    reader = read_parquet if store is None else store.read_parquet
-    return parse_file(path, source, settings.series_by_key(), read_parquet=reader, shown_as=shown)
+    return parse_file(
+        path,
+        source,
+        settings.series_by_key(),
+        read_parquet=reader,
+        shown_as=shown,
+        work_folder=settings.work_folder,
+    )
 
 
 def shown_path(path: Path, settings: Settings) -> str:

@@ -79,7 +79,8 @@ def to_grid(
     Notes
     -----
     A series with a step below an hour is brought to hours: its mean (circular: direction of the mean unit
-    vector; accumulated: mean times the number of steps, so that a lost tenth does not make a dry hour),
+    vector, or of the mean wind vector where ``Series.speed`` names a speed among the series: then only steps
+    with both count, and an hour without any wind has no direction; accumulated: mean times the number of steps, so that a lost tenth does not make a dry hour),
     where at least 75 % of the hour's readings are observations; otherwise the hour has none.
     """
     n_hours = (end - start) // HOUR_S
@@ -93,16 +94,44 @@ def to_grid(
         return Grid(start, tuple(s.key for s in series), values)
     whole = ~finer[position]
     values[row[whole], position[whole]] = value[whole]
+    place = {s.key: i for i, s in enumerate(series)}
+    second = second.astype(np.int64)[counts]
     for i in np.flatnonzero(finer):
         mine = position == i
-        values[:, i] = _hourly(series[i], row[mine], value[mine], n_hours)
+        weight = np.ones(int(mine.sum()))
+        if series[i].speed in place:
+            weight = _at_same_time(second[mine], second, value, position == place[series[i].speed])
+        both = np.isfinite(weight)
+        values[:, i] = _hourly(series[i], row[mine][both], value[mine][both], weight[both], n_hours)
     return Grid(start, tuple(s.key for s in series), values)
 
 
-def _hourly(
-    series: Series, row: NDArray[np.int64], value: NDArray[np.floating], n_hours: int
+def _at_same_time(
+    wanted: NDArray[np.int64],
+    second: NDArray[np.int64],
+    value: NDArray[np.floating],
+    other: NDArray[np.bool_],
 ) -> NDArray[np.float64]:
-    """Hourly values of one series with several steps an hour."""
+    """Values of another series in the wanted steps; NaN where it has none."""
+    found = np.full(len(wanted), np.nan)
+    order = np.argsort(second[other])
+    times, values = second[other][order], value[other][order]
+    at = np.searchsorted(times, wanted)
+    inside = at < len(times)
+    same = np.zeros(len(wanted), dtype=bool)
+    same[inside] = times[at[inside]] == wanted[inside]
+    found[same] = values[at[same]]
+    return found
+
+
+def _hourly(
+    series: Series,
+    row: NDArray[np.int64],
+    value: NDArray[np.floating],
+    weight: NDArray[np.float64],
+    n_hours: int,
+) -> NDArray[np.float64]:
+    """Hourly values of one series with several steps an hour; ``weight`` counts for directions only."""
     steps = 60 // series.step_minutes
     count = np.bincount(row, minlength=n_hours)
 
@@ -110,8 +139,9 @@ def _hourly(
         return np.bincount(row, of, minlength=n_hours) / np.maximum(count, 1)
 
     if series.kind == "circular":
-        east, north = mean(np.sin(np.radians(value))), mean(np.cos(np.radians(value)))
+        east, north = mean(weight * np.sin(np.radians(value))), mean(weight * np.cos(np.radians(value)))
         hourly = np.mod(np.degrees(np.arctan2(east, north)), 360.0)
+        hourly[np.bincount(row, np.abs(weight), minlength=n_hours) == 0] = np.nan
         hourly[hourly == 360.0] = 0.0  # a direction just west of north, rounded
     elif series.kind == "accumulated":
         hourly = mean(value) * steps

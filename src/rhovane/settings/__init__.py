@@ -10,17 +10,17 @@ from rhovane.settings.schema import (
     SectorMask,
     SeriesSettings,
     Settings,
-    SourceSettings,
     hash_of,
-    parse_offset,
 )
 from rhovane.settings.site_log import load_site_log, site_log_entry
+from rhovane.settings.source_schema import ColumnSettings, SourceSettings, parse_offset
 from rhovane.settings.unattended import DeliverySettings, HttpDelivery, MailDelivery, ServiceSettings
 
 __all__ = [
     "AlertSettings",
     "CalendarEntry",
     "CheckSettings",
+    "ColumnSettings",
     "CorrelationSettings",
     "DataNoteSettings",
     "DeliverySettings",

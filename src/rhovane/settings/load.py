@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import json
+import re
 import tomllib
+from collections import Counter
 from pathlib import Path
 from typing import Any
 
@@ -12,6 +14,9 @@ from pydantic import BaseModel, ValidationError
 from rhovane.model import SettingsError
 from rhovane.settings.calendar import CalendarEntry, load_calendar
 from rhovane.settings.schema import Settings, describe
+
+_HEADER = re.compile(r"\s*(\[{1,2})\s*([\w.-]+)\s*\]{1,2}")
+_KEY = re.compile(r'\s*("[^"]*"|[\w-]+)\s*=')
 
 
 def load_settings(path: Path) -> Settings:
@@ -23,8 +28,8 @@ def load_settings(path: Path) -> Settings:
         A file is missing, is not TOML, or holds mistakes; the message lists all of them.
     """
     try:
-        with path.open("rb") as stream:
-            raw = tomllib.load(stream)
+        text = path.read_bytes().decode("utf-8")
+        raw = tomllib.loads(text)
     except FileNotFoundError:
         raise SettingsError(
             f"{path}: no such settings file. Name one with --config FILE, or run `rhovane demo` to get a worked example."
@@ -35,21 +40,24 @@ def load_settings(path: Path) -> Settings:
         raise SettingsError(
             f"{path}: not valid TOML: {error}. Nothing was run. Edit the file and retry."
         ) from error
-    settings = settings_from(raw, path)
+    settings = settings_from(raw, path, text)
     if settings.calendar.file:
         place = path.parent / settings.calendar.file
         settings = settings.with_calendar(load_calendar(place, settings.series_by_key()))
     return settings
 
 
-def settings_from(raw: dict[str, Any], path: Path) -> Settings:
-    """Settings from a parsed TOML table, without calendar entries; ``path`` is where it came from."""
+def settings_from(raw: dict[str, Any], path: Path, text: str = "") -> Settings:
+    """Settings from a parsed TOML table, without calendar entries.
+
+    ``path`` is where it came from, ``text`` tells the lines of mistakes.
+    """
     if "origin" in raw:
         raise _refusal(path, [("origin", "not a setting")])
     try:
         settings = Settings.model_validate({**raw, "origin": path})
     except ValidationError as error:
-        raise _refusal(path, [_mistake(e, raw) for e in _root_causes(error.errors())]) from None
+        raise _refusal(path, [_mistake(e, raw, text) for e in _root_causes(error.errors())]) from None
     found = settings.mistakes()
     if found:
         raise _refusal(path, found)
@@ -81,8 +89,29 @@ def _root_causes(errors: list[Any]) -> list[Any]:
     ]
 
 
-def _mistake(error: Any, raw: dict[str, Any]) -> tuple[str, str]:
+def _line_of(loc: tuple[Any, ...], text: str) -> int | None:
+    """Line of the text on which the key at a place stands, counted from 1; None where it cannot be told."""
+    names = [str(part) for part in loc if not isinstance(part, int)]
+    index = next((part for part in loc if isinstance(part, int)), 0)
+    table: list[str] = []
+    begun: Counter[str] = Counter()
+    for number, line in enumerate(text.splitlines(), start=1):
+        header = _HEADER.match(line)
+        if header:
+            table = header[2].split(".")
+            begun[header[2]] += line.lstrip().startswith("[[")
+            continue
+        key = _KEY.match(line)
+        at_place = key and [*table, key[1].strip().strip('"')] == names
+        if at_place and (not begun[names[0]] or begun[names[0]] == index + 1):
+            return number
+    return None
+
+
+def _mistake(error: Any, raw: dict[str, Any], text: str) -> tuple[str, str]:
     where = _key(error["loc"], raw)
+    line = _line_of(error["loc"], text)
+    where = where if line is None else f"line {line}, {where}"
     kind = error["type"]
     if kind == "extra_forbidden":
         known = ", ".join(sorted(_fields_at(error["loc"][:-1])))

@@ -6,22 +6,19 @@ import datetime as dt
 import hashlib
 import itertools
 import json
-import re
 from collections.abc import Sequence
 from functools import cached_property
 from pathlib import Path
-from typing import Annotated, Any, Literal, Self
+from typing import Annotated, Any, Literal
 
-from pydantic import Field, PrivateAttr, field_validator, model_validator
+from pydantic import Field, PrivateAttr, field_validator
 
-from rhovane.model import Flag, Pair, Segment, Series, Stage
+from rhovane.model import Flag, Pair, Segment, Series
 from rhovane.settings.calendar import CalendarEntry
 from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
 from rhovane.settings.section import Section
+from rhovane.settings.source_schema import FIXED_OFFSET, SourceSettings, known_zone, parse_offset
 from rhovane.settings.unattended import DeliverySettings, NightSettings, ServiceSettings
-
-FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
-STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
 
 
 class NetworkSettings(Section):
@@ -78,117 +75,6 @@ class SiteLogSettings(Section):
     file: str = Field("", description="Site log file, relative to the settings file; empty: none is read.")
 
 
-class ColumnSettings(Section):
-    """Names of the columns of a source; empty means the file has no such column."""
-
-    time: str = Field(min_length=1, description="Column with the time label.")
-    station: str = Field("", description="Long form: column with the station code.")
-    quantity: str = Field("", description="Long form: column with the quantity code.")
-    value: str = Field("", description="Long form: column with the value.")
-    unit: str = Field("", description="Long form: column with the unit of the value.")
-    flag: str = Field("", description="Long form: column with the quality code.")
-    stage: str = Field("", description="Long form: column with the verification stage.")
-    issued: str = Field("", description="Long form: column with the time the value was issued.")
-
-
-class SourceSettings(Section):
-    """One feed: where its files are, how they are written, on which clock, and what is in them."""
-
-    name: str = Field(min_length=1)
-    form: Literal["long csv", "wide csv", "long parquet", "wide parquet"]
-    files: str = Field(min_length=1, description="Glob pattern relative to work_folder.")
-    clock: str = Field(description='"UTC", a fixed offset "+01:00", or "civil ZONE"; must be declared.')
-    label: Literal["start", "end"] = Field(
-        description="Whether a label names the start or end of its interval."
-    )
-    step: str = Field("1h", description="Interval of the readings.")
-    time_format: str = Field("%Y-%m-%d %H:%M", description="strptime pattern of the time column.")
-    delimiter: str = Field(",", min_length=1, max_length=1)
-    decimal: Literal[".", ","] = "."
-    encoding: Literal["utf-8", "utf-16", "latin-1"] = "utf-8"
-    missing: tuple[str, ...] = Field((), description="Texts in a value column that mean missing.")
-    columns: ColumnSettings
-    series: dict[str, str] = Field(
-        min_length=1,
-        description='Code in the feed → series key. Long: "STATION QUANTITY" codes joined by a space; wide: column.',
-    )
-    units: dict[str, str] = Field(
-        default_factory=dict,
-        description="Code in the feed → unit of its values, where the file does not say; default: the series' unit.",
-    )
-    unit_names: dict[str, str] = Field(
-        default_factory=dict, description="Spelling of a unit in the feed → spelling used here."
-    )
-    flags: dict[str, Literal["pass", "not evaluated", "suspect", "fail", "missing"]] = Field(
-        default_factory=dict, description="Quality code in the feed → meaning."
-    )
-    stages: dict[str, Literal["not verified", "preliminary", "verified"]] = Field(
-        default_factory=dict, description="Stage code in the feed → meaning."
-    )
-
-    @field_validator("clock")
-    @classmethod
-    def _clock(cls, value: str) -> str:
-        if value == "UTC" or FIXED_OFFSET.match(value):
-            return value
-        kind, _, zone = value.partition(" ")
-        if kind == "civil" and zone:
-            known_zone(zone)
-            return value
-        raise ValueError('write "UTC", a fixed offset such as "+01:00", or "civil ZONE" such as "civil CET"')
-
-    @field_validator("step")
-    @classmethod
-    def _step(cls, value: str) -> str:
-        if value not in STEP:
-            raise ValueError(f"known steps: {', '.join(STEP)}")
-        return value
-
-    @field_validator("time_format")
-    @classmethod
-    def _time_format(cls, value: str) -> str:
-        moment = dt.datetime(2004, 11, 23, 17, tzinfo=dt.UTC if "%z" in value else None)
-        try:
-            complete = dt.datetime.strptime(moment.strftime(value), value) == moment
-        except ValueError:
-            complete = False
-        if not complete:
-            raise ValueError("write a strptime pattern that holds year, month, day and hour: %Y-%m-%d %H:%M")
-        return value
-
-    @model_validator(mode="after")
-    def _columns_fit_form(self) -> Self:
-        if self.form.startswith("long"):
-            for name in ("quantity", "value"):
-                if not getattr(self.columns, name):
-                    raise ValueError(f"form {self.form!r} needs columns.{name}")
-        else:
-            for name in ("station", "quantity", "value", "unit"):
-                if getattr(self.columns, name):
-                    raise ValueError(
-                        f"columns.{name} is for long forms; form {self.form!r} names series by column"
-                    )
-        for code in self.units:
-            if code not in self.series:
-                raise ValueError(f"units.{code}: not a code listed under series")
-        return self
-
-    @property
-    def step_minutes(self) -> int:
-        """Interval of the readings in minutes."""
-        return STEP[self.step]
-
-    def flag_of(self, code: str) -> Flag | None:
-        """The inner flag of a quality code; None when the code is not mapped."""
-        word = self.flags.get(code)
-        return None if word is None else Flag[word.upper().replace(" ", "_")]
-
-    def stage_of(self, code: str) -> Stage | None:
-        """The inner stage of a stage code; None when the code is not mapped."""
-        word = self.stages.get(code)
-        return None if word is None else Stage[word.upper().replace(" ", "_")]
-
-
 class SegmentSettings(Section):
     """A day from which on a series was measured with something else, or somewhere else."""
 
@@ -204,6 +90,9 @@ class SeriesSettings(Section):
     key: str = Field(pattern=r"^[A-Za-z0-9_-]+\.[A-Za-z0-9_.-]+$", description="STATION.quantity")
     unit: str = Field(min_length=1, description="Unit in which values are kept.")
     kind: Literal["linear", "circular", "accumulated"] = "linear"
+    speed: str = Field(
+        "", description="Of a wind direction: key of the wind speed that weights its mean over an hour."
+    )
     label: str = ""
     segments: tuple[SegmentSettings, ...] = Field(
         (), description="Changes of instrument and moves of the station, in order of day."
@@ -216,6 +105,13 @@ class SeriesSettings(Section):
         for earlier, later in itertools.pairwise(days):
             if later <= earlier:
                 raise ValueError(f"{later} comes after {earlier}; give each day once, in order")
+        return value
+
+    @field_validator("unit")
+    @classmethod
+    def _unit(cls, value: str) -> str:
+        if value == "?":
+            raise ValueError("name the unit in which values are kept, such as ug/m3")
         return value
 
     @property
@@ -288,8 +184,10 @@ class CorrelationSettings(Section):
     min_coverage: float = Field(
         0.75, gt=0, le=1, description="Share of the window's hours with both observations (data capture)."
     )
-    accepted_flags: tuple[Literal["pass", "not evaluated", "suspect"], ...] = Field(
-        ("pass", "not evaluated"), min_length=1, description="Quality of readings that enter statistics."
+    accepted_flags: tuple[Literal["pass", "not evaluated", "suspect", "below limit"], ...] = Field(
+        ("pass", "not evaluated", "below limit"),
+        min_length=1,
+        description="Quality of readings that enter statistics.",
     )
     min_effective: float = Field(10.0, ge=4, le=1000, description="Fewest effective pairs for a p-value.")
     significance: float = Field(0.05, gt=0, lt=0.5, description="Level of the nightly significance screen.")
@@ -405,7 +303,8 @@ class Settings(Section):
                 s.kind,
                 step[s.key],
                 s.label,
-                tuple(Segment(one.first_day, one.what) for one in s.segments),
+                segments=tuple(Segment(one.first_day, one.what) for one in s.segments),
+                speed=s.speed,
             )
             for s in self.series
         ]
@@ -439,13 +338,22 @@ class Settings(Section):
         }
         if borders:  # only then, so that recipes without segments keep their hash
             parts["segments"] = borders
+        if pair.sector is not None and self.speed_of(pair.sector.direction):
+            parts["weighted by"] = self.speed_of(pair.sector.direction)
         digest = hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
         return Pair(pair.key, pair.first, pair.second, digest, pair.label)
 
     def series_of(self, pair: PairSettings) -> tuple[str, ...]:
         """Every series that a pair's numbers rest on: members, controls, wind direction."""
-        direction = (pair.sector.direction,) if pair.sector else ()
-        return (pair.first, pair.second, *pair.adjusted_for, *direction)
+        wind: tuple[str, ...] = ()
+        if pair.sector:
+            speed = self.speed_of(pair.sector.direction)
+            wind = (pair.sector.direction, speed) if speed else (pair.sector.direction,)
+        return (pair.first, pair.second, *pair.adjusted_for, *wind)
+
+    def speed_of(self, direction: str) -> str:
+        """Key of the wind speed that weights a wind direction; "" where none does."""
+        return next((s.speed for s in self.series if s.key == direction), "")
 
     def checks_of(self, key: str) -> list[CheckSettings]:
         """Own quality checks that apply to a series."""
@@ -500,12 +408,39 @@ class Settings(Section):
                 found.append(
                     (f"series[{i}] ({one.key})", "no source delivers it; add it to a source's series table")
                 )
+            if one.speed:
+                found += self._speed_mistakes(f"series[{i}] ({one.key}).speed", one, known, delivered)
         for i, pair in enumerate(self.pair):
+            for role, key in (("first", pair.first), ("second", pair.second)):
+                if delivered.get(key) == "1d":
+                    found.append(
+                        (
+                            f"pair[{i}] ({pair.key}).{role}",
+                            f"{key} has one value a day and cannot be ranked hour by hour; it is kept, and can be "
+                            "exported",
+                        )
+                    )
             found += self._pair_mistakes(f"pair[{i}] ({pair.key})", pair, known)
         for i, check in enumerate(self.check):
             where = f"check[{i}] ({check.applies_to})"
             found += check.mistakes(where, {key: one.quantity for key, one in known.items()})
         return found
+
+    @staticmethod
+    def _speed_mistakes(
+        where: str, one: SeriesSettings, known: dict[str, SeriesSettings], delivered: dict[str, str]
+    ) -> list[tuple[str, str]]:
+        if one.kind != "circular":
+            return [(where, 'only a series of kind "circular" has a speed that weights it; remove it')]
+        if one.speed not in known:
+            return [(where, f"series {one.speed!r} is not defined")]
+        if known[one.speed].kind != "linear":
+            return [(where, f"{one.speed} is no speed: its kind is {known[one.speed].kind!r}")]
+        if delivered.get(one.speed) != delivered.get(one.key):
+            return [
+                (where, f"{one.speed} and {one.key} have different steps; they must be measured together")
+            ]
+        return []
 
     def _pair_mistakes(
         self, where: str, pair: PairSettings, known: dict[str, SeriesSettings]
@@ -562,23 +497,6 @@ def _repeated(section: str, names: list[str]) -> list[tuple[str, str]]:
 def hash_of(text: str) -> str:
     """The hash that settings of this text are known by."""
     return hashlib.sha256(text.encode()).hexdigest()[:16]
-
-
-def parse_offset(text: str) -> dt.timedelta:
-    """A fixed offset ``+HH:MM`` as a time span."""
-    sign = -1 if text[0] == "-" else 1
-    return sign * dt.timedelta(hours=int(text[1:3]), minutes=int(text[4:6]))
-
-
-def known_zone(name: str) -> str:
-    """The zone name itself, when the zone is known."""
-    from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
-
-    try:
-        ZoneInfo(name)
-    except (ZoneInfoNotFoundError, ValueError):
-        raise ValueError(f"{name!r} is not a known IANA time zone") from None
-    return name
 
 
 def describe(value: Any) -> str:

@@ -6,7 +6,8 @@ from rhovane.store.liveness import EVENTS_KEPT, Liveness, Noticed, read_liveness
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
 from rhovane.store.outbox import Attempt, OutboxEntry
-from rhovane.store.reading import Origin, Readings, read_parquet
+from rhovane.store.previewing import preview_files
+from rhovane.store.reading import Origin, Readings, parquet_reader, read_parquet
 from rhovane.store.results import EVIDENCE_COLUMNS, LATER_COLUMNS, WINDOW_COLUMNS
 from rhovane.store.site_log import SITE_LOG_FILE, StoredSiteLogEntry
 from rhovane.store.store import Store
@@ -39,6 +40,8 @@ __all__ = [
     "back_up",
     "copies_in",
     "open_store",
+    "parquet_reader",
+    "preview_files",
     "read_liveness",
     "read_parquet",
     "restore",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from datetime import datetime
 from typing import NamedTuple
 
@@ -22,7 +22,7 @@ class Delivery(NamedTuple):
     ingest_id: int
 
 
-def records_of(delivery: Delivery, ids: dict[str, int]) -> Records:
+def records_of(delivery: Delivery, ids: Mapping[str, int]) -> Records:
     """The readings of a file as records, in file order."""
     file = delivery.file
     n = len(file.value)
@@ -41,13 +41,14 @@ def records_of(delivery: Delivery, ids: dict[str, int]) -> Records:
             "Nothing was kept."
         )
     rows = np.empty(n, READING)
-    rows["series_id"] = np.fromiter((ids[key] for key in file.series_key), np.int32, n)
+    rows["series_id"] = np.fromiter(map(ids.__getitem__, file.series_key), np.int32, n)
     rows["ts"] = file.hour_start
     rows["value"] = file.value
     rows["flag"] = file.flag
     rows["stage"] = file.stage
     rows["result_time"] = file.result_time
     rows["line"] = file.line
+    rows["by_rules"] = 1
     rows["file_rank"] = file_rank(file)
     rows["ingest_id"] = rows["confirmed_by"] = delivery.ingest_id
     infinite = np.isinf(rows["value"])

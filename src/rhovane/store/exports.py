@@ -21,7 +21,7 @@ _FORMATS = {
 
 _FLAG = """
 case r.flag when 1 then 'pass' when 2 then 'not evaluated' when 3 then 'suspect' when 4 then 'fail'
-    when 9 then 'missing' end
+    when 6 then 'below limit' when 9 then 'missing' end
 """
 _STAGE = "case r.stage when 0 then 'not verified' when 1 then 'preliminary' when 2 then 'verified' end"
 

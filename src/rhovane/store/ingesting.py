@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from datetime import datetime
 
 import numpy as np
@@ -29,23 +29,16 @@ from rhovane.store.precedence import (
     group_by_hour,
     settle,
 )
-from rhovane.store.reading import KNOWN_FILES
-from rhovane.store.session import Session
-
-_ROW = "series_id, ts, value, flag, stage, result_time, line, ingest_id, confirmed_by"
-
+from rhovane.store.reading import KNOWN_FILES, KNOWN_RULES
+from rhovane.store.rereading import ROW, Content, Rereading
 
 _SERIES_IDS = "select key, id from series"
 
 
-class ReadingWriter(Session):
+class ReadingWriter(Rereading):
     """Writing of series and readings."""
 
     _made_known: Sequence[Series] = ()
-    _contents: dict[tuple[str, str], int] | None = (
-        None  # (source, sha256) → ingest number, of the whole ledger
-    )
-    _appended = False
 
     def ensure_series(self, series: Sequence[Series]) -> dict[str, int]:
         """Make series known and return the number of each by its key; a changed label is taken over.
@@ -113,7 +106,9 @@ class ReadingWriter(Session):
     ) -> list[IngestOutcome]:
         """Add parsed files to the store, all of them or none; the outcome of each, in their order.
 
-        A file whose content (sha256) the ledger holds already for the same source adds nothing. Every
+        A file whose content (sha256) the ledger holds already for the same source, read by the same
+        settings, adds nothing. Read by other settings it takes the place of what it delivered before: readings
+        that it no longer delivers become missing, and the history keeps them. Every
         other file gets a ledger row and counts as if the files had come one after the other: see
         :mod:`rhovane.store.precedence` for what is new, revised or unchanged. For each outcome
         ``rows_read == new + revised + unchanged + rejected``.
@@ -130,9 +125,9 @@ class ReadingWriter(Session):
             each other. Nothing of any file was kept.
         """
         with self.transaction():
-            known = self._known_contents(files)
+            known, older = self.known_contents(files)
             next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
-            fresh: dict[tuple[str, str], Delivery] = {}
+            fresh: dict[Content, Delivery] = {}
             for file in files:
                 content = (file.source, file.sha256)
                 if content not in known and content not in fresh:
@@ -140,8 +135,9 @@ class ReadingWriter(Session):
             deliveries = list(fresh.values())
             counts = self._settle_and_write(deliveries)
             self._write_ledger(deliveries, counts, naive_utc(now))
+            self.withdraw({i: fresh[content].ingest_id for content, ids in older.items() for i in ids})
             outcomes = []
-            told: set[tuple[str, str]] = set()
+            told: set[Content] = set()
             for file in files:
                 content = (file.source, file.sha256)
                 if content in fresh and content not in told:
@@ -151,34 +147,11 @@ class ReadingWriter(Session):
                 else:
                     number = known.get(content) or fresh[content].ingest_id
                     outcomes.append(outcome_of(file, number, (0, 0, len(file.value)), already_known=True))
-            if self._contents is not None:
-                self._contents.update({content: d.ingest_id for content, d in fresh.items()})
+            self.remember_contents(deliveries)
             self._remember_files(files, outcomes, naive_utc(now))
             if checkpoint:
                 self.checkpoint_after_commit()
         return outcomes
-
-    def _known_contents(self, files: Sequence[ParsedFile]) -> Mapping[tuple[str, str], int]:
-        """Ingest number of the contents that the ledger holds: of these files, or of all there are.
-
-        The first append asks for these files only; a second one in the same process, as in a walk, reads the
-        whole ledger once, and later ones ask nothing.
-        """
-        if self._contents is None and not self._appended:
-            self._appended = True
-            found = self.rows(
-                "select source, sha256, id from ingest where sha256 in (select unnest(?))",
-                [[f.sha256 for f in files]],
-            )
-            return {(source, sha256): number for source, sha256, number in found}
-        if self._contents is None:
-            found = self.rows("select source, sha256, id from ingest")
-            self._contents = {(source, sha256): number for source, sha256, number in found}
-        return self._contents
-
-    def _forget(self) -> None:
-        super()._forget()
-        self._contents = None
 
     def _settle_and_write(self, deliveries: Sequence[Delivery]) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""
@@ -188,7 +161,10 @@ class ReadingWriter(Session):
             return [(0, 0, 0)] * len(parts)
         rows = parts[0] if len(parts) == 1 else np.concatenate(parts)
         group, first = group_by_hour(rows)
-        held, held_group, row_number = self._held(rows.take(first))
+        held, held_group, row_number = self.held_readings(
+            rows["series_id"].take(first), rows["ts"].take(first)
+        )
+        self.mark_other_rules(held, [d.file for d in deliveries])
         result = settle(rows, group, held, held_group)
         self._write_readings(result, held_group, row_number)
         counts = []
@@ -199,14 +175,14 @@ class ReadingWriter(Session):
             begin += len(part)
         return counts
 
-    def _held(self, hours: Records) -> tuple[Records, np.ndarray, np.ndarray]:
+    def held_readings(self, series_id: np.ndarray, ts: np.ndarray) -> tuple[Records, np.ndarray, np.ndarray]:
         """Current readings of the given hours, the group number of each, and where it stands in the table."""
         columns = {
-            "position": np.arange(len(hours)),
-            "series_id": hours["series_id"],
-            "ts": timestamps(hours["ts"]),
+            "position": np.arange(len(ts)),
+            "series_id": series_id,
+            "ts": timestamps(ts),
         }
-        span = [from_seconds(hours["ts"].min()), from_seconds(hours["ts"].max())]
+        span = [from_seconds(ts.min()), from_seconds(ts.max())]
         found = self.columns(
             """
             select w.position, r.rowid as row_number, r.series_id, r.ts, r.value, r.flag, r.stage,
@@ -221,15 +197,18 @@ class ReadingWriter(Session):
         )
         held = np.empty(len(found["position"]), READING)
         for name in READING.names or ():
-            held[name] = seconds_of(found[name]) if name in ("ts", "result_time") else found[name]
+            if name == "by_rules":
+                held[name] = 1
+            else:
+                held[name] = seconds_of(found[name]) if name in ("ts", "result_time") else found[name]
         return held, found["position"], found["row_number"]
 
     def _write_readings(self, result: Settlement, held_group: np.ndarray, row_number: np.ndarray) -> None:
         was_held = np.zeros(len(result.winner), np.bool_)
         was_held[held_group] = True
-        fresh = result.winner.compress(~was_held)
+        fresh = result.winner.compress(~was_held) if len(held_group) else result.winner
         if len(fresh):
-            self.execute(f"insert into reading select {_ROW} from staged", staged=table_of(fresh))
+            self.execute(f"insert into reading select {ROW} from staged", staged=table_of(fresh))
         changed = result.changed[held_group]
         if changed.any():
             self.execute(
@@ -243,12 +222,12 @@ class ReadingWriter(Session):
             )
         if len(result.history):
             self.execute(
-                f"insert into reading_history select {_ROW}, superseded_by from staged",
+                f"insert into reading_history select {ROW}, superseded_by from staged",
                 staged=table_of(result.history) | {"superseded_by": result.superseded_by},
             )
         if len(result.confirmed):
             self.execute(
-                f"insert into reading_confirmation select {_ROW}, replaced_by from staged",
+                f"insert into reading_confirmation select {ROW}, replaced_by from staged",
                 staged=table_of(result.confirmed) | {"replaced_by": result.replaced_by},
             )
 
@@ -260,6 +239,7 @@ class ReadingWriter(Session):
         columns = text_columns(
             sha256=[d.file.sha256 for d in deliveries],
             source=[d.file.source for d in deliveries],
+            rules=[d.file.rules for d in deliveries],
             path=[d.file.path for d in deliveries],
         )
         columns["id"] = np.array([d.ingest_id for d in deliveries])
@@ -275,7 +255,7 @@ class ReadingWriter(Session):
         self.execute(
             """
             insert into ingest select id, sha256, file_rank, source, path, size_bytes, rows_read, rows_new,
-                rows_revised, rows_unchanged, rows_rejected, first_ts, last_ts, ? from staged
+                rows_revised, rows_unchanged, rows_rejected, first_ts, last_ts, ?, nullif(rules, ''), 0 from staged
             """,
             [now],
             columns,
@@ -310,11 +290,16 @@ class ReadingWriter(Session):
             known.update(
                 {path: (f.size_bytes, microseconds(f.modified) * 1000) for path, (f, _) in latest.items()}
             )
+        if KNOWN_RULES in self._remembered:
+            self._remembered[KNOWN_RULES].update(
+                {path: (f.source, f.rules) for path, (f, _) in latest.items()}
+            )
         pairs = list(latest.values())
         columns = text_columns(
             path=list(latest),
             source=[f.source for f, _ in pairs],
             sha256=[f.sha256 for f, _ in pairs],
+            rules=[f.rules for f, _ in pairs],
         )
         columns["size_bytes"] = np.array([f.size_bytes for f, _ in pairs], np.int64)
         columns["mtime_ns"] = np.array([microseconds(f.modified) * 1000 for f, _ in pairs], np.int64)
@@ -328,7 +313,7 @@ class ReadingWriter(Session):
             """
             merge into feed_file using (select *, ?::timestamp as seen_at from staged) s using (path)
             when matched then update set source = s.source, size_bytes = s.size_bytes, seen_at = s.seen_at,
-                mtime_ns = s.mtime_ns, sha256 = s.sha256, ingest_id = s.ingest_id
+                mtime_ns = s.mtime_ns, sha256 = s.sha256, ingest_id = s.ingest_id, rules = s.rules
             when not matched then insert by name
             """,
             [now],

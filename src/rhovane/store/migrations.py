@@ -133,6 +133,13 @@ create table data_note (
 
 _ATTEMPTS = "alter table delivery add column tried_at timestamp"
 
+_RULES = """
+alter table ingest add column rules varchar;
+alter table ingest add column rows_withdrawn bigint;
+update ingest set rows_withdrawn = 0;
+alter table feed_file add column rules varchar;
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
@@ -143,6 +150,7 @@ MIGRATIONS = (
     Migration(7, "segments of series", _SEGMENTS),
     Migration(8, "data notes", _NOTES),
     Migration(9, "attempts at delivery", _ATTEMPTS),
+    Migration(10, "the settings each file was read by", _RULES),
 )
 
 

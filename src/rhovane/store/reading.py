@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
@@ -25,6 +26,7 @@ AS_OF_READINGS = """
 """
 
 
+KNOWN_RULES = "select path, source, rules from feed_file"
 KNOWN_FILES = "select path, size_bytes, mtime_ns from feed_file"
 
 
@@ -111,6 +113,10 @@ class ReadingReader(Session):
             found["flag"],
         )
 
+    def known_series(self) -> frozenset[str]:
+        """Keys of the series that the store knows."""
+        return frozenset(key for (key,) in self.rows("select key from series"))
+
     def origins(
         self, keys: Sequence[str], start: datetime, end: datetime, *, max_ingest_id: int
     ) -> list[Origin]:
@@ -118,17 +124,18 @@ class ReadingReader(Session):
 
         In order of series, then of the first hour that a file gave. A reading that several files gave alike counts for
         the one that decides its precedence; where a file after ``max_ingest_id`` took that over, its line is lost.
+        Hours that a file read again no longer gives are left out.
         """
         found = self.rows(
             f"""
             select s.key, i.source, i.path, i.sha256, min(r.line), max(r.line), count(*), min(r.ts), max(r.ts)
             from (
-                select series_id, ts,
+                select series_id, ts, line = 0 as withdrawn,
                     case when coalesce(confirmed_by, ingest_id) <= $upto then line end as line,
                     case when confirmed_by <= $upto then confirmed_by else ingest_id end as given_by
                 from ({AS_OF_READINGS})
             ) r join series s on s.id = r.series_id join ingest i on i.id = r.given_by
-            where s.key in (select unnest($keys)) and r.ts >= $start and r.ts < $end
+            where s.key in (select unnest($keys)) and r.ts >= $start and r.ts < $end and not r.withdrawn
             group by s.key, i.source, i.path, i.sha256, i.id order by s.key, min(r.ts), i.id
             """,
             {
@@ -174,6 +181,28 @@ class ReadingReader(Session):
             found = self.rows(KNOWN_FILES)
             self._remembered[KNOWN_FILES] = {path: (size, mtime) for path, size, mtime in found}
         return self._remembered[KNOWN_FILES]
+
+    def files_by_other_rules(self, rules: Mapping[str, str]) -> dict[str, tuple[str, str]]:
+        """Files read last by other settings than those given, as path → (source, settings it was read by).
+
+        ``rules`` are today's settings by source. Files of other sources are left out. A file read before settings
+        were remembered was read by "".
+        """
+        return {
+            path: (source, known)
+            for path, (source, known) in self._rules_of_files().items()
+            if source in rules and known != rules[source]
+        }
+
+    def _rules_of_files(self) -> dict[str, tuple[str, str]]:
+        if KNOWN_RULES not in self._remembered:
+            found = self.rows(KNOWN_RULES)
+            self._remembered[KNOWN_RULES] = {path: (source, known or "") for path, source, known in found}
+        return self._remembered[KNOWN_RULES]
+
+    def files_of(self, sources: Sequence[str]) -> dict[str, str]:
+        """Files taken in from some sources, as path → source."""
+        return {path: source for path, (source, _) in self._rules_of_files().items() if source in sources}
 
     def span_of(self, keys: Sequence[str]) -> dict[str, tuple[datetime, datetime]]:
         """First and last hour stored of each series that has readings."""
@@ -231,8 +260,15 @@ def read_parquet(path: Path) -> dict[str, np.ndarray]:
     FeedError
         There is no such file, or it is not a Parquet file.
     """
+    with parquet_reader() as read:
+        return read(path)
+
+
+@contextmanager
+def parquet_reader() -> Iterator[Callable[[Path], dict[str, np.ndarray]]]:
+    """A reader as :func:`read_parquet` for many files: the engine starts once."""
     with duckdb.connect(":memory:", config={"threads": 1}) as connection:
-        return _parquet_columns(connection, path)
+        yield lambda path: _parquet_columns(connection.cursor(), path)
 
 
 def _parquet_columns(connection: duckdb.DuckDBPyConnection, path: Path) -> dict[str, np.ndarray]:

@@ -65,14 +65,26 @@ _LEDGER_LAWS = (
         "select 0, (select count(*) from reading), coalesce(sum(rows_new), 0) from ingest",
     ),
     _Law(
-        "revised rows of all files = superseded readings",
-        "select 0, (select count(*) from reading_history), coalesce(sum(rows_revised), 0) from ingest",
+        "revised and withdrawn rows of all files = superseded readings",
+        """
+        select 0, (select count(*) from reading_history),
+            coalesce(sum(rows_revised) + sum(coalesce(rows_withdrawn, 0)), 0) from ingest
+        """,
+    ),
+    _Law(
+        "times that the same content was read by the same settings",
+        """
+        select id, if(again and coalesce(rules = before, true), 2, 1), 1 from (
+            select id, rules, lag(rules) over earlier as before, lag(id) over earlier is not null as again
+            from ingest window earlier as (partition by source, sha256 order by id)
+        )
+        """,
     ),
 )
 
 _KEYS = {
     "series": ("id", "key"),
-    "ingest": ("id", "source, sha256"),
+    "ingest": ("id",),
     "feed_file": ("path",),
     "reading": ("series_id, ts",),
     "night": ("id",),
