@@ -66,7 +66,9 @@ def naive_innovations(level: np.ndarray, day: int, *, steps: int = 24) -> tuple[
     if np.isfinite(past).sum() < 14 * steps:
         return np.full(steps, np.nan), math.nan
     errors = naive_filter(level[begin : (day + 1) * steps], *naive_ar2(past))
-    sd = np.nanstd(errors[: len(past)])
+    in_a_row = [t for t in range(2, len(past)) if np.isfinite(past[t - 2 : t + 1]).all()]
+    enough = len(in_a_row) >= 0.3 * np.isfinite(past).sum()
+    sd = np.std([errors[t] for t in in_a_row]) if enough else np.nanstd(errors[: len(past)])
     by_day = past.reshape(-1, steps)
     known = by_day[np.isfinite(by_day).any(axis=1)]
     within = known - np.nanmean(known, axis=1, keepdims=True)
