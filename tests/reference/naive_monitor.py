@@ -108,13 +108,13 @@ def naive_scale(history: list[np.ndarray], own: int) -> float:
     pooled = (everything.sum() + 300.0) / (len(everything) + 300.0)
     mine = products(history[own], 0)
     variance = (mine.sum() + 150.0 * pooled) / (len(mine) + 150.0)
-    total = 0.0
+    sums = [0.0]
     for lag in (1, 2, 3, 4, 5, 6):
         shared = np.concatenate([products(z, lag) for z in history])
         common = shared.sum() / max(len(shared), 1) / pooled
         mine = products(history[own], lag)
-        total += (mine.sum() / variance + 400.0 * common) / (len(mine) + 400.0)
-    return math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), 2.0)))
+        sums.append(sums[-1] + (mine.sum() / variance + 400.0 * common) / (len(mine) + 400.0))
+    return math.sqrt(variance * (1.0 + 2.0 * min(max(sums), 4.0)))
 
 
 def naive_evidence(z: np.ndarray, mean: float) -> np.ndarray:
