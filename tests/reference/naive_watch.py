@@ -87,7 +87,9 @@ def naive_watch(
     sr = np.zeros((n, 2, 3))
     correlations = np.eye(n_pairs)
     for day in range(length, n_days):
-        reference = [naive_reference(score[p], weight[p], day, length=length, guard=guard) for p in range(n_pairs)]
+        reference = [
+            naive_reference(score[p], weight[p], day, length=length, guard=guard) for p in range(n_pairs)
+        ]
         mean, sd = np.array([r[0] for r in reference]), np.array([r[1] for r in reference])
         unit = np.sqrt(weight)
         begin, end = max(0, day - guard - 200), max(0, day - guard)
@@ -120,7 +122,8 @@ def naive_watch(
             for h, (kind, _, pairs) in enumerate(charts):
                 d = direction[h]
                 cosines = [
-                    abs(d @ inverse[:, p]) / math.sqrt(max(d @ inverse @ d * inverse[p, p], 1e-12)) for p in pairs
+                    abs(d @ inverse[:, p]) / math.sqrt(max(d @ inverse @ d * inverse[p, p], 1e-12))
+                    for p in pairs
                 ]
                 live[h] = kind == "pair" or max(cosines) <= 0.85
         for h in range(n):
@@ -157,7 +160,9 @@ def naive_watch(
                 scaled[h, day] = np.clip(z[h] / calm, -3.5, 3.5)
                 for k, shift in enumerate((1.5, 2.5, 4.0) if h < n_pairs else (1.0, 2.0, 4.0)):
                     for side, sign in enumerate((1, -1)):
-                        sr[h, side, k] = (1 + sr[h, side, k]) * math.exp(sign * shift * scaled[h, day] - shift**2 / 2)
+                        sr[h, side, k] = (1 + sr[h, side, k]) * math.exp(
+                            sign * shift * scaled[h, day] - shift**2 / 2
+                        )
                 up, down = sr[h].mean(axis=1)
                 if h >= n_pairs:
                     value[h, day] = math.log(up)

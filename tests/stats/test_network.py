@@ -112,7 +112,10 @@ def test_the_evidence_of_a_small_network_equals_its_definition(seed: int) -> Non
     pairs = [(f"{a}.{q}", f"{b}.{q}") for q in ("NO2", "O3") for a, b in ("AB", "BC", "AC", "CD")]
     pairs += [("A.O3", "A.NO2"), ("E.rain", "F.rain")]
     n_days = 190
-    score = rng.normal(0.8, 0.2, (len(pairs), n_days)) + 0.2 * rng.normal(size=n_days) * (np.arange(10) < 4)[:, None]
+    score = (
+        rng.normal(0.8, 0.2, (len(pairs), n_days))
+        + 0.2 * rng.normal(size=n_days) * (np.arange(10) < 4)[:, None]
+    )
     score[8] -= 1.6
     score[rng.random(score.shape) < 0.07] = np.nan
     hours = np.where(np.isnan(score), 0.0, rng.integers(10, 25, score.shape))

@@ -24,7 +24,9 @@ def setting() -> tuple[np.ndarray, np.ndarray]:
     for row, one in zip(belongs, STRUCTURE.hypotheses, strict=True):
         row[one.pairs] = True
     direction = np.zeros(belongs.shape)
-    directions(belongs, MEAN, np.ones(len(MEMBERS)), np.full(len(MEMBERS), 22.0), direction, np.zeros(len(MEMBERS)))
+    directions(
+        belongs, MEAN, np.ones(len(MEMBERS)), np.full(len(MEMBERS), 22.0), direction, np.zeros(len(MEMBERS))
+    )
     return np.where(shares == 2, 1.0, np.where(shares == 1, 0.3, 0.0)), direction
 
 

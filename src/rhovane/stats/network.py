@@ -297,7 +297,12 @@ def whole_covariance(
 
 @compiled
 def add_class_movement(
-    inverse: Floats, classes: NDArray[np.int64], scored: Flags, seen: Flags, movement: Floats, variance: Floats
+    inverse: Floats,
+    classes: NDArray[np.int64],
+    scored: Flags,
+    seen: Flags,
+    movement: Floats,
+    variance: Floats,
 ) -> None:
     """Let the inverse of a covariance among the pairs seen know of the movement of each class; in place.
 
@@ -322,7 +327,9 @@ def add_class_movement(
 
 
 @compiled
-def directions(belongs: Flags, mean: Floats, sd: Floats, weight: Floats, direction: Floats, movement: Floats) -> None:
+def directions(
+    belongs: Flags, mean: Floats, sd: Floats, weight: Floats, direction: Floats, movement: Floats
+) -> None:
     """Direction of each hypothesis in the space of deviations, and of each class's common movement.
 
     Fills ``direction`` (n_hypotheses, n_pairs), pairs first, and ``movement`` (n_pairs,). A failing series or

@@ -122,7 +122,9 @@ def empty_view(n_charts: int, n_pairs: int) -> View:
 
 
 @compiled
-def look(day: int, guard: int, length: int, links: Links, records: Records, standing: Standing, view: View) -> None:
+def look(
+    day: int, guard: int, length: int, links: Links, records: Records, standing: Standing, view: View
+) -> None:
     """References and deviations of one day, and the directions of its hypotheses; fills ``view``."""
     found = references(records.score, records.weight, records.usable, day, guard, length, MIN_REFERENCE_DAYS)
     for p in range(len(view.mean)):
@@ -231,7 +233,9 @@ def observed_enough(view: View, live: Flags) -> Flags:
 
 
 @compiled
-def judge_charts(day: int, guard: int, length: int, links: Links, records: Records, standing: Standing, view: View) -> None:
+def judge_charts(
+    day: int, guard: int, length: int, links: Links, records: Records, standing: Standing, view: View
+) -> None:
     """Every hypothesis's deviation of the day, after network control, into its chart."""
     n_charts, n_pairs = links.belongs.shape
     past, known = standardised_history(day, guard, records, view)
@@ -300,7 +304,14 @@ def weather(recent: Floats) -> float:
 
 @compiled
 def judge_until_crossing(
-    day: int, stop: int, first: int, guard: int, length: int, links: Links, records: Records, standing: Standing,
+    day: int,
+    stop: int,
+    first: int,
+    guard: int,
+    length: int,
+    links: Links,
+    records: Records,
+    standing: Standing,
     view: View,
 ) -> int:
     """Judge days from ``day`` on; the last day judged: the first with a crossing, or the one before ``stop``."""  # fmt: skip

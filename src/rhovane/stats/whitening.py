@@ -137,7 +137,7 @@ def filtered_sd(level: Floats, a1: float, a2: float) -> float:
     errors = np.empty(len(level))
     filter_ar2(level, a1, a2, errors)
     kept = errors[~np.isnan(errors)]
-    return float(max(np.std(kept), 1e-6)) if len(kept) >= 2 else np.nan
+    return max(float(np.std(kept)), 1e-6) if len(kept) >= 2 else np.nan
 
 
 @compiled

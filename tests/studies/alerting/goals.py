@@ -111,7 +111,12 @@ def stationary(n_years: int) -> None:
         rates = " / ".join(f"{realised_rate(family, n_years, r, 80) / r:.2f}" for r in (0.1, 0.5))
         row(f"{name}: realised ÷ nominal at .1 / .5", rates, "≤ 1.25", "≤ 1.1")
     days = delays(WEEKLY, 0.0, n_years // 2, 0.1, 81)
-    row("weekends differ, .7 → 0: median (mean) delay", f"{np.median(days):.1f} d ({days.mean():.1f})", "–", "–")
+    row(
+        "weekends differ, .7 → 0: median (mean) delay",
+        f"{np.median(days):.1f} d ({days.mean():.1f})",
+        "–",
+        "–",
+    )
     real = FAMILIES["gappy cyclic lognormal"]
     for before, after, floor, aim in ((0.6, 0.3, 8, 6), (0.6, 0.0, 4, 2), (0.7, -0.2, 3, 1)):
         days = delays(type(real)(**{**vars(real), "rho": before}), after, n_years // 2, 0.1, 90)

