@@ -97,24 +97,31 @@ def naive_reference(score: np.ndarray, weight: np.ndarray, day: int, *, length: 
     return mean, math.sqrt(float((w * (z - mean) ** 2).sum()) / (len(days) - 1)), float(w.sum()), len(days)
 
 
-def naive_scale(history: list[np.ndarray], own: int) -> float:
-    """Out-of-sample standard deviation of one pair's deviations, shrunk to all pairs'."""
+def naive_scale(history: list[np.ndarray], own: int, judged: list[np.ndarray] | None = None) -> float:
+    """Out-of-sample standard deviation of one pair's deviations, shrunk to all pairs'.
+
+    ``judged`` holds for each pair the part of its history that was judged; all of it if left out.
+    """
 
     def products(z: np.ndarray, lag: int) -> np.ndarray:
         both = z[lag:] * z[: len(z) - lag] if lag < len(z) else np.empty(0)
         return both[np.isfinite(both)]
 
-    everything = np.concatenate([products(z, 0) for z in history])
-    pooled = (everything.sum() + 300.0) / (len(everything) + 300.0)
-    mine = products(history[own], 0)
-    variance = (mine.sum() + 150.0 * pooled) / (len(mine) + 150.0)
+    def variance(parts: list[np.ndarray]) -> tuple[float, float]:
+        everything = np.concatenate([products(z, 0) for z in parts])
+        pooled = (everything.sum() + 300.0) / (len(everything) + 300.0)
+        mine = products(parts[own], 0)
+        return pooled, (mine.sum() + 75.0 * pooled) / (len(mine) + 75.0)
+
+    pooled, whole = variance(history)
     sums = [0.0]
     for lag in (1, 2, 3, 4, 5, 6):
         shared = np.concatenate([products(z, lag) for z in history])
         common = shared.sum() / max(len(shared), 1) / pooled
         mine = products(history[own], lag)
-        sums.append(sums[-1] + (mine.sum() / variance + 400.0 * common) / (len(mine) + 400.0))
-    return math.sqrt(variance * (1.0 + 2.0 * min(max(sums), 4.0)))
+        sums.append(sums[-1] + (mine.sum() / whole + 200.0 * common) / (len(mine) + 200.0))
+    out_of_sample = variance(judged or history)[1]
+    return math.sqrt(out_of_sample * (1.0 + 2.0 * min(max(sums), 4.0)))
 
 
 def naive_evidence(z: np.ndarray, mean: float) -> np.ndarray:

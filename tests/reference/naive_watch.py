@@ -83,7 +83,7 @@ def naive_watch(
     raw, counted = np.full((n, n_days), np.nan), np.full((n, n_days), np.nan)
     unrest, scaled = np.full((n, n_days), np.nan), np.full((n, n_days), np.nan)
     value = np.full((n, n_days), np.nan)
-    begun = [False] * n
+    begun = [-1] * n
     sr = np.zeros((n, 2, 3))
     correlations = np.eye(n_pairs)
     for day in range(length, n_days):
@@ -143,13 +143,14 @@ def naive_watch(
             centre, variance = np.mean(outputs), np.var(outputs, ddof=1)
             t_value = (f[seen] @ today[seen] - centre) / math.sqrt(variance * (1 + 1 / k))
             raw[h, day] = wallace(float(t_value), k - 1)
-            if not begun[h]:
-                begun[h] = True
+            if begun[h] < 0:
+                begun[h] = day
                 for t, u in zip(at, outputs, strict=True):
                     counted[h, t] = np.clip((u - centre) / math.sqrt(variance * (1 - 1 / k)), -3.5, 3.5)
             counted[h, day] = np.clip(raw[h, day], -3.5, 3.5)
         history = [counted[h, max(0, day - 200) : end] for h in range(n)]
-        z = np.array([raw[h, day] / naive_scale(history, h) for h in range(n)])
+        judged = [counted[h, max(0, day - 200, begun[h]) : end] for h in range(n)]
+        z = np.array([raw[h, day] / naive_scale(history, h, judged) for h in range(n)])
         for h in range(n):
             others = [abs(z[p]) for p in range(n_pairs) if not touched[h][p] and math.isfinite(z[p])]
             if len(others) >= 6:

@@ -30,8 +30,10 @@ def test_scale_equals_its_definition() -> None:
     for day in (20, 120, 299):
         history = [z[p, max(0, day - 200) : day - 14] for p in range(3)]
         known = np.isfinite(z).astype(float)
-        got = scales(np.nan_to_num(z), known, day, 14)
-        np.testing.assert_allclose(got, [naive_scale(history, p) for p in range(3)], rtol=1e-9)
+        first = np.array([0, 60, 130])
+        judged = [z[p, max(0, day - 200, first[p]) : max(0, day - 14)] for p in range(3)]
+        got = scales(np.nan_to_num(z), known, first, day, 14)
+        np.testing.assert_allclose(got, [naive_scale(history, p, judged) for p in range(3)], rtol=1e-9)
 
 
 @pytest.mark.parametrize("mean", [0.8, -0.8, 0.02])

@@ -41,13 +41,13 @@ WEIGHT_OFFSET = 2.0
 """Joint hours that a daily score costs before it counts: its weight is hours - 2, at least 1."""
 SCALE_DAYS = 200
 """Days of past deviations from which their out-of-sample scale is estimated."""
-SCALE_PRIOR_DAYS = 150.0
+SCALE_PRIOR_DAYS = 75.0
 """Weight, in days, of the network's pooled variance in a pair's own."""
 POOL_PRIOR_DAYS = 300.0
 """Weight, in days, of variance 1 in the variance pooled over all charts."""
 SCALE_LAGS = 6
 """Days over which autocorrelation of deviations widens their scale: most of a week, as weather lasts."""
-AUTOCORRELATION_PRIOR_DAYS = 400.0
+AUTOCORRELATION_PRIOR_DAYS = 200.0
 """Weight, in days, of the network's pooled autocorrelation in a pair's own."""
 MAX_AUTOCORRELATION_SUM = 4.0
 """The sum of autocorrelations counts up to this."""
@@ -92,19 +92,24 @@ def evidence(statistic: Floats, mean: float) -> float:
 
 
 @compiled
-def scale_from(sums: Floats, counts: Floats, pool: Floats, pool_counts: Floats) -> float:
-    """Out-of-sample standard deviation of a chart's deviations from sums of their products at lags 0 to 6.
+def scale_from(
+    judged: Floats, sums: Floats, counts: Floats, pool_judged: Floats, pool: Floats, pool_counts: Floats
+) -> float:
+    """Out-of-sample standard deviation of a chart's deviations from sums of their products.
 
-    Shrunk to the pool of all charts. Autocorrelation widens it, summed up to the lag where the sum is largest: what
-    chance takes away at later lags would otherwise narrow the scale of a pair that is persistent. Arrays have shape
-    (SCALE_LAGS + 1,).
+    ``judged`` holds sum and number of the squares of days that were judged, ``sums`` and ``counts`` (shape
+    (SCALE_LAGS + 1,)) those of the products at lags 0 to 6, reference days included. All are shrunk to the
+    pool of all charts. Autocorrelation widens the scale, summed up to the lag where the sum is largest: what
+    chance takes away at later lags would otherwise narrow the scale of a pair that is persistent.
     """
-    pooled = (pool[0] + POOL_PRIOR_DAYS) / (pool_counts[0] + POOL_PRIOR_DAYS)
-    variance = (sums[0] + SCALE_PRIOR_DAYS * pooled) / (counts[0] + SCALE_PRIOR_DAYS)
+    pooled = (pool_judged[0] + POOL_PRIOR_DAYS) / (pool_judged[1] + POOL_PRIOR_DAYS)
+    variance = (judged[0] + SCALE_PRIOR_DAYS * pooled) / (judged[1] + SCALE_PRIOR_DAYS)
+    common = (pool[0] + POOL_PRIOR_DAYS) / (pool_counts[0] + POOL_PRIOR_DAYS)
+    own = (sums[0] + SCALE_PRIOR_DAYS * common) / (counts[0] + SCALE_PRIOR_DAYS)
     total, largest = 0.0, 0.0
     for lag in range(1, SCALE_LAGS + 1):
-        common = pool[lag] / max(pool_counts[lag], 1.0) / pooled
-        total += (sums[lag] / variance + AUTOCORRELATION_PRIOR_DAYS * common) / (
+        shared = pool[lag] / max(pool_counts[lag], 1.0) / common
+        total += (sums[lag] / own + AUTOCORRELATION_PRIOR_DAYS * shared) / (
             counts[lag] + AUTOCORRELATION_PRIOR_DAYS
         )
         largest = max(largest, total)
@@ -112,27 +117,31 @@ def scale_from(sums: Floats, counts: Floats, pool: Floats, pool_counts: Floats) 
 
 
 @compiled
-def scales(z: Floats, known: Floats, day: int, guard_days: int) -> Floats:
+def scales(z: Floats, known: Floats, first: NDArray[np.int64], day: int, guard_days: int) -> Floats:
     """Out-of-sample standard deviation of each chart's deviations, see :func:`scale_from`.
 
     ``z`` has shape (n_charts, n_days), ``known`` is 1 for the days that count; both are 0 elsewhere. The 200
-    days before ``day`` up to the guard are used.
+    days before ``day`` up to the guard are used; those before a chart's ``first`` are reference days.
     """
     n_charts = len(z)
     begin, end = max(0, day - SCALE_DAYS), max(0, day - guard_days)
     sums, counts = np.zeros((n_charts, SCALE_LAGS + 1)), np.zeros((n_charts, SCALE_LAGS + 1))
+    judged = np.zeros((n_charts, 2))
+    pool, pool_counts, pool_judged = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1), np.zeros(2)
     for h in range(n_charts):
         for lag in range(min(SCALE_LAGS + 1, end - begin)):
             sums[h, lag] = np.dot(z[h, begin + lag : end], z[h, begin : end - lag])
             counts[h, lag] = np.dot(known[h, begin + lag : end], known[h, begin : end - lag])
-    pool, pool_counts = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1)
-    for h in range(n_charts):
-        for lag in range(SCALE_LAGS + 1):
             pool[lag] += sums[h, lag]
             pool_counts[lag] += counts[h, lag]
+        for t in range(max(begin, first[h]), end):
+            judged[h, 0] += z[h, t] * z[h, t]
+            judged[h, 1] += known[h, t]
+        pool_judged[0] += judged[h, 0]
+        pool_judged[1] += judged[h, 1]
     out = np.empty(n_charts)
     for h in range(n_charts):
-        out[h] = scale_from(sums[h], counts[h], pool, pool_counts)
+        out[h] = scale_from(judged[h], sums[h], counts[h], pool_judged, pool, pool_counts)
     return out
 
 

@@ -87,8 +87,8 @@ class Standing(NamedTuple):
 
     ``frozen`` (3, n_pairs): mean, sd and total weight of a reference that is kept, else NaN; ``held``
     (n_pairs,): pairs not judged; ``ready`` (n_pairs,): first day judged; ``inverse`` (n_pairs, n_pairs): of the
-    correlations learnt between them; ``live`` (n_charts,): charts that are judged; ``begun`` (n_charts,): charts that have a
-    history; ``threshold`` (n_charts,); ``statistic`` (n_charts, 2, n_shifts).
+    correlations learnt between them; ``live`` (n_charts,): charts that are judged; ``begun`` (n_charts,): the first day a
+    chart was judged, -1 before; ``threshold`` (n_charts,); ``statistic`` (n_charts, 2, n_shifts).
     """
 
     frozen: Floats
@@ -96,7 +96,7 @@ class Standing(NamedTuple):
     ready: NDArray[np.int64]
     inverse: Floats
     live: Flags
-    begun: Flags
+    begun: NDArray[np.int64]
     threshold: Floats
     statistic: Floats
 
@@ -264,9 +264,9 @@ def judge_charts(
                 squares += (outputs[h, t] - mean) ** 2
         variance = max(squares / (n - 1), 1e-12)
         raw[h] = normal_from_t((today[h] - mean) / np.sqrt(variance * (1.0 + 1.0 / n)), n - 1.0)
-        if not standing.begun[h]:
-            # Its reference days stand for the past deviations it does not have yet.
-            standing.begun[h] = True
+        if standing.begun[h] < 0:
+            # Its reference days tell how persistent it is before any day has been judged.
+            standing.begun[h] = day
             for t in range(past.shape[1]):
                 if use[t] and not records.spoiled[h, begin + t]:
                     z = (outputs[h, t] - mean) / np.sqrt(variance * (1.0 - 1.0 / n))
@@ -275,7 +275,7 @@ def judge_charts(
         if not records.spoiled[h, day]:
             records.counted[h, day] = min(max(raw[h], -MAX_DEVIATION), MAX_DEVIATION)
             records.counts[h, day] = 1.0
-    scale = scales(records.counted, records.counts, day, guard)
+    scale = scales(records.counted, records.counts, standing.begun, day, guard)
     z = np.empty(n_charts)
     for h in range(n_charts):
         z[h] = raw[h] / scale[h]

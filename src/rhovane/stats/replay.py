@@ -126,7 +126,7 @@ class Replay:
         same_class = structure.classes[:, None] == structure.classes[None, :]
         self.same_class = (belongs @ same_class.astype(int)) > 0
         self.rate = false_alarms_per_year
-        self.live, self.begun = np.ones(n_charts, dtype=bool), np.zeros(n_charts, dtype=bool)
+        self.live, self.begun = np.ones(n_charts, dtype=bool), np.full(n_charts, -1)
         self.learnt, self.inverse = np.eye(n_pairs), np.eye(n_pairs)
         self.limit = np.full(n_charts, np.inf)
         self._share_budget()
