@@ -104,6 +104,32 @@ def test_walking_night_by_night_raises_what_one_night_over_the_history_raises(tm
                 np.testing.assert_array_equal(found[0][name], found[1][name], err_msg=name)
 
 
+def test_windows_that_an_interrupted_walk_had_left_are_computed_by_the_next_night(tmp_path: Path, changing):
+    settings = []
+    for name in ("interrupted", "at_once"):
+        folder = tmp_path / name
+        (folder / "feed").mkdir(parents=True)
+        (folder / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
+        (folder / "feed" / "all.csv").write_text(lines(range(24 * N_DAYS), *changing), encoding="utf-8")
+        settings.append(load_settings(folder / "monitor.toml"))
+    interrupted, at_once = settings
+    first = next(FIRST + d * DAY for d in range(60, 67) if (FIRST + d * DAY).toordinal() % 7 == 1)
+    with open_store(interrupted.store_path) as store:
+        walk = walk_nights(interrupted, store, first, first + 20 * DAY, moment_of=moment)
+        for _, report in zip(range(4), walk, strict=False):
+            assert next(s.summary for s in report.steps if s.name == "windows").startswith("left to")
+        walk.close()
+        assert len(store.read_windows()["lag"]) == 0
+    for each in settings:
+        run(each, first + 4 * DAY)
+    with open_store(interrupted.store_path) as one, open_store(at_once.store_path) as other:
+        found = [store.read_windows() for store in (one, other)]
+        assert "windows left" not in one.last_finished_night().counts
+    assert len(found[0]["lag"]) > 0
+    for name in set(found[0]) - {"night_id"}:
+        np.testing.assert_array_equal(found[0][name], found[1][name], err_msg=name)
+
+
 def test_a_night_uses_nothing_later_than_its_day(
     network: Settings, deliver: Callable[[str, str], Path], changing
 ):

@@ -33,9 +33,13 @@ def naive_levels(values: np.ndarray, *, steps: int = 24) -> tuple[np.ndarray, np
 
 
 def naive_ar2(level: np.ndarray) -> tuple[float, float]:
-    """Yule-Walker coefficients of order two from the pairs that exist, as the solution of the equations."""
+    """Yule-Walker coefficients of order two from the pairs that exist, as the solution of the equations.
+
+    A lag at which there are no pairs counts as uncorrelated.
+    """
     centred = level - np.nanmean(level)
-    c = [np.nanmean(centred[k:] * centred[: len(level) - k]) for k in range(3)]
+    products = [centred[k:] * centred[: len(level) - k] for k in range(3)]
+    c = [np.nanmean(p) if np.isfinite(p).any() else 0.0 for p in products]
     a = np.linalg.solve([[c[0], c[1]], [c[1], c[0]]], [c[1], c[2]])
     return float(a[0]), float(a[1])
 

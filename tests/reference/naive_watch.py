@@ -1,12 +1,13 @@
 """The evidence of a small network night by night from its definition, slowly; imports nothing from src.
 
-Covers what leads up to an alarm: references, network control, out-of-sample scale, unrest and evidence, for a
-history in which nothing has alarmed yet.
+Covers what leads up to an alarm: references, network control, out-of-sample scale, unrest, evidence and days
+set aside, for a history in which nothing has alarmed yet.
 """
 
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 
 import numpy as np
 
@@ -68,8 +69,13 @@ def naive_watch(
     *,
     length: int = 90,
     guard: int = 14,
+    aside: Sequence[tuple[tuple[int, ...], int, int | None, int, int | None, bool]] = (),
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Deviation and log evidence of every chart and day, shape (n_charts, n_days) both, NaN where not judged."""
+    """Deviation and log evidence of every chart and day, shape (n_charts, n_days) both, NaN where not judged.
+
+    ``aside`` holds days set aside: pairs, first and last day, first day that knows and first that has forgotten,
+    whether the days are judged.
+    """
     n_pairs, n_days = score.shape
     weight = np.maximum(hours - 2.0, 1.0)
     charts = naive_charts(members)
@@ -87,14 +93,25 @@ def naive_watch(
     sr = np.zeros((n, 2, 3))
     correlations = np.eye(n_pairs)
     for day in range(length, n_days):
+        barred, mute = np.zeros((2, n_pairs, n_days), dtype=bool)
+        for pairs, first, last, known, forgotten, judge in aside:
+            if known <= day and (forgotten is None or day < forgotten):
+                for p in pairs:
+                    end = n_days if last is None else last + 1
+                    barred[p, first:end] = True
+                    mute[p, first:end] |= not judge
+                    for h, chart in enumerate(charts):
+                        if day == known > first and p in chart[2]:
+                            sr[h] = 0
+        valid = np.where(barred, np.nan, score)
         reference = [
-            naive_reference(score[p], weight[p], day, length=length, guard=guard) for p in range(n_pairs)
+            naive_reference(valid[p], weight[p], day, length=length, guard=guard) for p in range(n_pairs)
         ]
         mean, sd = np.array([r[0] for r in reference]), np.array([r[1] for r in reference])
         unit = np.sqrt(weight)
         begin, end = max(0, day - guard - 200), max(0, day - guard)
-        past = np.clip((score[:, begin:end] - mean[:, None]) / sd[:, None] * unit[:, begin:end], -5, 5)
-        today = (score[:, day] - mean) / sd * unit[:, day]
+        past = np.clip((valid[:, begin:end] - mean[:, None]) / sd[:, None] * unit[:, begin:end], -5, 5)
+        today = np.where(mute[:, day], np.nan, (score[:, day] - mean) / sd * unit[:, day])
         seen = [p for p in range(n_pairs) if math.isfinite(today[p])]
         r = np.nan_to_num(np.tanh(mean))
         step = np.nan_to_num(unit[:, day] / sd)
@@ -148,8 +165,14 @@ def naive_watch(
                 for t, u in zip(at, outputs, strict=True):
                     counted[h, t] = np.clip((u - centre) / math.sqrt(variance * (1 - 1 / k)), -3.5, 3.5)
             counted[h, day] = np.clip(raw[h, day], -3.5, 3.5)
-        history = [counted[h, max(0, day - 200) : end] for h in range(n)]
-        judged = [counted[h, max(0, day - 200, begun[h]) : end] for h in range(n)]
+        clean = np.array(
+            [
+                np.where(2 * barred[c[2]].sum(axis=0) > len(c[2]), np.nan, counted[h])
+                for h, c in enumerate(charts)
+            ]
+        )
+        history = [clean[h, max(0, day - 200) : end] for h in range(n)]
+        judged = [clean[h, max(0, day - 200, begun[h]) : end] for h in range(n)]
         z = np.array([raw[h, day] / naive_scale(history, h, judged) for h in range(n)])
         for h in range(n):
             others = [abs(z[p]) for p in range(n_pairs) if not touched[h][p] and math.isfinite(z[p])]

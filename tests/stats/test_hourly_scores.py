@@ -56,6 +56,25 @@ def test_a_day_alone_equals_the_day_in_bulk_to_the_last_bit() -> None:
         assert same(bulk, alone, slice(day, day + 1)), f"day {day}"
 
 
+@pytest.mark.parametrize("seed", [7, 8, 9])
+def test_days_that_follow_known_ones_equal_the_whole_to_the_last_bit(seed: int) -> None:
+    x = gappy_series(seed, 260)
+    bulk = series_scores(x)
+    known = series_scores(x, range(30, 180))
+    while known.first_day + known.n_days < 260:
+        fresh = known.first_day + known.n_days
+        until = min(260, fresh + 1 + seed)
+        known = known.followed_by(series_scores(x, range(fresh, until), known=known))
+    assert same(bulk, known, slice(30, 260))
+
+
+def test_known_scores_that_reach_back_too_little_are_refused() -> None:
+    x = gappy_series(7, 200)
+    known = series_scores(x, range(100, 180))
+    with pytest.raises(ValueError, match=r"known scores cover days 100\.\.179; days 63\.\.179 are needed"):
+        series_scores(x, range(180, 181), known=known)
+
+
 def test_one_day_less_of_history_is_not_enough() -> None:
     x = gappy_series(4, 200)
     bulk = series_scores(x, range(199, 200))

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+import dataclasses
+
 import numpy as np
 import pytest
 
 from reference.naive_monitor import naive_reference
 from reference.naive_watch import naive_watch
+from rhovane.stats.decisions import Decisions, SetAside
 from rhovane.stats.network import (
     add_class_movement,
     directions,
@@ -105,8 +108,17 @@ def test_more_pairs_than_days_still_give_a_covariance() -> None:
     assert np.diag(got).tolist() == [1.0] * 200
 
 
-@pytest.mark.parametrize("seed", [1, 2])
-def test_the_evidence_of_a_small_network_equals_its_definition(seed: int) -> None:
+KNOWN = [
+    SetAside((0, 2), 70, 76),
+    SetAside((1, 3), 120, None, known=126, forgotten=139),
+    SetAside((0, 1, 2), 112, 131, known=120, judged=True),
+    SetAside((8, 9), 150, 170, known=155, forgotten=180),
+]
+"""Days of one series and of many, known always, at once and afterwards; withdrawn; judged all the same."""
+
+
+@pytest.mark.parametrize(("seed", "aside"), [(1, []), (2, []), (1, KNOWN), (2, KNOWN)])
+def test_the_evidence_of_a_small_network_equals_its_definition(seed: int, aside: list[SetAside]) -> None:
     """Two classes, two stations' worth of nodes, gaps, and a weather that moves one class."""
     rng = np.random.default_rng(seed)
     pairs = [(f"{a}.{q}", f"{b}.{q}") for q in ("NO2", "O3") for a, b in ("AB", "BC", "AC", "CD")]
@@ -121,10 +133,10 @@ def test_the_evidence_of_a_small_network_equals_its_definition(seed: int) -> Non
     hours = np.where(np.isnan(score), 0.0, rng.integers(10, 25, score.shape))
     replay = Replay(
         score, np.maximum(hours - 2.0, 1.0), np.zeros((*score.shape, 5)), np.full(len(pairs), 90),
-        structure_of(pairs), Spans(90, 14, 110), 1e-9,
+        structure_of(pairs), Spans(90, 14, 110), 1e-9, Decisions(tuple(aside)),
     )  # fmt: skip
     assert not replay.run()
-    scaled, value = naive_watch(score, hours, pairs)
+    scaled, value = naive_watch(score, hours, pairs, aside=[dataclasses.astuple(s) for s in aside])
     np.testing.assert_allclose(replay.scaled, scaled, rtol=1e-7, atol=1e-9)
     np.testing.assert_allclose(replay.values, value, rtol=1e-7, atol=1e-8)
     assert np.isfinite(scaled[10:, 90:]).any(), "the network is meant to have nodes that are judged"
@@ -141,7 +153,7 @@ def test_what_a_whole_class_does_is_taken_out() -> None:
 
     def found(score: np.ndarray) -> int:
         rest = (np.full((6, 180), 22.0), np.zeros((6, 180, 5)), np.full(6, 90))
-        incidents = Replay(score, *rest, structure_of(pairs), Spans(90, 14, 110), 0.3).run()
+        incidents = Replay(score, *rest, structure_of(pairs), Spans(90, 14, 110), 0.3, Decisions()).run()
         return sum(150 <= i.alarm_day < 160 for i in incidents)
 
     assert found(together) == 0

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from rhovane.model import NotFound, RhovaneError
+from rhovane.store import open_store
 from store.building import KEYS, NOW, parsed_file
 
 
@@ -44,6 +45,29 @@ def test_last_complete_night_passes_over_others_and_the_list_is_newest_first(sto
     assert store.last_complete_night("nightly").night_id == 1
     assert store.last_complete_night("rehearsal") is None
     assert [n.data_version for n in store.nights()] == [4, 3, 2, 1]
+
+
+def test_last_finished_night_is_the_same_remembered_and_read_from_the_file(store, path):
+    assert store.last_finished_night() is None
+    for day, outcome in enumerate(["complete", "incomplete", "failed"], start=1):
+        night = begin(store, day=day)
+        store.finish_night(night, now=NOW, outcome=outcome, steps=[{"step": "ingest"}], counts={"pairs": day})
+        remembered = store.last_finished_night()
+        assert remembered.night_id == min(night, 2)
+    night = begin(store, day=4)
+
+    def undone():
+        with store.transaction():
+            store.finish_night(night, now=NOW, outcome="complete", steps=[], counts={})
+            assert store.last_finished_night().night_id == night
+            raise RhovaneError("what stopped it")
+
+    with pytest.raises(RhovaneError, match="what stopped it"):
+        undone()
+    assert store.last_finished_night() == remembered
+    store.close()
+    with open_store(path) as reopened:
+        assert reopened.last_finished_night() == remembered
 
 
 def test_night_cannot_be_finished_twice_or_without_having_begun(store):

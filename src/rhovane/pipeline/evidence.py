@@ -7,7 +7,7 @@ their own before the windows are computed, and collected by the evidence.
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 
 import numpy as np
@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from rhovane.pipeline.context import Night, WatchedPair
 from rhovane.stats.compiled import available_threads
 from rhovane.stats.daily_scores import DailyScores, lookback_days, pair_scores
-from rhovane.stats.hourly_scores import SeriesScores, series_scores
+from rhovane.stats.hourly_scores import SCORED_BEFORE_DAYS, SeriesScores, series_scores
 from rhovane.store import LATER_COLUMNS
 
 STEP = "evidence"
@@ -34,43 +34,65 @@ def begin_hourly_scores(night: Night) -> str:
     grid = night.grid()
     first = night.days.day_of(grid.start)
     last = (night.as_of - first).days
-    begin: dict[bool, int] = {}
-    needed: set[tuple[str, bool]] = set()
-    for watched in stale:
-        assert watched.stale_from is not None
-        recipe = watched.recipe
-        adjusted = bool(recipe.adjusted_for)
-        day = max(0, (watched.stale_from - first).days - lookback_days(0, controls=adjusted))
-        begin[adjusted] = min(day, begin.get(adjusted, day))
-        needed.update((key, adjusted) for key in (recipe.first, recipe.second, *recipe.adjusted_for))
+    begin = _begin(stale, first)
+    needed = {
+        (key, bool(w.recipe.adjusted_for))
+        for w in stale
+        for key in (w.recipe.first, w.recipe.second, *w.recipe.adjusted_for)
+    }
     order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
     fresh = (min(w.stale_from for w in stale if w.stale_from) - first).days
     workers = ThreadPoolExecutor(max_workers=max(1, available_threads() - 1))
     for one in order:
         days = range(begin[one[1]], last + 1)
-        known = None if night.memory is None else night.memory.scores(one, first, range(days.start, fresh))
+        known = None
+        if night.memory is not None:
+            days = range(min(days.start, max(0, fresh - SCORED_BEFORE_DAYS)), days.stop)
+            known = night.memory.scores(one, first, fresh)
         night.hourly[one] = workers.submit(_hourly_scores, grid.column(one[0]), days, known)
     workers.shutdown(wait=False)
     return f"{len(order)} series begun"
 
 
+def _begin(stale: Sequence[WatchedPair], first: dt.date) -> dict[bool, int]:
+    """The earliest day whose hourly scores pairs need, with controls (True) and without."""
+    begin: dict[bool, int] = {}
+    for watched in stale:
+        assert watched.stale_from is not None
+        adjusted = bool(watched.recipe.adjusted_for)
+        day = max(0, (watched.stale_from - first).days - lookback_days(0, controls=adjusted))
+        begin[adjusted] = min(day, begin.get(adjusted, day))
+    return begin
+
+
 def _hourly_scores(values: NDArray[np.float64], days: range, known: SeriesScores | None) -> SeriesScores:
-    """Scores of a series; the days that are known already are not computed again."""
-    if known is None:
+    """Scores of a series for these days at least; those known already are not computed again."""
+    if known is None or known.first_day > days.start:
         return series_scores(values, days)
-    return known.followed_by(series_scores(values, range(days.start + known.n_days, days.stop)))
+    fresh = range(known.first_day + known.n_days, days.stop)
+    return known.followed_by(series_scores(values, fresh, known=known))
 
 
 def judge_days(night: Night) -> str:
     """Daily scores of every stale pair and day; written as evidence."""
+    summary = score_days(night)
+    if night.scored:
+        night.store.write_evidence(night.id, night.scored)
+    return summary
+
+
+def score_days(night: Night) -> str:
+    """Daily scores of every stale pair and day, kept in ``night.scored``."""
     stale = [w for w in night.watched if w.stale_from is not None]
     if not stale:
         return "nothing to judge"
     first = night.days.day_of(night.grid().start)
     last = (night.as_of - first).days
-    shared = {key: scores.result() for key, scores in night.hourly.items()}
+    shared = {one: scores.result() for one, scores in night.hourly.items()}
     if night.memory is not None:
         night.memory.remember_scores(first, shared)
+        begin = _begin(stale, first)
+        shared = {one: scores.since(begin[one[1]]) for one, scores in shared.items()}
     columns: dict[str, list[NDArray[np.generic]]] = {}
     n_days = n_scored = 0
     for watched in stale:
@@ -87,7 +109,6 @@ def judge_days(night: Night) -> str:
             columns.setdefault(name, []).append(values)
     if n_days:
         night.scored = {name: np.concatenate(parts) for name, parts in columns.items()}
-        night.store.write_evidence(night.id, night.scored)
     return f"{n_days} days of {len(stale)} pairs, {n_days - n_scored} without enough joint hours"
 
 

@@ -14,11 +14,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.pipeline.arrays import load_grid
+from rhovane.pipeline.note_changes import KnownNotes
+from rhovane.pipeline.step_memory import StepMemory
 from rhovane.prepare import Grid, days_of
 from rhovane.settings import Settings
-from rhovane.stats.hourly_scores import SeriesScores
+from rhovane.stats.hourly_scores import SCORED_BEFORE_DAYS, SeriesScores
 from rhovane.stats.watch import WatchMemory
 from rhovane.store import Store
+
+REMEMBERED_DAYS = SCORED_BEFORE_DAYS + 60
+"""Days of hourly scores that are kept: a revision further back has the night compute them again."""
 
 Columns = dict[str, NDArray[np.generic]]
 SeriesUse = tuple[str, bool]  # key, and whether for pairs with controls
@@ -26,9 +31,11 @@ SeriesUse = tuple[str, bool]  # key, and whether for pairs with controls
 
 @dataclass
 class NightMemory:
-    """Grid and evidence as the night before left them, and the states of the watch."""
+    """Grid, evidence and data notes as the night before left them, and the states of the watch."""
 
     watch: WatchMemory = field(default_factory=WatchMemory)
+    notes: KnownNotes | None = None
+    steps: StepMemory | None = None
     _grid: Grid | None = None
     _evidence: Columns | None = None
     _recipes: tuple[str, ...] = ()
@@ -54,23 +61,32 @@ class NightMemory:
         self._grid = Grid(start, tuple(keys), np.concatenate((kept, new.values)))
         return self._grid
 
-    def scores(self, one: SeriesUse, first: dt.date, days: range) -> SeriesScores | None:
-        """Hourly scores of a series for days numbered from ``first``, if the nights before made all of them."""
-        if not days or one not in self._scores:
+    def scores(self, one: SeriesUse, first: dt.date, fresh: int) -> SeriesScores | None:
+        """Hourly scores of a series before day ``fresh``, days numbered from ``first``, as the nights before made them.
+
+        None unless they reach right up to that day.
+        """
+        if one not in self._scores:
             return None
         known_first, known = self._scores[one]
-        begin = (first - known_first).days + days.start - known.first_day
-        end = begin + len(days)
-        return known.part(begin, end, first_day=days.start) if begin >= 0 and end <= known.n_days else None
+        moved = (first - known_first).days  # a day's number then, less its number now
+        end = fresh + moved - known.first_day
+        if not 0 < end <= known.n_days:
+            return None
+        begin = max(0, moved - known.first_day)
+        return known.part(begin, end, first_day=known.first_day + begin - moved) if begin < end else None
 
     def remember_scores(self, first: dt.date, scores: Mapping[SeriesUse, SeriesScores]) -> None:
         """Keep hourly scores for the next night; their days are numbered from ``first``."""
-        self._scores.update({one: (first, known) for one, known in scores.items()})
+        for one, known in scores.items():
+            begin = max(0, known.n_days - REMEMBERED_DAYS)
+            kept = known.part(begin, known.n_days, first_day=known.first_day + begin)
+            self._scores[one] = (first, kept)
 
     def forget(self) -> None:
         """Remember nothing: what a failed night computed was not kept by the store."""
         self.watch = WatchMemory()
-        self._grid = self._evidence = self._findings = None
+        self._grid = self._evidence = self._findings = self.notes = self.steps = None
         self._recipes = ()
         self._scores = {}
 

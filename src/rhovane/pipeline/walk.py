@@ -7,12 +7,20 @@ from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 
 from rhovane.pipeline.memory import NightMemory
-from rhovane.pipeline.nightly import NightReport, run_night
+from rhovane.pipeline.nightly import STEPS, NightReport, Step, run_night
+from rhovane.pipeline.windows import leave_windows
 from rhovane.settings import Settings
 from rhovane.store import Store
 
 DAY = dt.timedelta(days=1)
 NIGHTS_A_CHECKPOINT = 28  # nights of a walk after which the write-ahead log is folded into the store file
+NIGHTS_A_WINDOW = (
+    7  # nights of a walk after which their windows are computed, together at a fifth of the cost
+)
+
+LEAVING_WINDOWS: tuple[Step, ...] = tuple(
+    (name, leave_windows) if name == "windows" else (name, do) for name, do in STEPS
+)
 
 
 def nights_between(first: dt.date, last: dt.date) -> Iterator[dt.date]:
@@ -33,6 +41,9 @@ def walk_nights(
 ) -> Iterator[NightReport]:
     """Run every night from the first to the last date that the ledger does not hold yet.
 
+    No alert rests on the windows, and nobody reads them between two nights of a walk: they are computed with
+    every seventh night and with the last, from the readings known then.
+
     Parameters
     ----------
     moment_of : callable
@@ -48,12 +59,15 @@ def walk_nights(
         if done is not None and day <= done.as_of:
             continue
         arrived = None if arrivals is None else arrivals(day)
-        fold = day == last or day.toordinal() % NIGHTS_A_CHECKPOINT == 0
+        fold, windows = (
+            day == last or day.toordinal() % n == 0 for n in (NIGHTS_A_CHECKPOINT, NIGHTS_A_WINDOW)
+        )
         yield run_night(
             settings,
             store,
             as_of=day,
             now=moment_of(day),
+            steps=STEPS if windows else LEAVING_WINDOWS,
             checkpoint=fold,
             memory=memory,
             arrived=arrived,

@@ -3,18 +3,37 @@
 from rhovane.review.alert_list import AlertEntry, alert_entries, alert_entry, record_decision
 from rhovane.review.exporting import export_table
 from rhovane.review.log import log_alerts, log_events, logged_alerts, logged_events
+from rhovane.review.log_counts import LogCounts, log_counts
+from rhovane.review.nearby import Nearby, nearby_entries, site_log_json
+from rhovane.review.notes import all_notes, current_notes, note_state, note_words, notes_as_json
+from rhovane.review.provenance import Provenance, provenance_of
+from rhovane.review.site_log import add_site_log_entry, withdraw_site_log_entry
 from rhovane.review.status import Status, network_status
 
 __all__ = [
     "AlertEntry",
+    "LogCounts",
+    "Nearby",
+    "Provenance",
     "Status",
+    "add_site_log_entry",
     "alert_entries",
     "alert_entry",
+    "all_notes",
+    "current_notes",
     "export_table",
     "log_alerts",
+    "log_counts",
     "log_events",
     "logged_alerts",
     "logged_events",
+    "nearby_entries",
     "network_status",
+    "note_state",
+    "note_words",
+    "notes_as_json",
+    "provenance_of",
     "record_decision",
+    "site_log_json",
+    "withdraw_site_log_entry",
 ]

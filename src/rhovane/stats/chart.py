@@ -117,26 +117,33 @@ def scale_from(
 
 
 @compiled
-def scales(z: Floats, known: Floats, first: NDArray[np.int64], day: int, guard_days: int) -> Floats:
+def scales(
+    z: Floats, known: Floats, barred: NDArray[np.bool_], first: NDArray[np.int64], day: int, guard_days: int
+) -> Floats:
     """Out-of-sample standard deviation of each chart's deviations, see :func:`scale_from`.
 
-    ``z`` has shape (n_charts, n_days), ``known`` is 1 for the days that count; both are 0 elsewhere. The 200
-    days before ``day`` up to the guard are used; those before a chart's ``first`` are reference days.
+    ``z`` has shape (n_charts, n_days), ``known`` is 1 for the days that count; both are 0 elsewhere. Days that
+    are ``barred`` do not count either; no rows: none are. The 200 days before ``day`` up to the guard are used;
+    those before a chart's ``first`` are reference days.
     """
     n_charts = len(z)
     begin, end = max(0, day - SCALE_DAYS), max(0, day - guard_days)
     sums, counts = np.zeros((n_charts, SCALE_LAGS + 1)), np.zeros((n_charts, SCALE_LAGS + 1))
     judged = np.zeros((n_charts, 2))
     pool, pool_counts, pool_judged = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1), np.zeros(2)
+    n = max(0, end - begin)
     for h in range(n_charts):
-        for lag in range(min(SCALE_LAGS + 1, end - begin)):
-            sums[h, lag] = np.dot(z[h, begin + lag : end], z[h, begin : end - lag])
-            counts[h, lag] = np.dot(known[h, begin + lag : end], known[h, begin : end - lag])
+        past, seen = z[h, begin:end], known[h, begin:end]
+        if len(barred) and barred[h, begin:end].any():
+            past, seen = past * ~barred[h, begin:end], seen * ~barred[h, begin:end]
+        for lag in range(min(SCALE_LAGS + 1, n)):
+            sums[h, lag] = np.dot(past[lag:], past[: n - lag])
+            counts[h, lag] = np.dot(seen[lag:], seen[: n - lag])
             pool[lag] += sums[h, lag]
             pool_counts[lag] += counts[h, lag]
-        for t in range(max(begin, first[h]), end):
-            judged[h, 0] += z[h, t] * z[h, t]
-            judged[h, 1] += known[h, t]
+        for t in range(max(0, first[h] - begin), n):
+            judged[h, 0] += past[t] * past[t]
+            judged[h, 1] += seen[t]
         pool_judged[0] += judged[h, 0]
         pool_judged[1] += judged[h, 1]
     out = np.empty(n_charts)

@@ -41,6 +41,8 @@ MIN_FIT_DAYS = 14
 """Days' worth of observations among those, below which a day gets no innovations."""
 SERIES_HISTORY_DAYS = FIT_DAYS + CYCLE_DAYS + RANK_DAYS - 1
 """Days of readings, the scored day included, that its hourly scores depend on."""
+SCORED_BEFORE_DAYS = FIT_DAYS + CYCLE_DAYS - 1
+"""Days before a day whose own scores its hourly scores depend on."""
 
 
 @dataclass(frozen=True)
@@ -79,6 +81,20 @@ class SeriesScores:
         """How many days are scored."""
         return len(self.shape_sd)
 
+    def rows(self, hourly: Floats, begin: int, end: int) -> Floats:
+        """The rows of one of the arrays for days ``begin`` to ``end``; ValueError where they are not all there."""
+        if begin < self.first_day or end > self.first_day + self.n_days:
+            raise ValueError(
+                f"known scores cover days {self.first_day}..{self.first_day + self.n_days - 1}; "
+                f"days {begin}..{end - 1} are needed."
+            )
+        return hourly[begin - self.first_day : end - self.first_day]
+
+    def since(self, day: int) -> SeriesScores:
+        """The scores from a day on, days numbered as before."""
+        begin = max(0, day - self.first_day)
+        return self.part(begin, self.n_days, first_day=self.first_day + begin)
+
     def part(self, begin: int, end: int, *, first_day: int) -> SeriesScores:
         """Rows ``begin`` to ``end``, the first of them numbered ``first_day``."""
         arrays = (getattr(self, f.name)[begin:end] for f in fields(self) if f.name != "first_day")
@@ -98,7 +114,13 @@ class SeriesScores:
         return SeriesScores(self.first_day, *arrays)
 
 
-def series_scores(values: Floats, days: range | None = None, *, steps_per_day: int = 24) -> SeriesScores:
+def series_scores(
+    values: Floats,
+    days: range | None = None,
+    *,
+    steps_per_day: int = 24,
+    known: SeriesScores | None = None,
+) -> SeriesScores:
     """Hourly scores of one series for a range of days.
 
     Parameters
@@ -111,11 +133,15 @@ def series_scores(values: Floats, days: range | None = None, *, steps_per_day: i
         *d* use the readings of the ``SERIES_HISTORY_DAYS`` days that end with *d*, as far as they exist.
     steps_per_day : int
         Readings a day, 24 for hourly values.
+    known : SeriesScores, optional
+        Scores of the same readings that reach from ``SCORED_BEFORE_DAYS`` before ``days`` (or from day 0) to
+        right before ``days`` or beyond. They save most of the work and change nothing.
 
     Raises
     ------
     ValueError
-        When ``values`` is not one numeric series or holds an infinite value, or ``days`` reaches beyond it.
+        When ``values`` is not one numeric series or holds an infinite value, ``days`` reaches beyond it, or
+        ``known`` does not reach far enough.
 
     Notes
     -----
@@ -138,21 +164,25 @@ def series_scores(values: Floats, days: range | None = None, *, steps_per_day: i
     days = checked_days(days, len(values) // steps_per_day)
     first, last = days.start, days.stop
     fit_first = max(0, first - FIT_DAYS)
-    cycle_first = max(0, fit_first - CYCLE_DAYS + 1)
+    cycle_first = max(0, first - SCORED_BEFORE_DAYS)
+    rank_first, level_first = (cycle_first, fit_first) if known is None else (first, first)
     grid = values[: last * steps_per_day].reshape(last, steps_per_day)
-    midrank = trailing_midranks(grid, cycle_first, RANK_DAYS, MIN_RANKED_DAYS * steps_per_day)
+    midrank = trailing_midranks(grid, rank_first, RANK_DAYS, MIN_RANKED_DAYS * steps_per_day)
     score = ndtri(np.clip(midrank, SCORE_TAIL, 1.0 - SCORE_TAIL))
-    level = remove_daily_cycle(score, fit_first - cycle_first, CYCLE_DAYS)
+    if known is not None:
+        score = np.concatenate((known.rows(known.normal_score, cycle_first, first), score))
+    level = remove_daily_cycle(score, level_first - cycle_first, CYCLE_DAYS)
+    if known is not None:
+        level = np.concatenate((known.rows(known.level, fit_first, first), level))
     least = MIN_FIT_DAYS * steps_per_day
-    known = score[fit_first - cycle_first :]
     return SeriesScores(
         first,
-        midrank[first - cycle_first :],
+        midrank[first - rank_first :],
         score[first - cycle_first :],
         level[first - fit_first :],
         whiten(level, first - fit_first, FIT_DAYS, least),
         within_day_sd(level, first - fit_first, FIT_DAYS, least),
-        within_day_sd(known, first - fit_first, FIT_DAYS, least),
+        within_day_sd(score[fit_first - cycle_first :], first - fit_first, FIT_DAYS, least),
     )
 
 

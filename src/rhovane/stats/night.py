@@ -42,7 +42,7 @@ UNREST_DAYS = 5
 """Days over which the unrest elsewhere in the network is averaged."""
 MAX_KEPT_DEVIATION = 7.0
 """Deviations that explain an incident are kept inside this."""
-LEARNING, WATCHED, CHANGED, NOT_SCORED = 0, 1, 2, 3
+LEARNING, WATCHED, CHANGED, NOT_SCORED, NOT_JUDGED = 0, 1, 2, 3, 4
 
 
 class Links(NamedTuple):
@@ -60,15 +60,17 @@ class Links(NamedTuple):
 class Records(NamedTuple):
     """What is known and found of every day; first axis pairs or charts, last axis days.
 
-    Pairs: ``score``, ``weight``, ``usable`` (may enter a reference),
+    Pairs: ``score``, ``weight``, ``usable`` (may enter a reference), ``unjudged`` (set aside, does not alarm),
     ``kept`` (deviation, for explaining an incident), ``mean`` and ``sd`` of the reference, ``state``. Charts:
     ``counted`` and ``counts`` (deviations that make the scale and 1, or 0 and 0), ``spoiled`` (days that must
-    not), ``unrest``, ``scaled``, ``value``, ``limit``.
+    not), ``barred`` (days that are not to as long as they are set aside; empty where none are), ``unrest``,
+    ``scaled``, ``value``, ``limit``.
     """
 
     score: Floats
     weight: Floats
     usable: Flags
+    unjudged: Flags
     kept: Floats
     mean: Floats
     sd: Floats
@@ -76,6 +78,7 @@ class Records(NamedTuple):
     counted: Floats
     counts: Floats
     spoiled: Flags
+    barred: Flags
     unrest: Floats
     scaled: Floats
     value: Floats
@@ -135,12 +138,16 @@ def look(
             view.mean[p], view.sd[p], view.total[p] = np.nan, np.nan, np.nan
         spread = view.sd[p] * np.sqrt(1.0 / records.weight[p, day] + 1.0 / view.total[p])
         view.deviation[p] = (records.score[p, day] - view.mean[p]) / spread
+        if records.unjudged[p, day]:
+            view.deviation[p] = np.nan
         view.observed[p] = not np.isnan(view.deviation[p]) and not standing.held[p]
         records.mean[p, day], records.sd[p, day] = view.mean[p], view.sd[p]
         if view.observed[p]:
             records.kept[p, day] = min(max(view.deviation[p], -MAX_KEPT_DEVIATION), MAX_KEPT_DEVIATION)
         if day < standing.ready[p]:
             records.state[p, day] = LEARNING
+        elif records.unjudged[p, day]:
+            records.state[p, day] = NOT_JUDGED
         else:
             records.state[p, day] = NOT_SCORED if np.isnan(view.deviation[p]) else WATCHED
     directions(links.belongs, view.mean, view.sd, records.weight[:, day], view.direction, view.movement)
@@ -275,7 +282,7 @@ def judge_charts(
         if not records.spoiled[h, day]:
             records.counted[h, day] = min(max(raw[h], -MAX_DEVIATION), MAX_DEVIATION)
             records.counts[h, day] = 1.0
-    scale = scales(records.counted, records.counts, standing.begun, day, guard)
+    scale = scales(records.counted, records.counts, records.barred, standing.begun, day, guard)
     z = np.empty(n_charts)
     for h in range(n_charts):
         z[h] = raw[h] / scale[h]

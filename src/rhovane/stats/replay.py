@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from rhovane.stats.budget import threshold
 from rhovane.stats.chart import MIN_REFERENCE_DAYS, SHIFTS
+from rhovane.stats.decisions import Decisions
 from rhovane.stats.incident import Incident, Judgement, OpenIncident, onset_day, weighted_mean
 from rhovane.stats.network import (
     CLASS_VARIANCE,
@@ -31,6 +32,7 @@ from rhovane.stats.night import (
     look,
     standardised_history,
 )
+from rhovane.stats.onset import onset_range
 from rhovane.stats.suspect import explain, lag_movement, slipped_node
 
 Floats = NDArray[np.float64]
@@ -94,6 +96,7 @@ class Replay:
         structure: Structure,
         spans: Spans,
         false_alarms_per_year: float,
+        decisions: Decisions,
     ) -> None:
         n_pairs, n_days = score.shape
         n_charts = len(structure.hypotheses)
@@ -130,6 +133,7 @@ class Replay:
         self.learnt, self.inverse = np.eye(n_pairs), np.eye(n_pairs)
         self.limit = np.full(n_charts, np.inf)
         self._share_budget()
+        self.known = decisions.known_on(-1, belongs, n_days)
 
     def run(self) -> tuple[Incident, ...]:
         """Judge every day; the incidents in order of their alarm day."""
@@ -141,16 +145,26 @@ class Replay:
         related = self.structure.n_pairs < self.structure.related.sum()
         while self.n_judged < end:
             day, view = self.n_judged, empty_view(*self.belongs.shape)
-            stop = day + 1 if self.open else end
+            self._heed(day)
+            stop = day + 1 if self.open else self.known.decisions.next_turning(day, end)
             if related:
                 stop = min(stop, self._prepare(day, view))
-            records = self._records()
             day = judge_until_crossing(
                 day, stop, self.first, self.spans.guard_days, self.spans.baseline_days,
-                self._links(), records, self._standing(), view,
+                self._links(), self._records(), self._standing(), view,
             )  # fmt: skip
             self._answer(day, view)
             self.n_judged = day + 1
+
+    def _heed(self, day: int) -> None:
+        """Take in what becomes known, or is no longer, as this day is judged."""
+        decisions = self.known.decisions
+        if decisions.turning(day):
+            self.known = decisions.known_on(day, self.belongs, self.score.shape[1])
+            # What a chart gathered from days that are set aside now is not held against the pair.
+            self.statistic[self.belongs[:, decisions.reaching_back(day)].any(axis=1)] = 0.0
+        for incident in [i for i in self.open if decisions.renewed(i.pairs, day)]:
+            self._close(incident, day, "new baseline")
 
     def _prepare(self, day: int, view: View) -> int:
         """Learn and review where this day is due; the next day on which that is."""
@@ -191,8 +205,9 @@ class Replay:
 
     def _records(self) -> Records:
         return Records(
-            self.score, self.weight, self.usable, self.kept, self.means, self.sds, self.state,
-            self.counted, self.counts, self.spoiled, self.unrest, self.scaled, self.values, self.limits,
+            self.score, self.weight, self.known.referable(self.usable), self.known.unjudged, self.kept,
+            self.means, self.sds, self.state, self.counted, self.counts, self.spoiled, self.known.charts,
+            self.unrest, self.scaled, self.values, self.limits,
         )  # fmt: skip
 
     def _standing(self) -> Standing:
@@ -236,7 +251,8 @@ class Replay:
                 continue
             onset = onset_day(self.scaled[chart], day, self.first)
             value, limit = float(self.values[chart, day]), float(self.limit[chart])
-            incident = OpenIncident(day, onset, int(chart), value, limit)
+            span = onset_range(self.scaled[chart], day, self.first)
+            incident = OpenIncident(day, onset, int(chart), value, limit, span)
             incident.pairs = pairs
             incident.reach = self.touches[chart].copy()
             self._spoil(pairs, onset, day + SETTLING_DAYS)
@@ -272,7 +288,8 @@ class Replay:
         )
         chart = incident.chart if found is None else found.hypothesis
         lead = int(self.structure.hypotheses[chart].pairs[0]) if found is None else found.lead
-        lagged = self.lagged[:, max(incident.onset_day, night.day - SETTLING_DAYS + 1) : night.day + 1]
+        recent = slice(max(incident.onset_day, night.day - SETTLING_DAYS + 1), night.day + 1)
+        lagged = np.where(self.known.unjudged[:, recent, None], np.nan, self.lagged[:, recent])
         mean = np.nan_to_num(night.mean)
         steps = lag_movement(self.structure, self.structure.hypotheses[chart], lagged, mean)
         if steps and not self.is_node[chart]:
@@ -309,7 +326,9 @@ class Replay:
             incident.back = max(0.0, incident.back + float(np.clip(step, -MAX_RETURN_STEP, MAX_RETURN_STEP)))
         if incident.back > RETURN_EVIDENCE:
             self._close(incident, day, "returned")
-        elif day - incident.alarm_day >= self.spans.rebaseline_days:
+        elif (  # days that are set aside cannot become the new normal
+            day - incident.alarm_day >= self.spans.rebaseline_days and not self.known.barred[pairs, day].any()
+        ):
             self._close(incident, day, "new baseline")
 
     def _settle(self, incident: OpenIncident, night: Night) -> None:
@@ -325,8 +344,8 @@ class Replay:
         pairs = incident.pairs = incident.pairs[moved]
         incident.change = (total / n)[moved]
         before = references(
-            self.score, self.weight, self.usable, max(onset, self.first), self.spans.guard_days,
-            self.spans.baseline_days, MIN_REFERENCE_DAYS,
+            self.score, self.weight, self.known.referable(self.usable), max(onset, self.first),
+            self.spans.guard_days, self.spans.baseline_days, MIN_REFERENCE_DAYS,
         )  # fmt: skip
         free = pairs[~self.held[pairs]]
         self.frozen[:, free] = before[:3, free]

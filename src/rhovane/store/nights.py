@@ -14,11 +14,13 @@ from rhovane.store.jsontext import json_text
 from rhovane.store.session import Session
 
 NightOutcome = Literal["complete", "incomplete", "failed"]
+_SETTINGS = "select hash, text from settings_used"
 _OUTCOMES = ("complete", "incomplete", "failed")
-_SELECT = """
-select id, kind, as_of, started, finished, outcome, steps, counts, settings_hash, program_version,
-       data_version from night
-"""
+_COLUMNS = (
+    "id, kind, as_of, started, finished, outcome, steps, counts, settings_hash, program_version, data_version"
+)
+_SELECT = f"select {_COLUMNS} from night"
+_LAST_FINISHED = "the latest night that ended complete or incomplete"
 
 
 @dataclass(frozen=True)
@@ -49,13 +51,14 @@ class NightLedger(Session):
     ) -> int:
         """Record that a night has begun, and return its number."""
         with self.transaction():
-            number: int = self.value("select coalesce(max(id), 0) + 1 from night")
-            self.execute(
+            number: int = self.value(
                 """
-                insert into night values (?, ?, ?, ?, null, 'running', '[]', '{}', ?, ?,
-                    (select coalesce(max(id), 0) from ingest))
+                insert into night
+                select coalesce(max(id), 0) + 1, ?, ?, ?, null, 'running', '[]', '{}', ?, ?,
+                       (select coalesce(max(id), 0) from ingest) from night
+                returning id
                 """,
-                [number, kind, as_of, naive_utc(now), settings_hash, program_version],
+                [kind, as_of, naive_utc(now), settings_hash, program_version],
             )
         return number
 
@@ -84,15 +87,11 @@ class NightLedger(Session):
         if outcome not in _OUTCOMES:
             raise RhovaneError(f"outcome={outcome!r} is not known; allowed are {', '.join(_OUTCOMES)}.")
         with self.transaction():
-            found = self.rows("select outcome from night where id = ?", [int(night_id)])
-            if not found:
-                raise NotFound(f"There is no night {night_id} in the ledger.")
-            if found[0][0] != "running":
-                raise RhovaneError(f"Night {night_id} is finished already ({found[0][0]}); begin a new one.")
-            self.execute(
-                """
+            kept = self.rows(
+                f"""
                 update night set finished = ?, outcome = ?, steps = ?, counts = ?,
-                    data_version = coalesce(?, (select max(id) from ingest), 0) where id = ?
+                    data_version = coalesce(?, (select max(id) from ingest), 0)
+                where id = ? and outcome = 'running' returning {_COLUMNS}
                 """,
                 [
                     naive_utc(now),
@@ -103,9 +102,58 @@ class NightLedger(Session):
                     int(night_id),
                 ],
             )
+            if not kept:
+                found = self.rows("select outcome from night where id = ?", [int(night_id)])
+                if not found:
+                    raise NotFound(f"There is no night {night_id} in the ledger.")
+                raise RhovaneError(f"Night {night_id} is finished already ({found[0][0]}); begin a new one.")
+            known = self._remembered.get(_LAST_FINISHED)
+            if (
+                known is not None
+                and outcome != "failed"
+                and (known[0] is None or known[0].night_id < night_id)
+            ):
+                known[0] = _record(kept[0])
             self.expect_after_commit("nights", int(night_id))
             if checkpoint:
                 self.checkpoint_after_commit()
+
+    def keep_settings(self, settings_hash: str, text: str) -> None:
+        """Keep the text of settings under their hash, once."""
+        if settings_hash in self.remembered(_SETTINGS):
+            return
+        with self.transaction():
+            self.execute("insert into settings_used values (?, ?)", [settings_hash, text])
+        self.remembered(_SETTINGS)[settings_hash] = text
+
+    def settings_text(self, settings_hash: str) -> str:
+        """The text of the settings with this hash.
+
+        Raises
+        ------
+        NotFound
+            They were not kept: the night was run by a version of the program that did not.
+        """
+        found: str | None = self.remembered(_SETTINGS).get(settings_hash)
+        if found is None:
+            raise NotFound(
+                f"The store holds no settings {settings_hash}: the night was run by a version of the program that "
+                "did not keep them yet."
+            )
+        return found
+
+    def night(self, night_id: int) -> NightRecord:
+        """One night of the ledger.
+
+        Raises
+        ------
+        NotFound
+            There is no such night.
+        """
+        found = self.rows(f"{_SELECT} where id = ?", [int(night_id)])
+        if not found:
+            raise NotFound(f"There is no night {night_id} in the ledger.")
+        return _record(found[0])
 
     def nights(self, limit: int = 30) -> list[NightRecord]:
         """The latest nights, newest first."""
@@ -121,10 +169,32 @@ class NightLedger(Session):
 
     def last_finished_night(self) -> NightRecord | None:
         """The latest night that ended complete or incomplete, of any kind; None before the first."""
-        found = self.rows(
-            f"{_SELECT} where id = (select max(id) from night where outcome in ('complete', 'incomplete'))"
-        )
-        return _record(found[0]) if found else None
+        known = self._remembered.get(_LAST_FINISHED)
+        if known is None:
+            found = self.rows(
+                f"{_SELECT} where id = (select max(id) from night where outcome in ('complete', 'incomplete'))"
+            )
+            known = self._remembered[_LAST_FINISHED] = {0: _record(found[0]) if found else None}
+        last: NightRecord | None = known[0]
+        return last
+
+    def night_of(self, as_of: date) -> NightRecord:
+        """The latest night that finished for a day.
+
+        Raises
+        ------
+        NotFound
+            None has.
+        """
+        finished = "outcome in ('complete', 'incomplete')"
+        found = self.rows(f"{_SELECT} where as_of = ? and {finished} order by id desc limit 1", [as_of])
+        if not found:
+            first, last = self.rows(f"select min(as_of), max(as_of) from night where {finished}")[0]
+            known = (
+                f"the ledger's nights reach from {first} to {last}" if first else "the ledger holds none yet"
+            )
+            raise NotFound(f"No night of {as_of} has finished; {known}. Name one that has.")
+        return _record(found[0])
 
 
 def _record(row: tuple[Any, ...]) -> NightRecord:

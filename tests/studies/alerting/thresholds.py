@@ -15,6 +15,7 @@ import numpy as np
 
 from rhovane.stats.budget import RATES
 from rhovane.stats.chart import NODE_SHIFTS, gather
+from rhovane.stats.decisions import Decisions
 from rhovane.stats.network import structure_of
 from rhovane.stats.replay import Replay, Spans
 
@@ -42,7 +43,7 @@ def highest_evidence(n_paths: int, baseline: int, rng: np.random.Generator) -> t
     weight, lagged = np.full((1, n_days), HOURS - 2.0), np.zeros((1, n_days, 5))
     for i in range(n_paths):
         score = quiet_scores(n_days, rng)[None]
-        replay = Replay(score, weight, lagged, np.array([first]), structure, spans, NEVER)
+        replay = Replay(score, weight, lagged, np.array([first]), structure, spans, NEVER, Decisions())
         if replay.run():
             raise ArithmeticError(f"path {i} alarmed; choose a smaller rate for NEVER.")
         node, rising = np.zeros((2, len(NODE_SHIFTS))), 0.0
