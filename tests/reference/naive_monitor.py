@@ -33,9 +33,13 @@ def naive_levels(values: np.ndarray, *, steps: int = 24) -> tuple[np.ndarray, np
 
 
 def naive_ar2(level: np.ndarray) -> tuple[float, float]:
-    """Yule-Walker coefficients of order two from the pairs that exist, as the solution of the equations."""
+    """Yule-Walker coefficients of order two from the pairs that exist, as the solution of the equations.
+
+    A lag at which there are no pairs counts as uncorrelated.
+    """
     centred = level - np.nanmean(level)
-    c = [np.nanmean(centred[k:] * centred[: len(level) - k]) for k in range(3)]
+    products = [centred[k:] * centred[: len(level) - k] for k in range(3)]
+    c = [np.nanmean(p) if np.isfinite(p).any() else 0.0 for p in products]
     a = np.linalg.solve([[c[0], c[1]], [c[1], c[0]]], [c[1], c[2]])
     return float(a[0]), float(a[1])
 
@@ -66,7 +70,9 @@ def naive_innovations(level: np.ndarray, day: int, *, steps: int = 24) -> tuple[
     if np.isfinite(past).sum() < 14 * steps:
         return np.full(steps, np.nan), math.nan
     errors = naive_filter(level[begin : (day + 1) * steps], *naive_ar2(past))
-    sd = np.nanstd(errors[: len(past)])
+    in_a_row = [t for t in range(2, len(past)) if np.isfinite(past[t - 2 : t + 1]).all()]
+    enough = len(in_a_row) >= 0.3 * np.isfinite(past).sum()
+    sd = np.std([errors[t] for t in in_a_row]) if enough else np.nanstd(errors[: len(past)])
     by_day = past.reshape(-1, steps)
     known = by_day[np.isfinite(by_day).any(axis=1)]
     within = known - np.nanmean(known, axis=1, keepdims=True)
@@ -95,24 +101,31 @@ def naive_reference(score: np.ndarray, weight: np.ndarray, day: int, *, length: 
     return mean, math.sqrt(float((w * (z - mean) ** 2).sum()) / (len(days) - 1)), float(w.sum()), len(days)
 
 
-def naive_scale(history: list[np.ndarray], own: int) -> float:
-    """Out-of-sample standard deviation of one pair's deviations, shrunk to all pairs'."""
+def naive_scale(history: list[np.ndarray], own: int, judged: list[np.ndarray] | None = None) -> float:
+    """Out-of-sample standard deviation of one pair's deviations, shrunk to all pairs'.
+
+    ``judged`` holds for each pair the part of its history that was judged; all of it if left out.
+    """
 
     def products(z: np.ndarray, lag: int) -> np.ndarray:
         both = z[lag:] * z[: len(z) - lag] if lag < len(z) else np.empty(0)
         return both[np.isfinite(both)]
 
-    everything = np.concatenate([products(z, 0) for z in history])
-    pooled = (everything.sum() + 300.0) / (len(everything) + 300.0)
-    mine = products(history[own], 0)
-    variance = (mine.sum() + 150.0 * pooled) / (len(mine) + 150.0)
-    total = 0.0
+    def variance(parts: list[np.ndarray]) -> tuple[float, float]:
+        everything = np.concatenate([products(z, 0) for z in parts])
+        pooled = (everything.sum() + 300.0) / (len(everything) + 300.0)
+        mine = products(parts[own], 0)
+        return pooled, (mine.sum() + 75.0 * pooled) / (len(mine) + 75.0)
+
+    pooled, whole = variance(history)
+    sums = [0.0]
     for lag in (1, 2, 3, 4, 5, 6):
         shared = np.concatenate([products(z, lag) for z in history])
         common = shared.sum() / max(len(shared), 1) / pooled
         mine = products(history[own], lag)
-        total += (mine.sum() / variance + 400.0 * common) / (len(mine) + 400.0)
-    return math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), 2.0)))
+        sums.append(sums[-1] + (mine.sum() / whole + 200.0 * common) / (len(mine) + 200.0))
+    out_of_sample = variance(judged or history)[1]
+    return math.sqrt(out_of_sample * (1.0 + 2.0 * min(max(sums), 4.0)))
 
 
 def naive_evidence(z: np.ndarray, mean: float) -> np.ndarray:

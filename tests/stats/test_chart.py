@@ -29,7 +29,16 @@ def test_scale_equals_its_definition() -> None:
     z[1] *= 1.6
     for day in (20, 120, 299):
         history = [z[p, max(0, day - 200) : day - 14] for p in range(3)]
-        np.testing.assert_allclose(scales(z, day, 14), [naive_scale(history, p) for p in range(3)], rtol=1e-9)
+        known = np.isfinite(z).astype(float)
+        first = np.array([0, 60, 130])
+        judged = [z[p, max(0, day - 200, first[p]) : max(0, day - 14)] for p in range(3)]
+        expected = [naive_scale(history, p, judged) for p in range(3)]
+        got = scales(np.nan_to_num(z), known, np.zeros((0, 0), dtype=bool), first, day, 14)
+        np.testing.assert_allclose(got, expected, rtol=1e-9)
+        # Days that are barred are as if they were not known.
+        other = np.where(np.isnan(z), 7.0, z)
+        got = scales(other, np.ones(z.shape), np.isnan(z), first, day, 14)
+        np.testing.assert_allclose(got, expected, rtol=1e-9)
 
 
 @pytest.mark.parametrize("mean", [0.8, -0.8, 0.02])

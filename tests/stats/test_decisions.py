@@ -158,13 +158,13 @@ def decisions_by_night(n: int) -> tuple[list[SetAside], list[tuple[int, int]]]:
 def test_nights_with_decisions_between_them_give_what_a_fresh_replay_gives(monkeypatch: pytest.MonkeyPatch):
     scores, memory = history(7, lasting=250), WatchMemory()
     judged = []
-    plain_judge = Replay.judge
+    plain_judge = Replay.judge_until
 
-    def counting(self: Replay, day: int) -> None:
-        judged.append(day)
-        plain_judge(self, day)
+    def counting(self: Replay, end: int) -> None:
+        judged.extend(range(self.n_judged, end))
+        plain_judge(self, end)
 
-    monkeypatch.setattr(Replay, "judge", counting)
+    monkeypatch.setattr(Replay, "judge_until", counting)
     for n in range(120, N_DAYS + 1):
         before = len(judged)
         going = look(first_days(scores, n), *decisions_by_night(n), memory=memory)

@@ -126,3 +126,14 @@ def test_a_stuck_sensor_has_no_variance() -> None:
 def test_a_mistake_is_refused(values: np.ndarray, days: range | None, message: str) -> None:
     with pytest.raises(ValueError, match=message):
         series_scores(values, days)
+
+
+def test_readings_every_other_hour_are_whitened_by_the_filter_alone() -> None:
+    x = gappy_series(9, 40)
+    x[1::2] = np.nan
+    scores = series_scores(x)
+    _, _, level = naive_levels(x)
+    for day in (30, 39):
+        errors, _ = naive_innovations(level, day)
+        np.testing.assert_allclose(scores.innovation[day], errors, rtol=0, atol=1e-9)
+    assert np.isfinite(scores.innovation[39]).any()

@@ -89,24 +89,52 @@ def test_truncating_the_readings_never_changes_earlier_alarms() -> None:
     assert half_a_day_more == tuple(a for a in whole if a.day <= 170)
 
 
-def test_a_strictly_increasing_transform_changes_nothing() -> None:
-    values = small_network(3)
+@pytest.mark.parametrize("seed", [20, 21, 22])
+def test_what_comes_later_never_changes_a_day(seed: int) -> None:
+    values = small_network(seed)
+    other = values.copy()
+    other[24 * 156 :] = np.random.default_rng(seed).normal(size=other[24 * 156 :].shape)
+    one, two = (
+        monitor_network(v, PAIRS, names=NAMES, start=START, false_alarms_per_year=4.0).watch
+        for v in (values, other)
+    )
+    for name in ("score", "reference_mean", "deviation", "evidence", "threshold", "state"):
+        np.testing.assert_array_equal(getattr(one, name)[:156], getattr(two, name)[:156], err_msg=name)
+    early = [[(i.alarm_day, i.judged) for i in w.incidents if i.alarm_day < 156] for w in (one, two)]
+    assert early[0] == early[1]
+    assert early[0]
+
+
+@pytest.mark.parametrize("seed", [3, 13, 23])
+def test_strictly_increasing_transforms_and_other_units_change_nothing(seed: int) -> None:
+    values = small_network(seed)
     bent = np.stack(
         [
             np.exp(values[:, 0]),
             values[:, 1] ** 3,
-            1.9125 * values[:, 2],
+            1.9125 * values[:, 2] + 40.0,
             np.arctan(values[:, 3]),
             values[:, 4],
         ],
         1,
     )
-    assert alarms_of(values) == alarms_of(bent)
+    one, other = (
+        monitor_network(v, PAIRS, names=NAMES, start=START, false_alarms_per_year=4.0) for v in (values, bent)
+    )
+    assert one.alarms
+    assert one.alarms == other.alarms
+    np.testing.assert_array_equal(one.watch.evidence, other.watch.evidence)
+    pair, bent_pair = (
+        monitor_pair(v[:, 0], v[:, 1], start=START, false_alarms_per_year=2.0) for v in (values, bent)
+    )
+    assert pair.alarms == bent_pair.alarms
+    np.testing.assert_array_equal(pair.watch.evidence, bent_pair.watch.evidence)
 
 
-def test_the_order_of_series_and_pairs_does_not_matter() -> None:
-    values = small_network(4)
-    order = [3, 0, 4, 2, 1]
+@pytest.mark.parametrize("seed", [4, 14, 24])
+def test_the_order_of_series_and_pairs_does_not_matter(seed: int) -> None:
+    values = small_network(seed)
+    order = [int(k) for k in np.random.default_rng(seed).permutation(5)]
     moved = [(order.index(i), order.index(j), *lag) for i, j, *lag in PAIRS][::-1]
     one = alarms_of(values)
     other = alarms_of(values[:, order], moved, names=[NAMES[k] for k in order])
@@ -116,6 +144,13 @@ def test_the_order_of_series_and_pairs_does_not_matter() -> None:
         assert {*a.pairs} == {(order[i], order[j]) for i, j in b.pairs}
         if a.suspect[0] == "series":
             assert a.suspect[1] == order[b.suspect[1]]
+
+
+def test_a_pair_read_the_other_way_round_is_judged_alike() -> None:
+    x, y = related(12, 200, 0.6, 0.0, 150)
+    one, other = (monitor_pair(*v, start=START, false_alarms_per_year=1.0) for v in ((x, y), (y, x)))
+    assert one.alarms
+    assert one.alarms == other.alarms
 
 
 def test_missing_readings_never_alarm() -> None:

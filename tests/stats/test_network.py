@@ -2,20 +2,26 @@
 
 from __future__ import annotations
 
+import dataclasses
+
 import numpy as np
 import pytest
 
 from reference.naive_monitor import naive_reference
+from reference.naive_watch import naive_watch
+from rhovane.stats.decisions import Decisions, SetAside
 from rhovane.stats.network import (
     add_class_movement,
     directions,
     duplicate_nodes,
-    filtered,
+    inverse_among,
     learnt_covariance,
     references,
     structure_of,
     unrest,
+    whole_covariance,
 )
+from rhovane.stats.replay import Replay, Spans
 
 MEMBERS = [
     ("A.NO2", "B.NO2"),
@@ -65,16 +71,23 @@ def test_references_equal_their_definition() -> None:
             np.testing.assert_allclose(got[:, p], expected, rtol=1e-9)
 
 
-def test_class_movement_adds_along_the_classes_own_direction() -> None:
+def test_class_movement_adds_along_the_classes_own_direction_and_its_inverse_follows() -> None:
     movement = np.array([0.5, -1.0, 2.0, 0.3, 0.7])
     classes = np.array([0, 0, 0, 1, 1])
-    observed = np.array([True, True, True, True, False])
-    got = np.eye(5)
-    add_class_movement(got, classes, observed, movement, np.array([0.0, 0.0, 4.0, 9.0]))
+    scored, seen = np.array([True, True, True, True, False]), np.array([True, False, True, True, False])
+    variance = np.array([0.0, 0.0, 4.0, 9.0])
+    learnt = np.eye(5)
+    learnt[0, 2] = learnt[2, 0] = 0.4
+    got = whole_covariance(learnt, classes, scored, movement, variance)
     along = movement[:3] / np.sqrt(np.mean(movement[:3] ** 2))
-    expected = np.eye(5)
+    expected = learnt.copy()
     expected[:3, :3] += 9.0 * np.outer(along, along)
     np.testing.assert_allclose(got, expected, atol=1e-6)
+    inverse = inverse_among(np.linalg.inv(learnt), seen)
+    add_class_movement(inverse, classes, scored, seen, movement, variance)
+    chosen = np.ix_(seen, seen)
+    np.testing.assert_allclose(inverse[chosen], np.linalg.inv(got[chosen]), rtol=1e-12, atol=1e-12)
+    assert not inverse[~seen].any()
 
 
 def test_learnt_covariance_keeps_related_pairs_only() -> None:
@@ -95,30 +108,56 @@ def test_more_pairs_than_days_still_give_a_covariance() -> None:
     assert np.diag(got).tolist() == [1.0] * 200
 
 
-def test_a_lone_pairs_filter_is_its_own_t_statistic() -> None:
-    rng = np.random.default_rng(3)
-    past = rng.normal(0.3, 1.2, (1, 150))
-    t, n = filtered(np.ones((1, 1)), np.ones((1, 1)), np.array([2.0]), past, np.ones((1, 150)), 90)
-    last = past[0, -90:]
-    assert n[0] == 90
-    assert t[0] == pytest.approx((2.0 - last.mean()) / (last.std(ddof=1) * np.sqrt(1 + 1 / 90)))
+KNOWN = [
+    SetAside((0, 2), 70, 76),
+    SetAside((1, 3), 120, None, known=126, forgotten=139),
+    SetAside((0, 1, 2), 112, 131, known=120, judged=True),
+    SetAside((8, 9), 150, 170, known=155, forgotten=180),
+]
+"""Days of one series and of many, known always, at once and afterwards; withdrawn; judged all the same."""
+
+
+@pytest.mark.parametrize(("seed", "aside"), [(1, []), (2, []), (1, KNOWN), (2, KNOWN)])
+def test_the_evidence_of_a_small_network_equals_its_definition(seed: int, aside: list[SetAside]) -> None:
+    """Two classes, two stations' worth of nodes, gaps, and a weather that moves one class."""
+    rng = np.random.default_rng(seed)
+    pairs = [(f"{a}.{q}", f"{b}.{q}") for q in ("NO2", "O3") for a, b in ("AB", "BC", "AC", "CD")]
+    pairs += [("A.O3", "A.NO2"), ("E.rain", "F.rain")]
+    n_days = 190
+    score = (
+        rng.normal(0.8, 0.2, (len(pairs), n_days))
+        + 0.2 * rng.normal(size=n_days) * (np.arange(10) < 4)[:, None]
+    )
+    score[8] -= 1.6
+    score[rng.random(score.shape) < 0.07] = np.nan
+    hours = np.where(np.isnan(score), 0.0, rng.integers(10, 25, score.shape))
+    replay = Replay(
+        score, np.maximum(hours - 2.0, 1.0), np.zeros((*score.shape, 5)), np.full(len(pairs), 90),
+        structure_of(pairs), Spans(90, 14, 110), 1e-9, Decisions(tuple(aside)),
+    )  # fmt: skip
+    assert not replay.run()
+    scaled, value = naive_watch(score, hours, pairs, aside=[dataclasses.astuple(s) for s in aside])
+    np.testing.assert_allclose(replay.scaled, scaled, rtol=1e-7, atol=1e-9)
+    np.testing.assert_allclose(replay.values, value, rtol=1e-7, atol=1e-8)
+    assert np.isfinite(scaled[10:, 90:]).any(), "the network is meant to have nodes that are judged"
 
 
 def test_what_a_whole_class_does_is_taken_out() -> None:
-    """Six pairs of one class move together by 3 sd: alone each would stand out, with control none does."""
+    """Six pairs of one class move together by 3 sd for five days: each alone would alarm, together none does."""
     rng = np.random.default_rng(4)
-    past = rng.normal(size=(6, 180))
-    direction, movement = np.eye(6), np.ones(6)
-    covariance = np.eye(6)
-    add_class_movement(
-        covariance, np.zeros(6, np.int64), np.ones(6, bool), movement, np.array([0, 0, 0, 4.0])
-    )
-    together, one = np.full(6, 3.0), np.array([3.0, 0, 0, 0, 0, 0])
-    args = past, np.ones((6, 180)), 90
-    t_together, _ = filtered(direction, np.linalg.inv(covariance), together, *args)
-    t_one, _ = filtered(direction, np.linalg.inv(covariance), one, *args)
-    assert np.abs(t_together).max() < 1.0
-    assert t_one[0] > 2.2
+    pairs = [(f"{a}.NO2", f"{b}.NO2") for a, b in ("AB", "AC", "AD", "BC", "BD", "CD")]
+    score = rng.normal(0.8, 0.2, (6, 180))
+    together, one = score.copy(), score.copy()
+    together[:, 150:155] -= 0.6
+    one[0, 150:155] -= 0.6
+
+    def found(score: np.ndarray) -> int:
+        rest = (np.full((6, 180), 22.0), np.zeros((6, 180, 5)), np.full(6, 90))
+        incidents = Replay(score, *rest, structure_of(pairs), Spans(90, 14, 110), 0.3, Decisions()).run()
+        return sum(150 <= i.alarm_day < 160 for i in incidents)
+
+    assert found(together) == 0
+    assert found(one) == 1
 
 
 def test_a_failing_series_points_toward_loss_in_its_pairs_only() -> None:
@@ -126,9 +165,9 @@ def test_a_failing_series_points_toward_loss_in_its_pairs_only() -> None:
     belongs = np.zeros((len(structure.hypotheses), 5), dtype=bool)
     for row, one in zip(belongs, structure.hypotheses, strict=True):
         row[one.pairs] = True
-    is_node = np.array([h.kind != "pair" for h in structure.hypotheses])
     mean = np.arctanh([0.8, -0.6, 0.05, 0.5, 0.4])
-    direction, movement = directions(is_node, belongs, mean, np.full(5, 1.0), np.full(5, 16.0))
+    direction, movement = np.zeros(belongs.shape), np.zeros(5)
+    directions(belongs, mean, np.full(5, 1.0), np.full(5, 16.0), direction, movement)
     node = direction[5]
     assert node[0] < 0 < node[1]
     assert node[2] == node[3] == 0.0

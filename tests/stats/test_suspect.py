@@ -23,8 +23,10 @@ def setting() -> tuple[np.ndarray, np.ndarray]:
     belongs = np.zeros((len(NAMES), len(MEMBERS)), dtype=bool)
     for row, one in zip(belongs, STRUCTURE.hypotheses, strict=True):
         row[one.pairs] = True
-    is_node = np.array([kind != "pair" for kind, _ in NAMES])
-    direction, _ = directions(is_node, belongs, MEAN, np.ones(len(MEMBERS)), np.full(len(MEMBERS), 22.0))
+    direction = np.zeros(belongs.shape)
+    directions(
+        belongs, MEAN, np.ones(len(MEMBERS)), np.full(len(MEMBERS), 22.0), direction, np.zeros(len(MEMBERS))
+    )
     return np.where(shares == 2, 1.0, np.where(shares == 1, 0.3, 0.0)), direction
 
 

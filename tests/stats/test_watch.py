@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 from scipy.stats import poisson
 
-from rhovane.stats.chart import chart_alone
+from reference.naive_watch import naive_watch
 from rhovane.stats.daily_scores import DailyScores
 from rhovane.stats.watch import DayState, Watch, signal, watch
 
@@ -149,15 +149,15 @@ def test_what_the_whole_class_does_is_no_alarm() -> None:
     assert [i for i in alone.incidents if 200 <= i.alarm_day < 240]
 
 
-def test_a_pair_that_stands_alone_is_judged_by_the_chart_alone() -> None:
+def test_a_pair_that_stands_alone_is_judged_as_defined() -> None:
     score = np.random.default_rng(10).normal(0.8, 0.25, 300)
     score[np.random.default_rng(11).random(300) < 0.1] = np.nan
     seen = watch([daily(score)], false_alarms_per_year=0.001)
-    scaled, both, _ = chart_alone(score, 90, 14, 90)
+    hours = np.where(np.isnan(score), 0.0, 24.0)
+    scaled, value = naive_watch(score[None], hours[None], [("A.a", "B.b")])
     assert not seen.incidents
-    np.testing.assert_allclose(seen.deviation[:, 0], scaled, rtol=1e-6, atol=1e-9)
-    shown = ~np.isnan(both)
-    np.testing.assert_allclose(seen.evidence[shown, 0], both[shown], rtol=1e-6)
+    np.testing.assert_allclose(seen.deviation[:, 0], scaled[0], rtol=1e-7, atol=1e-9)
+    np.testing.assert_allclose(seen.evidence[:, 0], value[0], rtol=1e-7, atol=1e-8)
 
 
 def test_learning_lasts_a_baseline_and_a_late_pair_learns_two_thirds_of_one() -> None:

@@ -41,16 +41,16 @@ WEIGHT_OFFSET = 2.0
 """Joint hours that a daily score costs before it counts: its weight is hours - 2, at least 1."""
 SCALE_DAYS = 200
 """Days of past deviations from which their out-of-sample scale is estimated."""
-SCALE_PRIOR_DAYS = 150.0
+SCALE_PRIOR_DAYS = 75.0
 """Weight, in days, of the network's pooled variance in a pair's own."""
 POOL_PRIOR_DAYS = 300.0
 """Weight, in days, of variance 1 in the variance pooled over all charts."""
 SCALE_LAGS = 6
 """Days over which autocorrelation of deviations widens their scale: most of a week, as weather lasts."""
-AUTOCORRELATION_PRIOR_DAYS = 400.0
+AUTOCORRELATION_PRIOR_DAYS = 200.0
 """Weight, in days, of the network's pooled autocorrelation in a pair's own."""
-MAX_AUTOCORRELATION_SUM = 2.0
-"""The sum of autocorrelations counts from 0 to this."""
+MAX_AUTOCORRELATION_SUM = 4.0
+"""The sum of autocorrelations counts up to this."""
 LARGEST_STATISTIC = 1e12
 """The Shiryaev-Roberts statistic stops here; far above any threshold."""
 
@@ -74,68 +74,81 @@ def gather(statistic: Floats, z: float, shifts: Floats) -> None:
 
 
 @compiled
+def mean_of(values: Floats) -> float:
+    """Mean of a few values."""
+    total = 0.0
+    for value in values:
+        total += value
+    return total / len(values)
+
+
+@compiled
 def evidence(statistic: Floats, mean: float) -> float:
     """Logarithm of the averaged statistic, the direction of loss weighing more; ``mean`` is the reference."""
-    up = statistic[0].mean()
-    down = statistic[1].mean()
+    up, down = mean_of(statistic[0]), mean_of(statistic[1])
     share = LOSS_SHARE if abs(math.tanh(mean)) >= NO_RELATION else 0.5
     mixed = share * down + (1.0 - share) * up if mean >= 0.0 else share * up + (1.0 - share) * down
     return math.log(max(mixed, 1e-12))
 
 
 @compiled
-def standardised(t: Floats, n: NDArray[np.int64], judged: NDArray[np.bool_]) -> Floats:
-    """t statistics on n - 1 degrees of freedom as normal deviates; NaN where not judged or n is too small."""
-    out = np.full(len(t), np.nan)
-    for h in range(len(t)):
-        if judged[h] and n[h] >= MIN_REFERENCE_DAYS:
-            out[h] = normal_from_t(t[h], n[h] - 1.0)
-    return out
+def scale_from(
+    judged: Floats, sums: Floats, counts: Floats, pool_judged: Floats, pool: Floats, pool_counts: Floats
+) -> float:
+    """Out-of-sample standard deviation of a chart's deviations from sums of their products.
 
-
-@compiled
-def scale_from(sums: Floats, counts: Floats, pool: Floats, pool_counts: Floats) -> float:
-    """Out-of-sample standard deviation of a chart's deviations from sums of their products at lags 0 to 6.
-
-    Shrunk to the pool of all charts; positive autocorrelation over the lags widens it. Arrays have shape
-    (SCALE_LAGS + 1,).
+    ``judged`` holds sum and number of the squares of days that were judged, ``sums`` and ``counts`` (shape
+    (SCALE_LAGS + 1,)) those of the products at lags 0 to 6, reference days included. All are shrunk to the
+    pool of all charts. Autocorrelation widens the scale, summed up to the lag where the sum is largest: what
+    chance takes away at later lags would otherwise narrow the scale of a pair that is persistent.
     """
-    pooled = (pool[0] + POOL_PRIOR_DAYS) / (pool_counts[0] + POOL_PRIOR_DAYS)
-    variance = (sums[0] + SCALE_PRIOR_DAYS * pooled) / (counts[0] + SCALE_PRIOR_DAYS)
-    total = 0.0
+    pooled = (pool_judged[0] + POOL_PRIOR_DAYS) / (pool_judged[1] + POOL_PRIOR_DAYS)
+    variance = (judged[0] + SCALE_PRIOR_DAYS * pooled) / (judged[1] + SCALE_PRIOR_DAYS)
+    common = (pool[0] + POOL_PRIOR_DAYS) / (pool_counts[0] + POOL_PRIOR_DAYS)
+    own = (sums[0] + SCALE_PRIOR_DAYS * common) / (counts[0] + SCALE_PRIOR_DAYS)
+    total, largest = 0.0, 0.0
     for lag in range(1, SCALE_LAGS + 1):
-        common = pool[lag] / max(pool_counts[lag], 1.0) / pooled
-        total += (sums[lag] / variance + AUTOCORRELATION_PRIOR_DAYS * common) / (
+        shared = pool[lag] / max(pool_counts[lag], 1.0) / common
+        total += (sums[lag] / own + AUTOCORRELATION_PRIOR_DAYS * shared) / (
             counts[lag] + AUTOCORRELATION_PRIOR_DAYS
         )
-    return math.sqrt(variance * (1.0 + 2.0 * min(max(total, 0.0), MAX_AUTOCORRELATION_SUM)))
+        largest = max(largest, total)
+    return math.sqrt(variance * (1.0 + 2.0 * min(largest, MAX_AUTOCORRELATION_SUM)))
 
 
 @compiled
-def scales(z: Floats, day: int, guard_days: int) -> Floats:
+def scales(
+    z: Floats, known: Floats, barred: NDArray[np.bool_], first: NDArray[np.int64], day: int, guard_days: int
+) -> Floats:
     """Out-of-sample standard deviation of each chart's deviations, see :func:`scale_from`.
 
-    ``z`` has shape (n_charts, n_days), NaN on days that do not count; the 200 days before ``day`` up to the
-    guard are used.
+    ``z`` has shape (n_charts, n_days), ``known`` is 1 for the days that count; both are 0 elsewhere. Days that
+    are ``barred`` do not count either; no rows: none are. The 200 days before ``day`` up to the guard are used;
+    those before a chart's ``first`` are reference days.
     """
     n_charts = len(z)
     begin, end = max(0, day - SCALE_DAYS), max(0, day - guard_days)
     sums, counts = np.zeros((n_charts, SCALE_LAGS + 1)), np.zeros((n_charts, SCALE_LAGS + 1))
+    judged = np.zeros((n_charts, 2))
+    pool, pool_counts, pool_judged = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1), np.zeros(2)
+    n = max(0, end - begin)
     for h in range(n_charts):
-        for lag in range(SCALE_LAGS + 1):
-            for t in range(begin + lag, end):
-                product = z[h, t] * z[h, t - lag]
-                if not np.isnan(product):
-                    sums[h, lag] += product
-                    counts[h, lag] += 1.0
-    pool, pool_counts = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1)
-    for h in range(n_charts):
-        for lag in range(SCALE_LAGS + 1):
+        past, seen = z[h, begin:end], known[h, begin:end]
+        if len(barred) and barred[h, begin:end].any():
+            past, seen = past * ~barred[h, begin:end], seen * ~barred[h, begin:end]
+        for lag in range(min(SCALE_LAGS + 1, n)):
+            sums[h, lag] = np.dot(past[lag:], past[: n - lag])
+            counts[h, lag] = np.dot(seen[lag:], seen[: n - lag])
             pool[lag] += sums[h, lag]
             pool_counts[lag] += counts[h, lag]
+        for t in range(max(0, first[h] - begin), n):
+            judged[h, 0] += past[t] * past[t]
+            judged[h, 1] += seen[t]
+        pool_judged[0] += judged[h, 0]
+        pool_judged[1] += judged[h, 1]
     out = np.empty(n_charts)
     for h in range(n_charts):
-        out[h] = scale_from(sums[h], counts[h], pool, pool_counts)
+        out[h] = scale_from(judged[h], sums[h], counts[h], pool_judged, pool, pool_counts)
     return out
 
 
@@ -152,55 +165,4 @@ def gather_all(z: Floats, mean: Floats, statistic: Floats, values: Floats) -> No
         if h < len(mean):
             values[h] = evidence(statistic[h], mean[h])
         else:
-            values[h] = math.log(max(statistic[h, 0].mean(), 1e-12))
-
-
-@compiled
-def chart_alone(
-    score: Floats, baseline_days: int, guard_days: int, first: int
-) -> tuple[Floats, Floats, Floats]:
-    """One chart without incidents: scaled deviations, log evidence of a pair and of a node by day.
-
-    What the watch makes of a pair that no other is related to, with equal weights, before its first alarm;
-    the thresholds were simulated with it. ``score`` has shape (n_days,); the chart begins on day ``first``.
-    """
-    n_days = len(score)
-    raw = np.full(n_days, np.nan)
-    scaled, both, rising = np.full(n_days, np.nan), np.full(n_days, np.nan), np.full(n_days, np.nan)
-    statistic, node = np.zeros((2, len(SHIFTS))), np.zeros((2, len(NODE_SHIFTS)))
-    # Running sums over the days of products at each lag, and how many exist.
-    products, known = np.zeros((n_days + 1, SCALE_LAGS + 1)), np.zeros((n_days + 1, SCALE_LAGS + 1))
-    sums, counts = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1)
-    for day in range(first, n_days):
-        n = 0
-        total, squares = 0.0, 0.0
-        at = day - guard_days - 1
-        while at >= 0 and n < baseline_days:
-            if not np.isnan(score[at]):
-                n += 1
-                total += score[at]
-                squares += score[at] * score[at]
-            at -= 1
-        if n >= MIN_REFERENCE_DAYS and not np.isnan(score[day]):
-            mean = total / n
-            variance = (squares - n * mean * mean) / (n - 1)
-            t = (score[day] - mean) / math.sqrt(max(variance, 1e-12) * (1.0 + 1.0 / n))
-            z = normal_from_t(t, n - 1.0)
-            raw[day] = min(max(z, -MAX_DEVIATION), MAX_DEVIATION)
-            end = max(first, day - guard_days)
-            for lag in range(SCALE_LAGS + 1):
-                begin = min(max(first, day - SCALE_DAYS) + lag, end)
-                sums[lag] = products[end, lag] - products[begin, lag]
-                counts[lag] = known[end, lag] - known[begin, lag]
-            scale = scale_from(sums, counts, sums, counts)
-            scaled[day] = min(max(z / scale, -MAX_DEVIATION), MAX_DEVIATION)
-            gather(statistic, scaled[day], SHIFTS)
-            gather(node, scaled[day], NODE_SHIFTS)
-            both[day] = evidence(statistic, mean)
-            rising[day] = math.log(max(node[0].mean(), 1e-12))
-        for lag in range(SCALE_LAGS + 1):
-            products[day + 1, lag], known[day + 1, lag] = products[day, lag], known[day, lag]
-            if day >= lag and not np.isnan(raw[day] * raw[day - lag]):
-                products[day + 1, lag] += raw[day] * raw[day - lag]
-                known[day + 1, lag] += 1.0
-    return scaled, both, rising
+            values[h] = math.log(max(mean_of(statistic[h, 0]), 1e-12))

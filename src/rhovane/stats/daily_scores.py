@@ -22,7 +22,6 @@ from numpy.typing import NDArray
 
 from rhovane.stats.compiled import compiled
 from rhovane.stats.hourly_scores import (
-    CLIP,
     FIT_DAYS,
     SERIES_HISTORY_DAYS,
     SeriesScores,
@@ -30,6 +29,7 @@ from rhovane.stats.hourly_scores import (
     series_scores,
     sort_present,
 )
+from rhovane.stats.whitening import CLIP
 
 Floats = NDArray[np.float64]
 

@@ -14,7 +14,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 Flags = NDArray[np.bool_]
-Floats = NDArray[np.float64]
 
 
 @dataclass(frozen=True)
@@ -61,6 +60,11 @@ class Decisions:
         """Whether something becomes known, or is no longer, as this day is judged."""
         return any(day in (s.known, s.forgotten) for s in self.set_aside)
 
+    def next_turning(self, day: int, end: int) -> int:
+        """The first later day on which something becomes known or is no longer; ``end`` where that is earlier."""
+        turns = [t for s in self.set_aside for t in (s.known, s.forgotten) if t is not None and t > day]
+        return min([end, *turns])
+
     def known_on(self, day: int, belongs: Flags, n_days: int) -> Knowledge:
         """What is known when ``day`` is judged; ``belongs`` (n_charts, n_pairs) says which pairs a chart is on."""
         barred = np.zeros((belongs.shape[1], n_days), dtype=bool)
@@ -71,8 +75,13 @@ class Decisions:
                 barred[list(one.pairs), rows] = True
                 if not one.judged:
                     unjudged[list(one.pairs), rows] = True
-        share = belongs.astype(np.float64) @ barred
-        return Knowledge(self, barred, unjudged, 2.0 * share > belongs.sum(axis=1, keepdims=True))
+        concerned = np.flatnonzero(barred.any(axis=1))
+        if not len(concerned):
+            return Knowledge(self, barred, unjudged, np.zeros((0, 0), dtype=bool))
+        n_barred = np.zeros((len(belongs), n_days), dtype=np.int64)
+        for pair in concerned:
+            n_barred[belongs[:, pair]] += barred[pair]
+        return Knowledge(self, barred, unjudged, 2 * n_barred > belongs.sum(axis=1, keepdims=True))
 
     def reaching_back(self, day: int) -> list[int]:
         """Pairs of which earlier days become known as set aside when ``day`` is judged."""
@@ -105,7 +114,8 @@ class Knowledge:
     """Decisions as known on one day, as flags of shape (n_pairs, n_days).
 
     ``barred`` days enter no reference, ``unjudged`` ones do not alarm either; ``charts`` (n_charts, n_days)
-    are those on which most pairs of a chart are barred.
+    are those on which most pairs of a chart are barred: its outputs there do not say how widely it scatters.
+    Where nothing is barred ``charts`` is empty.
     """
 
     decisions: Decisions
@@ -116,10 +126,6 @@ class Knowledge:
     def referable(self, usable: Flags) -> Flags:
         """The usable days that may enter a reference."""
         return usable & ~self.barred if self.decisions.set_aside else usable
-
-    def outputs(self, past: Floats) -> Floats:
-        """Past outputs of the charts that may say how widely they scatter; NaN for the others."""
-        return np.where(self.charts, np.nan, past) if self.decisions.set_aside else past
 
 
 def checked_decisions(

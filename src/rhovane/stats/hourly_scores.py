@@ -23,6 +23,7 @@ from scipy.special import ndtri
 
 from rhovane.stats.arguments import as_series
 from rhovane.stats.compiled import compiled
+from rhovane.stats.whitening import whiten
 
 Floats = NDArray[np.float64]
 
@@ -38,12 +39,6 @@ FIT_DAYS = 90
 """Days before a day on which its AR(2) process and its scale are fitted."""
 MIN_FIT_DAYS = 14
 """Days' worth of observations among those, below which a day gets no innovations."""
-MAX_BRIDGED_VARIANCE = 2.5
-"""An innovation after a gap is kept while its forecast variance is at most this multiple of the usual one."""
-CLIP = 3.5
-"""Innovations beyond this many standard deviations count as that many."""
-MAX_PARTIAL_AUTOCORRELATION = 0.99
-"""Fitted partial autocorrelations are kept inside this, so that the process is stationary."""
 SERIES_HISTORY_DAYS = FIT_DAYS + CYCLE_DAYS + RANK_DAYS - 1
 """Days of readings, the scored day included, that its hourly scores depend on."""
 SCORED_BEFORE_DAYS = FIT_DAYS + CYCLE_DAYS - 1
@@ -152,7 +147,8 @@ def series_scores(
     -----
     Yule-Walker estimates from the pairs of readings that exist at each lag; forecast errors and their
     variances from the Kalman filter, see Jones (1980). An error after a gap is divided by the square root
-    of its variance, and dropped where that variance is more than 2.5 times the usual one.
+    of its variance, and dropped where that variance is more than 2.5 times the usual one. Their scale comes from
+    the levels that have two others right before them.
 
     References
     ----------
@@ -289,63 +285,6 @@ def remove_daily_cycle(score: Floats, first: int, cycle_days: int) -> Floats:
 
 
 @compiled
-def fit_ar2(level: Floats) -> tuple[float, float]:
-    """AR(2) coefficients of a gappy series by Yule-Walker, kept stationary."""
-    n = len(level)
-    total = 0.0
-    count = 0
-    for t in range(n):
-        if not np.isnan(level[t]):
-            total += level[t]
-            count += 1
-    mean = total / count
-    products = np.zeros(3)
-    counts = np.zeros(3)
-    for t in range(n):
-        if np.isnan(level[t]):
-            continue
-        for lag in range(min(3, t + 1)):
-            if not np.isnan(level[t - lag]):
-                products[lag] += (level[t] - mean) * (level[t - lag] - mean)
-                counts[lag] += 1
-    if products[0] <= 0.0:
-        return 0.0, 0.0
-    variance = products[0] / counts[0]
-    limit = MAX_PARTIAL_AUTOCORRELATION
-    r1 = products[1] / max(counts[1], 1.0) / variance
-    r2 = products[2] / max(counts[2], 1.0) / variance
-    r1 = min(max(r1, -limit), limit)
-    partial = min(max((r2 - r1 * r1) / (1.0 - r1 * r1), -limit), limit)
-    return r1 * (1.0 - partial), partial
-
-
-@compiled
-def filter_ar2(level: Floats, a1: float, a2: float, out: Floats) -> None:
-    """Forecast errors of an AR(2) process over a gappy series, each in units of its own forecast error.
-
-    State: forecasts of this and the last level with their covariance, in units of the innovation variance.
-    """
-    unknown = 1e4  # forecast variance before the first reading: nothing is known
-    now, last, v11, v12, v22 = 0.0, 0.0, unknown, 0.0, unknown
-    for t in range(len(level)):
-        forecast = a1 * now + a2 * last
-        f11 = a1 * a1 * v11 + 2.0 * a1 * a2 * v12 + a2 * a2 * v22 + 1.0
-        f12 = a1 * v11 + a2 * v12
-        f22 = v11
-        if np.isnan(level[t]):
-            last, now = now, forecast
-            v11, v12, v22 = f11, f12, f22
-            out[t] = np.nan
-        else:
-            error = level[t] - forecast
-            gain = f12 / f11
-            out[t] = error / np.sqrt(f11) if f11 <= MAX_BRIDGED_VARIANCE else np.nan
-            last = now + gain * error
-            now = level[t]
-            v11, v12, v22 = 0.0, 0.0, f22 - gain * f12
-
-
-@compiled
 def within_day_sd(values: Floats, first: int, fit_days: int, min_fit: int) -> Floats:
     """Standard deviation about daily means over the days before each of the rows ``first`` to the last."""
     n_days, steps = values.shape
@@ -368,37 +307,4 @@ def within_day_sd(values: Floats, first: int, fit_days: int, min_fit: int) -> Fl
             squares += within[earlier]
         if count >= min_fit:
             out[day - first] = np.sqrt(squares / count)
-    return out
-
-
-@compiled
-def whiten(level: Floats, first: int, fit_days: int, min_fit: int) -> Floats:
-    """Innovations of the rows ``first`` to the last, each day from a process fitted to the days before it."""
-    n_days, steps = level.shape
-    out = np.full((n_days - first, steps), np.nan)
-    flat = level.reshape(n_days * steps)
-    errors = np.empty((fit_days + 1) * steps)
-    for day in range(first, n_days):
-        begin = max(0, day - fit_days)
-        past = flat[begin * steps : day * steps]
-        known = 0
-        for t in range(len(past)):
-            known += not np.isnan(past[t])
-        if known < min_fit:
-            continue
-        a1, a2 = fit_ar2(past)
-        filter_ar2(flat[begin * steps : (day + 1) * steps], a1, a2, errors)
-        total = 0.0
-        squares = 0.0
-        kept = 0
-        for t in range(len(past)):
-            if not np.isnan(errors[t]):
-                total += errors[t]
-                squares += errors[t] * errors[t]
-                kept += 1
-        if kept < 2:
-            continue
-        sd = np.sqrt(max(squares / kept - (total / kept) ** 2, 1e-12))
-        for t in range(steps):
-            out[day - first, t] = min(max(errors[len(past) + t] / sd, -CLIP), CLIP)
     return out

@@ -137,30 +137,35 @@ def quantity_of(key: str) -> str:
     return key.partition(".")[2]
 
 
+@compiled
 def unrest(deviation: Floats, touches: Flags) -> Floats:
     """How restless the rest of the network is today, for each chart: 1 is usual.
 
     The median absolute deviation of the pairs that a chart does not touch, over that of a normal variable;
     NaN with fewer than six of them. ``deviation`` has shape (n_pairs,), ``touches`` (n_charts, n_pairs).
     """
-    size = np.abs(deviation)
-    order = np.argsort(size)[: int(np.isfinite(size).sum())]  # NaN sorts last
-    return medians_of_others(size, order, touches) / NORMAL_MEDIAN
-
-
-@compiled
-def medians_of_others(size: Floats, order: NDArray[np.int64], touches: Flags) -> Floats:
-    """Median of ``size`` (ascending in ``order``) over the pairs that each chart does not touch."""
+    order = np.empty(len(deviation), dtype=np.int64)  # by size, smallest first, without NaN
+    known = 0
+    for p in range(len(deviation)):
+        if np.isnan(deviation[p]):
+            continue
+        at = known
+        while at > 0 and abs(deviation[order[at - 1]]) > abs(deviation[p]):
+            order[at] = order[at - 1]
+            at -= 1
+        order[at] = p
+        known += 1
     out = np.full(len(touches), np.nan)
-    others = np.empty(len(order))
+    others = np.empty(known)
     for h in range(len(touches)):
         n = 0
-        for p in order:
+        for k in range(known):
+            p = order[k]
             if not touches[h, p]:
-                others[n] = size[p]
+                others[n] = abs(deviation[p])
                 n += 1
         if n >= LEAST_OTHER_PAIRS:
-            out[h] = 0.5 * (others[(n - 1) // 2] + others[n // 2])
+            out[h] = 0.5 * (others[(n - 1) // 2] + others[n // 2]) / NORMAL_MEDIAN
     return out
 
 
@@ -228,46 +233,118 @@ def _positive(matrix: Floats) -> bool:
 
 
 @compiled
-def add_class_movement(
-    covariance: Floats, classes: NDArray[np.int64], observed: Flags, movement: Floats, variance: Floats
-) -> None:
-    """Add to a covariance the common movement of each class along ``movement`` (n_pairs,); in place.
+def inverse_among(inverse: Floats, chosen: Flags) -> Floats:
+    """Inverse of the chosen rows and columns of a matrix, from that of the whole; 0 elsewhere; shape (n, n).
 
-    ``variance[k]`` is that of a class with *k* pairs observed (the last entry for larger ones), where the
-    movement is scaled to a mean square of one over them.
+    Leaving one out takes an outer product of its column from the inverse of the rest.
+    """
+    out = inverse.copy()
+    n = len(out)
+    column = np.empty(n)
+    for gone in range(n):
+        if chosen[gone]:
+            continue
+        corner = out[gone, gone]
+        for j in range(n):
+            column[j] = out[gone, j]
+        for i in range(n):
+            share = column[i] / corner
+            if share != 0.0:
+                for j in range(n):
+                    out[i, j] -= share * column[j]
+        for j in range(n):
+            out[gone, j] = 0.0
+            out[j, gone] = 0.0
+    return out
+
+
+@compiled
+def class_movement(
+    number: int, classes: NDArray[np.int64], scored: Flags, movement: Floats, variance: Floats
+) -> Floats:
+    """Direction in which a whole class moves, (n_pairs,), as long as the standard deviation of that movement.
+
+    ``variance[k]`` is that of a class with *k* pairs scored (the last entry for larger ones), where the
+    movement has a mean square of one over them.
+    """
+    out = np.zeros(len(classes))
+    count = 0
+    squares = 0.0
+    for i in range(len(classes)):
+        if classes[i] == number and scored[i]:
+            out[i] = movement[i]
+            count += 1
+            squares += movement[i] * movement[i]
+    size = np.sqrt(variance[min(count, len(variance) - 1)] / (squares / max(count, 1) + 1e-9))
+    for i in range(len(classes)):
+        out[i] *= size
+    return out
+
+
+@compiled
+def whole_covariance(
+    learnt: Floats, classes: NDArray[np.int64], scored: Flags, movement: Floats, variance: Floats
+) -> Floats:
+    """Covariance of a night's deviations: what was learnt and the movement of each class."""
+    out = learnt.copy()
+    for number in range(classes.max() + 1):
+        along = class_movement(number, classes, scored, movement, variance)
+        for i in range(len(out)):
+            for j in range(len(out)):
+                out[i, j] += along[i] * along[j]
+    return out
+
+
+@compiled
+def add_class_movement(
+    inverse: Floats,
+    classes: NDArray[np.int64],
+    scored: Flags,
+    seen: Flags,
+    movement: Floats,
+    variance: Floats,
+) -> None:
+    """Let the inverse of a covariance among the pairs seen know of the movement of each class; in place.
+
+    One class adds an outer product to the covariance, hence takes one from its inverse (Sherman & Morrison
+    1950). See :func:`class_movement`.
     """
     for number in range(classes.max() + 1):
-        count = 0
-        squares = 0.0
-        for i in range(len(classes)):
-            if classes[i] == number and observed[i]:
-                count += 1
-                squares += movement[i] * movement[i]
-        size = variance[min(count, len(variance) - 1)]
-        if count == 0 or size == 0.0:
-            continue
-        size /= squares / count + 1e-9
-        for i in range(len(classes)):
-            for j in range(len(classes)):
-                if classes[i] == number and classes[j] == number and observed[i] and observed[j]:
-                    covariance[i, j] += size * movement[i] * movement[j]
+        along = class_movement(number, classes, scored, movement, variance)
+        moved = np.zeros(len(along))
+        growth = 1.0
+        for i in range(len(along)):
+            if seen[i] and along[i] != 0.0:
+                for j in range(len(along)):
+                    moved[j] += inverse[i, j] * along[i]
+        for i in range(len(along)):
+            growth += along[i] * moved[i]
+        for i in range(len(along)):
+            share = moved[i] / growth
+            if share != 0.0:
+                for j in range(len(along)):
+                    inverse[i, j] -= share * moved[j]
 
 
+@compiled
 def directions(
-    is_node: Flags, belongs: Flags, mean: Floats, sd: Floats, weight: Floats
-) -> tuple[Floats, Floats]:
+    belongs: Flags, mean: Floats, sd: Floats, weight: Floats, direction: Floats, movement: Floats
+) -> None:
     """Direction of each hypothesis in the space of deviations, and of each class's common movement.
 
-    Returns shapes (n_hypotheses, n_pairs) and (n_pairs,). A failing series or station moves each of its
-    pairs from its reference correlation toward half of it; a season moves a class in proportion to
-    r / (1 + |r|). Both in units of the night's standard deviation of each pair. ``belongs`` has shape
-    (n_hypotheses, n_pairs).
+    Fills ``direction`` (n_hypotheses, n_pairs), pairs first, and ``movement`` (n_pairs,). A failing series or
+    station moves each of its pairs from its reference correlation toward half of it; a season moves a class
+    in proportion to r / (1 + |r|). Both in units of the night's standard deviation of each pair. ``belongs``
+    has shape (n_hypotheses, n_pairs).
     """
-    r = np.nan_to_num(np.tanh(mean))
-    unit = np.nan_to_num(np.sqrt(weight) / sd)
-    fall = np.where(np.abs(r) >= LEAST_RELATION, (np.arctanh(FAILING_SHARE * r) - np.arctanh(r)) * unit, 0.0)
-    out: Floats = np.where(is_node[:, None], fall, 1.0) * belongs
-    return out, r / (1.0 + np.abs(r)) * unit
+    n_pairs = len(mean)
+    for p in range(n_pairs):
+        r = 0.0 if np.isnan(mean[p]) else np.tanh(mean[p])
+        unit = 0.0 if np.isnan(mean[p]) else np.sqrt(weight[p]) / sd[p]
+        fall = (np.arctanh(FAILING_SHARE * r) - np.arctanh(r)) * unit if abs(r) >= LEAST_RELATION else 0.0
+        movement[p] = r / (1.0 + abs(r)) * unit
+        for h in range(len(belongs)):
+            direction[h, p] = (1.0 if h < n_pairs else fall) * belongs[h, p]
 
 
 def duplicate_nodes(structure: Structure, direction: Floats, inverse: Floats) -> Flags:
@@ -281,23 +358,3 @@ def duplicate_nodes(structure: Structure, direction: Floats, inverse: Floats) ->
             for i, h in enumerate(structure.hypotheses)
         ]
     )
-
-
-def filtered(
-    direction: Floats, inverse: Floats, today: Floats, history: Floats, known: Flags, length: int
-) -> tuple[Floats, NDArray[np.int64]]:
-    """Each hypothesis's evidence today as a t statistic on its own history, and its number of days.
-
-    ``today`` (n_pairs,) and ``history`` (n_pairs, n_days) are deviations, zero where not known.
-    """
-    filters = direction @ inverse
-    size = np.abs(filters)
-    share = (size @ known) / np.maximum(size.sum(axis=1, keepdims=True), 1e-9)
-    use = share >= LEAST_HISTORY_SHARE
-    use &= use[:, ::-1].cumsum(axis=1)[:, ::-1] <= length
-    past = filters @ history
-    n = use.sum(axis=1)
-    mean = (past * use).sum(axis=1) / np.maximum(n, 1)
-    variance = (np.where(use, past - mean[:, None], 0.0) ** 2).sum(axis=1) / np.maximum(n - 1, 1)
-    t = (filters @ today - mean) / np.sqrt(np.maximum(variance * (1.0 + 1.0 / np.maximum(n, 1)), 1e-12))
-    return t, n

@@ -8,22 +8,29 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.stats.budget import threshold
-from rhovane.stats.chart import MAX_DEVIATION, MIN_REFERENCE_DAYS, SHIFTS, gather_all, scales, standardised
+from rhovane.stats.chart import MIN_REFERENCE_DAYS, SHIFTS
 from rhovane.stats.decisions import Decisions
 from rhovane.stats.incident import Incident, Judgement, OpenIncident, onset_day, weighted_mean
 from rhovane.stats.network import (
     CLASS_VARIANCE,
-    HISTORY_DAYS,
-    LEAST_OBSERVED_SHARE,
     MAX_HISTORY_DEVIATION,
     Structure,
-    add_class_movement,
-    directions,
     duplicate_nodes,
-    filtered,
     learnt_covariance,
     references,
-    unrest,
+    whole_covariance,
+)
+from rhovane.stats.night import (
+    CHANGED,
+    Links,
+    Records,
+    Standing,
+    View,
+    empty_view,
+    filters_of,
+    judge_until_crossing,
+    look,
+    standardised_history,
 )
 from rhovane.stats.onset import onset_range
 from rhovane.stats.suspect import explain, lag_movement, slipped_node
@@ -37,18 +44,12 @@ RELEARN_DAYS = 7
 """Days between two estimates of the covariance between pairs."""
 NODE_REVIEW_DAYS = 28
 """Days between two reviews of which nodes are told apart from their pairs."""
-UNREST_POWER = 2
-"""Power of the unrest that deviations are divided by; 1 leaves a fifth more false alarms."""
-UNREST_DAYS = 5
-"""Days over which the unrest elsewhere in the network is averaged."""
 SETTLING_DAYS = 7
 """Days after an alarm over which the suspect is judged anew each night, then fixed."""
 MOVED = 2.0
 """Standard deviations by which a pair of the suspect must have moved since the onset to count as changed."""
 MERGING_DAYS = 10
 """Days after an alarm within which crossings of related charts belong to it."""
-MAX_KEPT_DEVIATION = 7.0
-"""Deviations that explain an incident are kept inside this."""
 RETURN_EVIDENCE = 5.0
 """Log likelihood ratio at which changed pairs count as back at their reference."""
 MAX_RETURN_STEP = 2.5
@@ -57,7 +58,6 @@ RETURN_OVERLAP_DAYS = 3
 """Days before a return is recognised that already belong to the reference again."""
 REBASELINE_SKIP_DAYS = 7
 """Days from the onset on that stay out of the new reference after re-baselining."""
-LEARNING, WATCHED, CHANGED, NOT_SCORED, NOT_JUDGED = 0, 1, 2, 3, 4
 
 
 @dataclass(frozen=True)
@@ -71,13 +71,11 @@ class Spans:
 
 @dataclass
 class Night:
-    """One day's view of the network, for its charts and for explaining an incident."""
+    """One day's view of the network, for explaining an incident."""
 
     day: int
     mean: Floats
-    sd: Floats
     deviation: Floats
-    observed: Flags
     covariance: Floats
     direction: Floats
 
@@ -105,12 +103,13 @@ class Replay:
         self.score, self.weight, self.lagged, self.ready = score, weight, lagged, ready
         self.structure, self.spans = structure, spans
         self.first = int(ready.min(initial=n_days))
-        self.learnt: Floats | None = None
+        self.n_judged = 0
         self.usable = np.isfinite(score)
         self.frozen = np.full((3, n_pairs), np.nan)
         self.held = np.zeros(n_pairs, dtype=bool)
         self.statistic = np.zeros((n_charts, 2, len(SHIFTS)))
-        self.counted, self.scaled = np.full((n_charts, n_days), np.nan), np.full((n_charts, n_days), np.nan)
+        self.counted, self.counts = np.zeros((n_charts, n_days)), np.zeros((n_charts, n_days))
+        self.scaled = np.full((n_charts, n_days), np.nan)
         self.unrest = np.full((n_charts, n_days), np.nan)
         self.spoiled = np.zeros((n_charts, n_days), dtype=bool)
         self.kept = np.full((n_pairs, n_days), np.nan)
@@ -130,19 +129,35 @@ class Replay:
         same_class = structure.classes[:, None] == structure.classes[None, :]
         self.same_class = (belongs @ same_class.astype(int)) > 0
         self.rate = false_alarms_per_year
-        self.live = self.is_node.copy()
+        self.live, self.begun = np.ones(n_charts, dtype=bool), np.full(n_charts, -1)
+        self.learnt, self.inverse = np.eye(n_pairs), np.eye(n_pairs)
         self.limit = np.full(n_charts, np.inf)
         self._share_budget()
         self.known = decisions.known_on(-1, belongs, n_days)
 
     def run(self) -> tuple[Incident, ...]:
         """Judge every day; the incidents in order of their alarm day."""
-        for day in range(self.score.shape[1]):
-            self.judge(day)
+        self.judge_until(self.score.shape[1])
         return self.incidents()
 
-    def judge(self, day: int) -> None:
-        """Judge one day; days must come in order."""
+    def judge_until(self, end: int) -> None:
+        """Judge the days that are not judged yet, up to the one before ``end``."""
+        related = self.structure.n_pairs < self.structure.related.sum()
+        while self.n_judged < end:
+            day, view = self.n_judged, empty_view(*self.belongs.shape)
+            self._heed(day)
+            stop = day + 1 if self.open else self.known.decisions.next_turning(day, end)
+            if related:
+                stop = min(stop, self._prepare(day, view))
+            day = judge_until_crossing(
+                day, stop, self.first, self.spans.guard_days, self.spans.baseline_days,
+                self._links(), self._records(), self._standing(), view,
+            )  # fmt: skip
+            self._answer(day, view)
+            self.n_judged = day + 1
+
+    def _heed(self, day: int) -> None:
+        """Take in what becomes known, or is no longer, as this day is judged."""
         decisions = self.known.decisions
         if decisions.turning(day):
             self.known = decisions.known_on(day, self.belongs, self.score.shape[1])
@@ -150,15 +165,56 @@ class Replay:
             self.statistic[self.belongs[:, decisions.reaching_back(day)].any(axis=1)] = 0.0
         for incident in [i for i in self.open if decisions.renewed(i.pairs, day)]:
             self._close(incident, day, "new baseline")
-        night = self._night(day)
-        self.means[:, day], self.sds[:, day] = night.mean, night.sd
-        if day >= self.first:
-            self._judge_charts(night, review=(day - self.first) % NODE_REVIEW_DAYS == 0)
-            self.limits[:, day] = self.limit
-            for incident in list(self.open):
-                self._follow(incident, night)
-            self._raise(night)
-        self._record_state(night)
+
+    def _prepare(self, day: int, view: View) -> int:
+        """Learn and review where this day is due; the next day on which that is."""
+        if day < self.first:
+            return self.first
+        links, records, standing = self._links(), self._records(), self._standing()
+        guard, length = self.spans.guard_days, self.spans.baseline_days
+        age = day - self.first
+        if age % RELEARN_DAYS == 0:
+            look(day, guard, length, links, records, standing, view)
+            past, known = standardised_history(day, guard, records, view)
+            self.learnt[:] = learnt_covariance(past, known, self.structure.related)
+            self.inverse[:] = np.linalg.inv(self.learnt)
+        if age % NODE_REVIEW_DAYS == 0 and view.observed.any():
+            inverse = filters_of(links, view, standing)[: self.structure.n_pairs]
+            self.live = ~(self.is_node & duplicate_nodes(self.structure, view.direction, inverse))
+            self._share_budget()
+        return day + RELEARN_DAYS - age % RELEARN_DAYS
+
+    def _answer(self, day: int, view: View) -> None:
+        """What follows from a day's evidence: open incidents go on, and crossings raise new ones."""
+        above = self.values[:, day] - self.limit
+        above[np.isnan(above)] = -np.inf
+        if not self.open and not (above > 0.0).any():
+            return
+        covariance = whole_covariance(
+            self.learnt, self.structure.classes, np.isfinite(view.deviation), view.movement, CLASS_VARIANCE
+        )
+        night = Night(day, view.mean, view.deviation, covariance, view.direction)
+        for incident in list(self.open):
+            self._follow(incident, night)
+        self._raise(night, above)
+        for incident in self.open:
+            self.state[incident.pairs, day] = CHANGED
+
+    def _links(self) -> Links:
+        return Links(self.structure.classes, self.belongs, self.touches)
+
+    def _records(self) -> Records:
+        return Records(
+            self.score, self.weight, self.known.referable(self.usable), self.known.unjudged, self.kept,
+            self.means, self.sds, self.state, self.counted, self.counts, self.spoiled, self.known.charts,
+            self.unrest, self.scaled, self.values, self.limits,
+        )  # fmt: skip
+
+    def _standing(self) -> Standing:
+        return Standing(
+            self.frozen, self.held, self.ready, self.inverse,
+            self.live, self.begun, self.limit, self.statistic,
+        )  # fmt: skip
 
     def incidents(self) -> tuple[Incident, ...]:
         """All incidents so far, in order of their alarm day."""
@@ -167,7 +223,8 @@ class Replay:
 
     def _share_budget(self) -> None:
         """Thresholds: half the budget to pairs, half over the nodes that are told apart from them."""
-        n_nodes = int(self.live.sum())
+        live = self.live & self.is_node
+        n_nodes = int(live.sum())
         pairs = PAIR_SHARE if n_nodes else 1.0
         length = self.spans.baseline_days
         self.limit[~self.is_node] = threshold(
@@ -178,85 +235,9 @@ class Replay:
                 (1.0 - pairs) * self.rate / n_nodes, baseline_days=length, one_sided=True
             )
 
-    def _night(self, day: int) -> Night:
-        """References and deviations of one day."""
-        spans = self.spans
-        mean, sd, total, _ = references(
-            self.score,
-            self.weight,
-            self.known.referable(self.usable),
-            day,
-            spans.guard_days,
-            spans.baseline_days,
-            MIN_REFERENCE_DAYS,
-        )
-        held = np.isfinite(self.frozen[0])
-        mean, sd, total = (np.where(held, f, v) for f, v in zip(self.frozen, (mean, sd, total), strict=True))
-        # A pair that still learns may yet choose another score: nothing of it may enter today's decisions.
-        learning = day < self.ready
-        mean, sd = np.where(learning, np.nan, mean), np.where(learning, np.nan, sd)
-        deviation = (self.score[:, day] - mean) / (sd * np.sqrt(1.0 / self.weight[:, day] + 1.0 / total))
-        deviation[self.known.unjudged[:, day]] = np.nan
-        observed = np.isfinite(deviation) & ~self.held
-        self.kept[observed, day] = np.clip(deviation[observed], -MAX_KEPT_DEVIATION, MAX_KEPT_DEVIATION)
-        empty = np.empty((0, 0))
-        return Night(day, mean, sd, deviation, observed, empty, empty)
-
-    def _judge_charts(self, night: Night, *, review: bool) -> None:
-        """Every hypothesis's deviation of the day, after network control, into its chart."""
-        day, guard = night.day, self.spans.guard_days
-        begin, end = max(0, day - guard - HISTORY_DAYS), max(0, day - guard)
-        past = (self.score[:, begin:end] - night.mean[:, None]) / night.sd[:, None]
-        past *= np.sqrt(self.weight[:, begin:end])
-        known = self.known.referable(self.usable)[:, begin:end] & np.isfinite(past)
-        past = np.clip(np.where(known, past, 0.0), -MAX_HISTORY_DEVIATION, MAX_HISTORY_DEVIATION)
-        night.direction, movement = directions(
-            self.is_node, self.belongs, night.mean, night.sd, self.weight[:, day]
-        )
-        if self.learnt is None or (day - self.first) % RELEARN_DAYS == 0:
-            self.learnt = learnt_covariance(past, known, self.structure.related)
-        night.covariance = self.learnt.copy()
-        scored = np.isfinite(night.deviation)
-        add_class_movement(night.covariance, self.structure.classes, scored, movement, CLASS_VARIANCE)
-        seen = np.flatnonzero(night.observed)
-        if not len(seen):
-            return
-        inverse = np.zeros_like(night.covariance)
-        inverse[np.ix_(seen, seen)] = np.linalg.inv(night.covariance[np.ix_(seen, seen)])
-        if review:
-            self.live = self.is_node & ~duplicate_nodes(self.structure, night.direction, inverse)
-            self._share_budget()
-        size = np.abs(night.direction)
-        full = size.sum(axis=1)
-        judged = (full > 0) & (size[:, seen].sum(axis=1) >= LEAST_OBSERVED_SHARE * full)
-        judged &= self.live | ~self.is_node
-        plain = (self.score[:, day] - night.mean) / night.sd * np.sqrt(self.weight[:, day])
-        today = np.where(night.observed, plain, 0.0)
-        t, n = filtered(
-            night.direction, inverse, today, past, known.astype(np.float64), self.spans.baseline_days
-        )
-        raw = standardised(t, n, judged)
-        clean = np.clip(raw, -MAX_DEVIATION, MAX_DEVIATION)
-        self.counted[:, day] = np.where(self.spoiled[:, day], np.nan, clean)
-        z = raw / scales(self.known.outputs(self.counted), day, guard)
-        self.unrest[:, day] = unrest(z[: self.structure.n_pairs], self.touches)
-        z /= self._weather(day)
-        self.scaled[:, day] = np.clip(z, -MAX_DEVIATION, MAX_DEVIATION)
-        gather_all(self.scaled[:, day], np.nan_to_num(night.mean), self.statistic, self.values[:, day])
-        self.values[np.isnan(self.scaled[:, day]), day] = np.nan
-
-    def _weather(self, day: int) -> Floats:
-        """What each chart's deviation is divided by: 1, or the squared unrest elsewhere in the last days."""
-        recent = self.unrest[:, max(0, day - UNREST_DAYS + 1) : day + 1]
-        n = np.isfinite(recent).sum(axis=1)
-        mean = np.nansum(recent, axis=1) / np.maximum(n, 1)
-        return np.maximum(np.where(n > 0, mean, 1.0), 1.0) ** UNREST_POWER
-
-    def _raise(self, night: Night) -> None:
+    def _raise(self, night: Night, above: Floats) -> None:
         """New incidents from charts above their limit; crossings related to a young one belong to it."""
         day = night.day
-        above = self.values[:, day] - self.limit
-        above[np.isnan(self.scaled[:, day])] = -np.inf
         for chart in np.argsort(-above, kind="stable"):
             if not above[chart] > 0.0:
                 break
@@ -287,7 +268,8 @@ class Replay:
         """Keep the days of an incident out of the scales of all charts that share a class with it."""
         charts = self.same_class[:, pairs].any(axis=1)
         self.spoiled[charts, first : last + 1] = True
-        self.counted[charts, first : last + 1] = np.nan
+        self.counted[charts, first : last + 1] = 0.0
+        self.counts[charts, first : last + 1] = 0.0
 
     def _reached(self, incident: OpenIncident) -> Flags:
         """Charts related to an incident."""
@@ -390,12 +372,3 @@ class Replay:
                 self.usable[p, :begin] = False
             self.usable[p, begin:] = np.isfinite(self.score[p, begin:])
         self.statistic[self.belongs[:, incident.pairs].any(axis=1)] = 0.0
-
-    def _record_state(self, night: Night) -> None:
-        """What each pair was in at the end of the day."""
-        state = np.where(np.isfinite(night.deviation), WATCHED, NOT_SCORED)
-        state[self.known.unjudged[:, night.day]] = NOT_JUDGED
-        state[night.day < self.ready] = LEARNING
-        for incident in self.open:
-            state[incident.pairs] = CHANGED
-        self.state[:, night.day] = state

@@ -55,7 +55,6 @@ class ResumableReplay(Replay):
             false_alarms_per_year,
             decisions,
         )
-        self.n_judged = 0
         self.n_known = score.shape[1]
 
     def copied(self) -> ResumableReplay:
@@ -94,10 +93,9 @@ class ResumableReplay(Replay):
     def advance(self, memory: WatchMemory) -> tuple[Incident, ...]:
         """Judge the days known but not judged, leaving their states in memory; all incidents so far."""
         memory.forget_after(self.n_judged)
-        for day in range(self.n_judged, self.n_known):
-            self.judge(day)
-            self.n_judged = day + 1
-            if _worth_keeping(self.n_judged, self.n_known):
+        for n_judged in range(self.n_judged + 1, self.n_known + 1):
+            if _worth_keeping(n_judged, self.n_known):
+                self.judge_until(n_judged)
                 memory.states.append(self.copied())
         return self.incidents()
 

@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.stats.chart import WEIGHT_OFFSET
+from rhovane.stats.compiled import compiled
 from rhovane.stats.daily_scores import DailyScores
 from rhovane.stats.decisions import SetAside, checked_decisions
 from rhovane.stats.incident import Incident, Judgement
@@ -234,18 +235,28 @@ def _judged(
     return value, np.maximum(hours - WEIGHT_OFFSET, 1.0), ready, choice
 
 
+@compiled
 def signal(score: Floats) -> float:
     """How far the scores of a pair stand from "no relationship", in their own standard deviations.
 
     The absolute mean over the standard deviation widened for autocorrelation at one day; 0 with fewer
     than 30 scored days.
     """
-    value = score[np.isfinite(score)]
-    if len(value) < MIN_CHOICE_DAYS:
+    n, total = 0, 0.0
+    for value in score:
+        if not np.isnan(value):
+            n += 1
+            total += value
+    if n < MIN_CHOICE_DAYS:
         return 0.0
-    centred = value - value.mean()
-    variance = float((centred**2).mean())
-    if variance <= 0.0:
+    mean = total / n
+    squares, products, last = 0.0, 0.0, 0.0
+    for value in score:
+        if not np.isnan(value):
+            squares += (value - mean) ** 2
+            products += (value - mean) * last
+            last = value - mean
+    if squares <= 0.0:
         return 0.0
-    autocorrelation = max(float((centred[1:] * centred[:-1]).mean()) / variance, 0.0)
-    return float(abs(value.mean()) / np.sqrt(variance * (1.0 + 2.0 * autocorrelation)))
+    autocorrelation = max(products / (n - 1) / (squares / n), 0.0)
+    return float(abs(mean) / np.sqrt(squares / n * (1.0 + 2.0 * autocorrelation)))
