@@ -148,7 +148,9 @@ def naive_watch(
                 for t, u in zip(at, outputs, strict=True):
                     counted[h, t] = np.clip((u - centre) / math.sqrt(variance * (1 - 1 / k)), -3.5, 3.5)
             counted[h, day] = np.clip(raw[h, day], -3.5, 3.5)
-        history = [counted[h, max(0, day - 200) : end] for h in range(n)]
+        # Reference days count while fewer than 90 days were judged.
+        starts = [max(0, day - 200, min(begun[h], end - 90)) for h in range(n)]
+        history = [counted[h, starts[h] : end] for h in range(n)]
         judged = [counted[h, max(0, day - 200, begun[h]) : end] for h in range(n)]
         z = np.array([raw[h, day] / naive_scale(history, h, judged) for h in range(n)])
         for h in range(n):

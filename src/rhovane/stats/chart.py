@@ -41,6 +41,8 @@ WEIGHT_OFFSET = 2.0
 """Joint hours that a daily score costs before it counts: its weight is hours - 2, at least 1."""
 SCALE_DAYS = 200
 """Days of past deviations from which their out-of-sample scale is estimated."""
+LEAST_SCALE_DAYS = 90
+"""Reference days before the first judged one tell of autocorrelation until there are this many days."""
 SCALE_PRIOR_DAYS = 75.0
 """Weight, in days, of the network's pooled variance in a pair's own."""
 POOL_PRIOR_DAYS = 300.0
@@ -121,7 +123,8 @@ def scales(z: Floats, known: Floats, first: NDArray[np.int64], day: int, guard_d
     """Out-of-sample standard deviation of each chart's deviations, see :func:`scale_from`.
 
     ``z`` has shape (n_charts, n_days), ``known`` is 1 for the days that count; both are 0 elsewhere. The 200
-    days before ``day`` up to the guard are used; those before a chart's ``first`` are reference days.
+    days before ``day`` up to the guard are used, or those from a chart's ``first`` on. Where these are fewer
+    than 90, reference days before them fill up.
     """
     n_charts = len(z)
     begin, end = max(0, day - SCALE_DAYS), max(0, day - guard_days)
@@ -129,9 +132,10 @@ def scales(z: Floats, known: Floats, first: NDArray[np.int64], day: int, guard_d
     judged = np.zeros((n_charts, 2))
     pool, pool_counts, pool_judged = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1), np.zeros(2)
     for h in range(n_charts):
-        for lag in range(min(SCALE_LAGS + 1, end - begin)):
-            sums[h, lag] = np.dot(z[h, begin + lag : end], z[h, begin : end - lag])
-            counts[h, lag] = np.dot(known[h, begin + lag : end], known[h, begin : end - lag])
+        start = max(begin, min(first[h], end - LEAST_SCALE_DAYS))
+        for lag in range(min(SCALE_LAGS + 1, end - start)):
+            sums[h, lag] = np.dot(z[h, start + lag : end], z[h, start : end - lag])
+            counts[h, lag] = np.dot(known[h, start + lag : end], known[h, start : end - lag])
             pool[lag] += sums[h, lag]
             pool_counts[lag] += counts[h, lag]
         for t in range(max(begin, first[h]), end):
