@@ -171,7 +171,9 @@ def naive_watch(
                 for h, c in enumerate(charts)
             ]
         )
-        history = [clean[h, max(0, day - 200) : end] for h in range(n)]
+        # Reference days count while fewer than 90 days were judged.
+        starts = [max(0, day - 200, min(begun[h], end - 90)) for h in range(n)]
+        history = [clean[h, starts[h] : end] for h in range(n)]
         judged = [clean[h, max(0, day - 200, begun[h]) : end] for h in range(n)]
         z = np.array([raw[h, day] / naive_scale(history, h, judged) for h in range(n)])
         for h in range(n):

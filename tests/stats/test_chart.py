@@ -28,7 +28,8 @@ def test_scale_equals_its_definition() -> None:
     z[rng.random(z.shape) < 0.2] = np.nan
     z[1] *= 1.6
     for day in (20, 120, 299):
-        history = [z[p, max(0, day - 200) : day - 14] for p in range(3)]
+        starts = [max(0, day - 200, min(f, day - 14 - 90)) for f in (0, 60, 130)]
+        history = [z[p, starts[p] : max(0, day - 14)] for p in range(3)]
         known = np.isfinite(z).astype(float)
         first = np.array([0, 60, 130])
         judged = [z[p, max(0, day - 200, first[p]) : max(0, day - 14)] for p in range(3)]

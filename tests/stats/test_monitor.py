@@ -62,11 +62,14 @@ def alarms_of(
 
 def test_a_lost_relation_is_found_within_days() -> None:
     delays = []
-    for seed in range(8):
+    for seed in range(16):
         x, y = related(seed, 190, 0.6, 0.0, 150)
-        found = [a for a in monitor_pair(x, y, start=START).alarms if a.day >= 150]
+        found = monitor_pair(x, y, start=START).alarms
+        if found and found[0].day < 150:
+            continue  # a false alarm: the pair is not watched again before it is over
         delays.append(found[0].day - 149 if found else 99)
         assert not found or found[0].direction == "weaker"
+    assert len(delays) >= 14, "a false alarm in 40 days is rare at .1 a year"
     assert np.median(delays) <= 4, delays
     assert max(delays) <= 12, delays
 

@@ -25,7 +25,7 @@ from rhovane.store.migrations import latest_known, migrate
 from store.building import KEYS, NOW, SERIES, parsed_file, random_files
 
 STORES = Path(__file__).parent / "stores"
-READ_AGAIN_SINCE = 9  # step from which on files are read again by other settings
+READ_AGAIN_SINCE = 10  # step from which on files are read again by other settings
 SAMPLES = {
     **dict.fromkeys(("TINYINT", "SMALLINT", "INTEGER", "BIGINT", "UBIGINT", "DOUBLE", "BOOLEAN"), 1),
     "VARCHAR": "x",

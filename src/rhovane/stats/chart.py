@@ -41,6 +41,8 @@ WEIGHT_OFFSET = 2.0
 """Joint hours that a daily score costs before it counts: its weight is hours - 2, at least 1."""
 SCALE_DAYS = 200
 """Days of past deviations from which their out-of-sample scale is estimated."""
+LEAST_SCALE_DAYS = 90
+"""Reference days before the first judged one tell of autocorrelation until there are this many days."""
 SCALE_PRIOR_DAYS = 75.0
 """Weight, in days, of the network's pooled variance in a pair's own."""
 POOL_PRIOR_DAYS = 300.0
@@ -123,8 +125,8 @@ def scales(
     """Out-of-sample standard deviation of each chart's deviations, see :func:`scale_from`.
 
     ``z`` has shape (n_charts, n_days), ``known`` is 1 for the days that count; both are 0 elsewhere. Days that
-    are ``barred`` do not count either; no rows: none are. The 200 days before ``day`` up to the guard are used;
-    those before a chart's ``first`` are reference days.
+    are ``barred`` do not count either; no rows: none are. The 200 days before ``day`` up to the guard are used,
+    or those from a chart's ``first`` on. Where these are fewer than 90, reference days before them fill up.
     """
     n_charts = len(z)
     begin, end = max(0, day - SCALE_DAYS), max(0, day - guard_days)
@@ -133,12 +135,13 @@ def scales(
     pool, pool_counts, pool_judged = np.zeros(SCALE_LAGS + 1), np.zeros(SCALE_LAGS + 1), np.zeros(2)
     n = max(0, end - begin)
     for h in range(n_charts):
+        start = max(0, min(first[h], end - LEAST_SCALE_DAYS) - begin)
         past, seen = z[h, begin:end], known[h, begin:end]
         if len(barred) and barred[h, begin:end].any():
             past, seen = past * ~barred[h, begin:end], seen * ~barred[h, begin:end]
-        for lag in range(min(SCALE_LAGS + 1, n)):
-            sums[h, lag] = np.dot(past[lag:], past[: n - lag])
-            counts[h, lag] = np.dot(seen[lag:], seen[: n - lag])
+        for lag in range(min(SCALE_LAGS + 1, n - start)):
+            sums[h, lag] = np.dot(past[start + lag :], past[start : n - lag])
+            counts[h, lag] = np.dot(seen[start + lag :], seen[start : n - lag])
             pool[lag] += sums[h, lag]
             pool_counts[lag] += counts[h, lag]
         for t in range(max(0, first[h] - begin), n):
