@@ -7,19 +7,13 @@ import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-from rhovane.model import CorrelationEstimate
+from rhovane.model import CAUTION, CorrelationEstimate
 
 if TYPE_CHECKING:
     from rhovane.pipeline import NightReport
     from rhovane.review import AlertEntry, Status
 
 WIDTH = 80
-CAUTION = (
-    "rhovane looks for changes in how series move together. It does not measure exposure or judge "
-    "compliance, and it does not warn the public. Association is not cause. A quiet night does not prove "
-    "that instruments are sound: a steady scale change leaves ranks unchanged. Reference methods, the "
-    "network's quality system, local rules and competent judgement come first."
-)
 
 
 def caution_lines() -> list[str]:

@@ -4,13 +4,15 @@ from __future__ import annotations
 
 from rhovane.store.exports import Exports
 from rhovane.store.ingesting import ReadingWriter
+from rhovane.store.looking import Looking
 from rhovane.store.nights import NightLedger
 from rhovane.store.reading import ReadingReader
 from rhovane.store.results import Results
+from rhovane.store.site_log import SiteLog
 from rhovane.store.upkeep import Upkeep
 
 
-class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, Upkeep):
+class Store(ReadingWriter, ReadingReader, NightLedger, Results, Exports, SiteLog, Looking, Upkeep):
     """An open store; made by :func:`rhovane.store.open_store`, used in a ``with`` block.
 
     Datetimes given without a zone are taken as UTC; datetimes returned say UTC. Spans of time are
