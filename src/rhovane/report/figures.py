@@ -233,14 +233,14 @@ def lag_figure(
 
 
 def readings_figures(
-    settings: Settings, pictures: PairPictures, readings: HourlyReadings, name: str
+    settings: Settings, pictures: PairPictures, readings: HourlyReadings, onset: dt.date, name: str
 ) -> list[Figure]:
     """Both raw series around the onset, each with its own unit."""
     offset = int(settings.network.standard_offset.total_seconds())
     found = []
-    for which, series, values, colour, dash in (
-        ("a", pictures.first, readings.first, BLUE, None),
-        ("b", pictures.second, readings.second, ORANGE, None),
+    for which, series, values, colour in (
+        ("a", pictures.first, readings.first, BLUE),
+        ("b", pictures.second, readings.second, ORANGE),
     ):
         x = readings.hour + offset
         unit = unit_words(series.unit)
@@ -248,8 +248,9 @@ def readings_figures(
             f"{series.key}, {unit}",
             f"hour; {clock_words(settings)}",
             rounded_range(values),
-            (Line(f"{series.key}, observations", x, values, colour, dash, 1.2),),
+            (Line(f"{series.key}, observations", x, values, colour, width=1.2),),
             x_range=(float(x[0]), float(x[-1])) if len(x) else None,
+            moments=(Moment("likeliest first day of the change", seconds_of(onset)),),
         )
         found.append(
             figure(

@@ -122,7 +122,9 @@ def alert_sections(settings: Settings, view: AlertSheetView) -> dict[str, Any]:
         found.append(evidence_figure(settings, view.pictures, entries, f"{name}-evidence"))
         found.append(lag_figure(settings, view.pictures, entries, f"{name}-lags"))
         if view.readings is not None:
-            found += readings_figures(settings, view.pictures, view.readings, f"{name}-readings")
+            found += readings_figures(
+                settings, view.pictures, view.readings, view.entry.alert.onset_day, f"{name}-readings"
+            )
         figures = [one for one in found if one is not None]
     evidence_known = view.pictures is None or view.pictures.evidence is not None
     return {
