@@ -14,8 +14,6 @@ from rhovane.report.time_chart import Figure
 from rhovane.report.words import interval, signed
 from rhovane.review.relations import SeriesDays
 
-CELL, GAP = 18.0, 2.0
-
 
 def change_bar(before: CorrelationEstimate, after: CorrelationEstimate) -> str:
     """Both correlations with their intervals on a scale from −1 to 1; before above, after below."""
@@ -61,40 +59,35 @@ def coverage_figure(days: SeriesDays, accepted: tuple[str, ...]) -> Figure:
         "coverage",
         "Coverage calendar",
         sentence,
-        _calendar(days.day, shares, CELL, sentence),
-        _calendar(days.day, shares, 7.5, sentence),
+        _calendar(days.day, shares, 20.0, 20.0, sentence),
+        _calendar(days.day, shares, 7.4, 15.0, sentence),
         [],
         (["month", "days", "observations of those expected", "days with gaps", "days with none"], rows),
     )
 
 
-def _calendar(days: np.ndarray, shares: np.ndarray, cell: float, alternative: str) -> str:
-    pitch = cell + (GAP if cell > 10 else 1.5)
+def _calendar(days: np.ndarray, shares: np.ndarray, wide: float, tall: float, alternative: str) -> str:
+    """Cells ``wide`` by ``tall`` px, months downward."""
+    across, down = wide + 1.5, tall + 1.5
     first, last = days[0].astype(dt.date), days[-1].astype(dt.date)
     n_months = (last.year - first.year) * 12 + last.month - first.month + 1
     left, top = 66.0, 20.0
-    d = Drawing(left + 31 * pitch + 4, top + n_months * pitch + 4, alternative)
+    d = Drawing(left + 31 * across + 4, top + n_months * down + 4, alternative)
     for number in range(1, 32):
-        if number in (1, 10, 20, 30) or cell > 10:
-            d.text(left + (number - 0.5) * pitch, 13, str(number), "middle", size=10)
+        if number in (1, 10, 20, 30) or wide > 12:
+            d.text(left + (number - 0.5) * across, 13, str(number), "middle", size=10.5)
     for i in range(n_months):
         year, month = first.year + (first.month - 1 + i) // 12, (first.month - 1 + i) % 12
-        d.text(
-            left - 6,
-            top + i * pitch + cell * 0.75,
-            f"{MONTHS[month]} {year}",
-            "end",
-            size=min(12.0, cell + 2),
-        )
+        d.text(left - 6, top + i * down + tall / 2 + 4, f"{MONTHS[month]} {year}", "end", size=11.5)
     for day, share in zip(days, shares, strict=True):
         date = day.astype(dt.date)
         row = (date.year - first.year) * 12 + date.month - first.month
-        x, y = left + (date.day - 1) * pitch, top + row * pitch
+        x, y = left + (date.day - 1) * across, top + row * down
         if share <= 0:
-            d.rect(x + 0.5, y + 0.5, cell - 1, cell - 1, "#ffffff", stroke=ORANGE, stroke_width="1.4")
+            d.rect(x + 0.5, y + 0.5, wide - 1, tall - 1, "#ffffff", stroke=ORANGE, stroke_width="1.4")
         else:
-            d.rect(x, y, cell, cell, shade(0.25 + 0.5 * min(float(share), 1.0)))
+            d.rect(x, y, wide, tall, shade(0.25 + 0.5 * min(float(share), 1.0)))
             if share < 1:
-                d.line(x, y + cell, x + cell, y, INK, stroke_width="1.2")
-    d.line(left, top + n_months * pitch, left + 31 * pitch, top + n_months * pitch, MUTED)
+                d.line(x, y + tall, x + wide, y, INK, stroke_width="1.2")
+    d.line(left, top + n_months * down, left + 31 * across, top + n_months * down, MUTED)
     return str(d)

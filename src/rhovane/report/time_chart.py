@@ -186,6 +186,8 @@ class TimeChart:
             "series": series,
             "bands": bands,
             "levels": levels,
+            "spans": [[span.begin, span.end] for span in self.spans],
+            "moments": [moment.x for moment in self.moments],
             "yLabel": self.y_label,
             "yRange": list(self.y_range),
             "clock": self.clock,

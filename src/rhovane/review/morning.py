@@ -222,13 +222,14 @@ def _rejected(store: Store, after: int, upto: int | None) -> tuple[dict[str, Any
 
 
 def _by_suspect(entries: Sequence[AlertEntry]) -> tuple[SuspectGroup, ...]:
-    """Alerts grouped by what they name as likeliest to have changed; the largest group first."""
+    """Alerts grouped by what they name as likeliest to have changed; changes that last first, then the newest."""
     groups: dict[tuple[str, str], list[AlertEntry]] = {}
     for entry in entries:
         kind, _, name = (entry.alert.suspect or f"pair {entry.alert.pair_key}").partition(" ")
         groups.setdefault((kind, name), []).append(entry)
     found = [SuspectGroup(kind, name, tuple(members)) for (kind, name), members in groups.items()]
-    return tuple(sorted(found, key=lambda g: (-len(g.entries), g.kind, g.name)))
+    newest_first = sorted(found, key=lambda g: max(e.alert.alarm_day for e in g.entries), reverse=True)
+    return tuple(sorted(newest_first, key=lambda g: not any(e.standing.changed for e in g.entries)))
 
 
 def silent_pairs(settings: Settings, store: Store, as_of: dt.date) -> tuple[Silence, ...]:

@@ -72,6 +72,10 @@ class PageServer:
         """End :meth:`run` after the requests under way; may be called from another thread."""
         self._server.should_exit = True
 
+    def close(self) -> None:
+        """Give the port back; for a server that was never run."""
+        self._socket.close()
+
 
 def serve(
     settings: Settings,
@@ -106,6 +110,7 @@ def _listening(host: str, port: int) -> socket.socket:
     listening.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
     try:
         listening.bind((host, port))
+        listening.listen(CONNECTIONS)
     except OSError as error:
         listening.close()
         raise RhovaneError(

@@ -6,18 +6,60 @@ const STEP = 0.25; // share of the time shown by which a key moves or zooms
 // The axis shows the network's standard clock: chart times are its seconds read as if they were UTC.
 const clockOf = (seconds) => uPlot.tzDate(new Date(seconds * 1000), "Etc/UTC");
 
-function levelLines(levels) {
+const MONTHS = ["Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec"];
+
+function timeLabels(chart, places) {
+  const hours = chart.scales.x.max - chart.scales.x.min < 4 * 86400;
+  let year = null;
+  return places.map((seconds) => {
+    const at = new Date(seconds * 1000);
+    const day = `${at.getUTCDate()} ${MONTHS[at.getUTCMonth()]}`;
+    const words = hours ? `${day}\n${String(at.getUTCHours()).padStart(2, "0")}:00` : day;
+    const told = at.getUTCFullYear() === year ? words : `${words}\n${at.getUTCFullYear()}`;
+    year = at.getUTCFullYear();
+    return told;
+  });
+}
+
+function spanAreas(spans) {
   return (chart) => {
     const pen = chart.ctx;
     pen.save();
+    pen.fillStyle = "rgba(179, 71, 0, 0.13)";
+    for (const [begin, end] of spans) {
+      const left = Math.max(chart.valToPos(begin, "x", true), chart.bbox.left);
+      const right = Math.min(chart.valToPos(end, "x", true), chart.bbox.left + chart.bbox.width);
+      if (right > left) pen.fillRect(left, chart.bbox.top, right - left, chart.bbox.height);
+    }
+    pen.restore();
+  };
+}
+
+function levelLines(levels, moments) {
+  return (chart) => {
+    const pen = chart.ctx;
+    const { left, top, width, height } = chart.bbox;
+    pen.save();
+    pen.beginPath();
+    pen.rect(left, top, width, height);
+    pen.clip();
     pen.strokeStyle = "#59626d";
     pen.setLineDash([7, 4]);
+    const stroke = (x1, y1, x2, y2) => {
+      pen.beginPath();
+      pen.moveTo(x1, y1);
+      pen.lineTo(x2, y2);
+      pen.stroke();
+    };
     for (const level of levels) {
       const y = chart.valToPos(level, "y", true);
-      pen.beginPath();
-      pen.moveTo(chart.bbox.left, y);
-      pen.lineTo(chart.bbox.left + chart.bbox.width, y);
-      pen.stroke();
+      stroke(left, y, left + width, y);
+    }
+    pen.strokeStyle = "#1f2328";
+    pen.setLineDash([2, 3]);
+    for (const moment of moments) {
+      const x = chart.valToPos(moment, "x", true);
+      stroke(x, top, x, top + height);
     }
     pen.restore();
   };
@@ -41,10 +83,10 @@ function makeChart(place, data) {
       height: 300,
       tzDate: clockOf,
       scales: { x: { time: true }, y: { range: (_chart, low, high) => (low == null ? data.yRange : [Math.min(low, data.yRange[0]), Math.max(high, data.yRange[1])]) } },
-      axes: [{ label: data.clock }, { label: data.yLabel, size: 60 }],
+      axes: [{ label: data.clock, values: timeLabels, size: 56 }, { label: data.yLabel, size: 60 }],
       series,
       bands: data.bands.map((pair) => ({ series: pair, fill: "rgba(11, 83, 148, 0.18)" })),
-      hooks: { draw: [levelLines(data.levels)] },
+      hooks: { drawClear: [spanAreas(data.spans)], draw: [levelLines(data.levels, data.moments)] },
     },
     [data.x, ...data.series.map((one) => one.values)],
     place,
