@@ -147,13 +147,17 @@ function offerZoom(drawing) {
     drawing.querySelector(".narrow").hidden = opening;
     for (const one of keys) one.hidden = !opening;
     toggle.setAttribute("aria-expanded", String(opening));
-    toggle.textContent = opening ? "Back to the picture" : "Zoom";
+    name(opening ? "Back to the picture" : "Zoom");
     if (opening && act === null) act = withKeys(place, makeChart(place, data), [data.x[0], data.x[data.x.length - 1]]);
     if (opening) place.focus();
   });
   toggle.setAttribute("aria-expanded", "false");
-  const name = drawing.closest("figure").querySelector("h2, h3");
-  toggle.setAttribute("aria-label", "Zoom: " + name.textContent);
+  const title = drawing.closest("figure").querySelector("h2, h3").textContent;
+  const name = (words) => {
+    toggle.textContent = words;
+    toggle.setAttribute("aria-label", `${words}: ${title}`);
+  };
+  name("Zoom");
   bar.append(toggle, ...keys);
   drawing.after(bar);
   drawing.append(place);
