@@ -36,7 +36,14 @@ def measure(title: str, settings: Settings) -> None:
     app = make_app(settings, token=None, clock=lambda: now)
     client = TestClient(app, base_url="http://127.0.0.1")
     pair = settings.pair[0]
-    paths = ["/", "/pairs", f"/pair?key={pair.key}", f"/one-series?key={pair.first}", "/nights", "/statistics"]
+    paths = [
+        "/",
+        "/pairs",
+        f"/pair?key={pair.key}",
+        f"/one-series?key={pair.first}",
+        "/nights",
+        "/statistics",
+    ]
     paths += [f"/alert/{number}" for number in alerts[:2]]
     client.get("/")
     print(f"{title}: {len(settings.pair)} pairs, {settings.store_path.stat().st_size / 1e6:.0f} MB")

@@ -67,6 +67,12 @@ class StoredEvidence:
     watched: tuple[WatchedPair, ...]
     columns: Columns
 
+    @property
+    def size(self) -> int:
+        """Pairs² × days: the work of a replay grows with it."""
+        day = self.columns["day"]
+        return len(self.watched) ** 2 * (int(day.max() - day.min()) + 1) if len(day) else 0
+
     def replayed(self, settings: Settings) -> WatchTracks | None:
         """The watch replayed as the night did it; None before the first evidence."""
         first_day, scores = daily_scores(self.watched, self.columns, self.as_of)

@@ -16,6 +16,7 @@ LEFT, RIGHT, TOP, BELOW = 46.0, 14.0, 24.0, 76.0
 STEPS = 10  # shades on either side of zero
 COLD, WARM = (11, 83, 148), (179, 71, 0)
 NOTHING = "#ffffff"
+MOST_COLUMNS = 260  # of a long history every second, third, … day is drawn: windows of weeks change slowly
 
 
 def shade(value: float) -> str:
@@ -27,6 +28,7 @@ def shade(value: float) -> str:
 
 def lag_map(windows: WindowTrack, spans: Sequence[Span], clock: str, width: float, alternative: str) -> str:
     """The map as SVG; days run to the right, lags upward."""
+    every = 1 + len(windows) // MOST_COLUMNS
     x_low, x_high = float(day_seconds(windows.day)[0]), float(day_seconds(windows.day)[-1]) + DAY_S
     plot = CELL_PX * len(windows.lags)
     d = Drawing(width, TOP + plot + BELOW, alternative)
@@ -35,8 +37,8 @@ def lag_map(windows: WindowTrack, spans: Sequence[Span], clock: str, width: floa
     for i, lag in enumerate(windows.lags):
         top = TOP + plot - CELL_PX * (i + 1)
         d.text(LEFT - 6, top + CELL_PX / 2 + 4, tick_label(float(lag)), "end")
-        _row(d, x, windows, i, top)
-    _strongest(d, x, windows, plot)
+        _row(d, x, windows, i, top, every)
+    _strongest(d, x, windows, plot, every)
     for span in spans:
         if x_low <= span.begin <= x_high:
             d.line(x(span.begin), TOP - 6, x(span.begin), TOP + plot, ORANGE, stroke_width="2")
@@ -53,24 +55,26 @@ def lag_map(windows: WindowTrack, spans: Sequence[Span], clock: str, width: floa
     return str(d)
 
 
-def _row(d: Drawing, x: Scale, windows: WindowTrack, lag: int, top: float) -> None:
+def _row(d: Drawing, x: Scale, windows: WindowTrack, lag: int, top: float, every: int) -> None:
     """One lag: neighbouring days of the same shade as one rectangle."""
-    seconds = day_seconds(windows.day)
-    colours = [shade(float(v)) if np.isfinite(v) else NOTHING for v in windows.map[:, lag]]
+    seconds = day_seconds(windows.day)[::every]
+    colours = [shade(float(v)) if np.isfinite(v) else NOTHING for v in windows.map[::every, lag]]
+    end = float(day_seconds(windows.day)[-1]) + DAY_S
     begin = 0
     for i in range(1, len(colours) + 1):
-        broken = i == len(colours) or colours[i] != colours[begin] or seconds[i] - seconds[i - 1] > DAY_S
+        broken = (
+            i == len(colours) or colours[i] != colours[begin] or seconds[i] - seconds[i - 1] > every * DAY_S
+        )
         if broken:
-            a, b = x(float(seconds[begin])), x(float(seconds[i - 1]) + DAY_S)
+            a, b = x(float(seconds[begin])), x(min(float(seconds[i - 1]) + every * DAY_S, end))
             d.rect(a, top, b - a + 0.2, CELL_PX, colours[begin])
             begin = i
 
 
-def _strongest(d: Drawing, x: Scale, windows: WindowTrack, plot: float) -> None:
+def _strongest(d: Drawing, x: Scale, windows: WindowTrack, plot: float, every: int) -> None:
     strongest = windows.strongest_lag()
     seconds = day_seconds(windows.day)
     places = {int(lag): i for i, lag in enumerate(windows.lags)}
-    every = max(1, len(seconds) // 160)
     points = [
         (x(float(seconds[i]) + DAY_S / 2), TOP + plot - CELL_PX * (places[int(strongest[i])] + 0.5))
         for i in range(0, len(seconds), every)

@@ -51,7 +51,7 @@ def pages(site: Site) -> dict[str, Page]:
 
     def morning(request: Request, store: Store, now: dt.datetime) -> Response:
         found = morning_of(site.settings, store, now, as_of=site.as_of)
-        site.tracks(store, now)
+        site.begin_replay(store, now)  # so that the sheets, opened next, have it
         return site.page(request, "morning.html", morning=found)
 
     def night(request: Request, store: Store, now: dt.datetime) -> Response:

@@ -74,8 +74,8 @@ class Site:
             read_only=read_only,
         )
 
-    def tracks(self, store: Store, now: dt.datetime) -> WatchTracks | None:
-        """The watch replayed for the newest night, as far as it is there."""
+    def begin_replay(self, store: Store, now: dt.datetime) -> int | None:
+        """Have the newest finished night replayed for the pictures of evidence; its number, None before the first."""
         last = store.last_finished_night()
         if last is None:
             return None
@@ -83,7 +83,12 @@ class Site:
             evidence = stored_evidence(self.settings, store, now)
             if evidence is not None:
                 self.replayed.begin(evidence)
-        return self.replayed.of(last.night_id)
+        return last.night_id
+
+    def tracks(self, store: Store, now: dt.datetime) -> WatchTracks | None:
+        """The watch replayed for the newest night, as far as it is there."""
+        night_id = self.begin_replay(store, now)
+        return None if night_id is None else self.replayed.of(night_id)
 
     def today(self, now: dt.datetime) -> dt.date:
         """The last day that a night could cover."""
