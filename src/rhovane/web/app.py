@@ -68,6 +68,7 @@ def make_app(
         return site.trouble(request, NotFound("There is no such page. The menu lists those there are."))
 
     app = Starlette(routes=routes, exception_handlers={404: not_found})
+    app.state.site = site
     return Guard(app, hosts=hosts or frozenset(LOOPBACK_NAMES), token=token, clock=clock)
 
 
