@@ -44,6 +44,14 @@ def settings(kept: Path) -> Settings:
     return load_settings(kept / "monitor.toml")
 
 
+@pytest.fixture(scope="session")
+def reader(kept: Path) -> TestClient:
+    """A client for the page of the network that is looked at only; one for all tests, because templates are compiled once."""
+    network = load_settings(kept / "monitor.toml")
+    app = make_app(network, token=None, clock=lambda: MORNING, as_of=LAST_DAY, replay_wait_s=60.0)
+    return TestClient(app, base_url="http://127.0.0.1", follow_redirects=False)
+
+
 @pytest.fixture
 def own(kept: Path, tmp_path: Path) -> Settings:
     """Settings of a copy of the network that a test may write to."""

@@ -38,8 +38,8 @@ def words(html: str) -> str:
 
 
 @pytest.mark.parametrize("path", PATHS)
-def test_every_page_answers_with_network_clock_and_cautions(browse, settings, path):
-    response = browse(settings).get(path)
+def test_every_page_answers_with_network_clock_and_cautions(reader, path):
+    response = reader.get(path)
     assert response.status_code == 200
     said = words(response.text)
     for part in (
@@ -53,22 +53,22 @@ def test_every_page_answers_with_network_clock_and_cautions(browse, settings, pa
 
 
 @pytest.mark.parametrize("path", PATHS)
-def test_names_from_outside_never_become_markup(browse, settings, path):
-    text = browse(settings).get(path).text
+def test_names_from_outside_never_become_markup(reader, path):
+    text = reader.get(path).text
     assert HOSTILE not in text
     assert "alert(1)" not in "".join(re.findall(r"<script[^>]*>(.*?)</script>", text, flags=re.S))
 
 
 @pytest.mark.parametrize("path", PATHS)
-def test_pages_run_no_script_and_no_style_but_files_of_ours(browse, settings, path):
-    text = browse(settings).get(path).text
+def test_pages_run_no_script_and_no_style_but_files_of_ours(reader, path):
+    text = reader.get(path).text
     assert not re.search(r"<script(?![^>]*(src=\"/static/|type=\"application/json\"))", text)
     assert not re.search(r"\sstyle=|<style|\son[a-z]+=|javascript:", text)
     assert not re.search(r"(src|href)=\"(https?:)?//", text)
 
 
-def test_the_morning_list_tells_night_alert_arrivals_and_silence(browse, settings):
-    said = words(browse(settings).get("/").text)
+def test_the_morning_list_tells_night_alert_arrivals_and_silence(reader):
+    said = words(reader.get("/").text)
     assert f"Morning list after the night of {LAST_DAY}" in said
     assert "✓ complete" in said
     assert "1 new alert" in said
@@ -79,8 +79,8 @@ def test_the_morning_list_tells_night_alert_arrivals_and_silence(browse, setting
     assert "all.csv:8162" in said  # the row in quarantine, with file and line
 
 
-def test_an_alert_sheet_shows_size_evidence_neighbours_and_what_it_rests_on(browse, settings):
-    text = browse(settings).get("/alert/1").text
+def test_an_alert_sheet_shows_size_evidence_neighbours_and_what_it_rests_on(reader):
+    text = reader.get("/alert/1").text
     said = words(text)
     for part in (
         "before", "independent hours", "crossed its threshold", "Rolling ρ over 168 hours", "Ranks before and after",
@@ -91,8 +91,8 @@ def test_an_alert_sheet_shows_size_evidence_neighbours_and_what_it_rests_on(brow
     assert "µg/m³" in text
 
 
-def test_every_picture_has_words_for_those_who_cannot_see_it(browse, settings):
-    text = browse(settings).get("/alert/1").text
+def test_every_picture_has_words_for_those_who_cannot_see_it(reader):
+    text = reader.get("/alert/1").text
     for svg in re.findall(r"<svg[^>]*>", text):
         assert 'aria-hidden="true"' in svg or re.search(r'role="img" aria-label="[^"]{20,}"', svg), svg
 
@@ -104,11 +104,11 @@ def test_missing_nights_are_said_loudly(settings):
     assert "Silence since then means no data, not no change" in said
 
 
-def test_a_past_night_is_shown_as_it_stood(browse, settings):
-    said = words(browse(settings).get(f"/night/{LAST_DAY}").text)
+def test_a_past_night_is_shown_as_it_stood(reader):
+    said = words(reader.get(f"/night/{LAST_DAY}").text)
     assert "1 new alert" in said
-    assert browse(settings).get("/night/2024-01-01").status_code == 404
-    assert browse(settings).get("/night/yesterday").status_code == 404
+    assert reader.get("/night/2024-01-01").status_code == 404
+    assert reader.get("/night/yesterday").status_code == 404
 
 
 def test_without_a_store_the_page_says_what_to_run(browse, tmp_path: Path):
@@ -156,14 +156,13 @@ def test_a_locked_store_says_who_holds_it_and_keeps_what_was_typed(browse, own):
         holder.join(60)
 
 
-def test_unknown_things_are_not_found(browse, settings):
-    client = browse(settings)
+def test_unknown_things_are_not_found(reader):
     for path in ("/alert/99", "/pair?key=A~B", "/one-series?key=..%2F..", "/nothing", "/pair"):
-        assert client.get(path).status_code == 404, path
+        assert reader.get(path).status_code == 404, path
 
 
 def test_five_hundred_pairs_are_laid_out(browse, tmp_path: Path):
-    client = browse(large_network(tmp_path, 8))
+    client = browse(large_network(tmp_path, 3))
     matrix = client.get("/pairs").text
     assert matrix.count("/pair?key=") == 500
     assert client.get("/").status_code == 200

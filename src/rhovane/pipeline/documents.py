@@ -29,7 +29,8 @@ def night_report(
     day = None if morning.night is None else morning.night.as_of
     raised = [entry for group in morning.raised for entry in group.entries]
     sheets = [alert_sheet(settings, store, entry, tracks, until=day) for entry in raised]
-    return day, night_document(settings, morning, sheets, now)
+    judged = None if tracks is None or day is None else tracks.pairs_by_state(day)
+    return day, night_document(settings, morning, sheets, now, judged=judged)
 
 
 def night_file(

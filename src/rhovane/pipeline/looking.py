@@ -25,7 +25,7 @@ from rhovane.review.sheets import (
     RankScatter,
 )
 from rhovane.settings import PairSettings, Settings
-from rhovane.stats.watch import Watch
+from rhovane.stats.watch import DayState, Watch
 from rhovane.store import Store, StoredSiteLogEntry
 
 DAY = dt.timedelta(days=1)
@@ -56,6 +56,19 @@ class WatchTracks:
         seen = self.watch
         day = np.datetime64(self.first_day) + seen.day
         return EvidenceTrack(day, seen.evidence[:, i], seen.threshold[:, i], seen.state[:, i], seen.recipe[i])
+
+    def pairs_by_state(self, day: dt.date) -> dict[str, tuple[str, ...]] | None:
+        """Pairs by what the watch did with them on a day: learning, watched, changed, not scored; None before or after."""
+        row = (day - self.first_day).days
+        if not 0 <= row < len(self.watch.state):
+            return None
+        states = self.watch.state[row]
+        return {
+            one.name.lower().replace("_", " "): tuple(
+                k for k, s in zip(self.keys, states, strict=True) if s == one
+            )
+            for one in DayState
+        }
 
 
 @dataclass(frozen=True)
@@ -116,10 +129,10 @@ def alert_sheet(
     pictures = _pictures(settings, recipe, windows, tracks, alert.onset_day, first, end)
     days = days_of(settings.network.standard_offset)
     start = alert.before.first_day
-    grid = load_grid(settings, store, settings.series_of(recipe), start, max(alert.after.last_day, start))
+    last_raw = min(newest, alert.onset_day + RAW_AFTER_DAYS * DAY)
+    grid = load_grid(settings, store, settings.series_of(recipe), start, max(alert.after.last_day, last_raw))
     arrays = pair_arrays(settings, recipe, grid)
     hours = grid.hour_start
-    last_raw = min(newest, alert.onset_day + RAW_AFTER_DAYS * DAY)
     around = (hours >= days.start_of(alert.onset_day - RAW_BEFORE_DAYS * DAY)) & (
         hours < days.end_of(last_raw)
     )

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from importlib.resources import files
 
 import rhovane
@@ -14,9 +14,17 @@ from rhovane.settings import Settings
 
 
 def night_document(
-    settings: Settings, morning: Morning, sheets: Sequence[AlertSheetView], now: dt.datetime
+    settings: Settings,
+    morning: Morning,
+    sheets: Sequence[AlertSheetView],
+    now: dt.datetime,
+    *,
+    judged: Mapping[str, Sequence[str]] | None = None,
 ) -> str:
-    """The report of a night: the morning list, and the sheets given, as one HTML file."""
+    """The report of a night: the morning list, and the sheets given, as one HTML file.
+
+    ``judged`` are the pairs by what the watch did with them: learning, watched, changed, not scored.
+    """
     inside = {view.entry.alert.id for view in sheets}
 
     def link(kind: str, key: object) -> str | None:
@@ -28,6 +36,7 @@ def night_document(
         link,
         now,
         morning=morning,
+        judged=judged,
         sheets=[alert_sections(settings, view) for view in sheets],
     )
 

@@ -29,6 +29,11 @@ from rhovane.settings import SeriesSettings, Settings
 WIDE, NARROW = 760.0, 350.0  # px: reading column of a screen or of A4; a phone
 TABLE_DAYS = 7  # days between two rows of a table of numbers
 LEARNING, CHANGED = 0, 2
+SCORES = {
+    "innovation": "the changes from hour to hour",
+    "day shape": "departures from the usual course of the day",
+    "day course": "the course of the day itself",
+}
 
 
 def figure(
@@ -161,7 +166,7 @@ def evidence_figure(
     )
     learning = int((track.state == LEARNING).sum())
     held = int((track.state == CHANGED).sum())
-    parts = [f"An alert is raised when evidence exceeds its threshold. Watched score: {track.score}."]
+    parts = [f"An alert is raised when evidence exceeds its threshold. Watched: {SCORES[track.score]}."]
     parts += [
         f"Alert {e.alert.id}: evidence {e.alert.evidence:.2f} over {e.alert.threshold:.2f} on {e.alert.alarm_day}"
         + ("." if e.alert.suspect.startswith("pair") else f" (chart of {e.alert.suspect}).")

@@ -76,7 +76,9 @@ def recipe_words(settings: Settings, recipe: PairSettings) -> list[str]:
     lags = settings.lags_of(recipe)
     told = [
         f"{settings.correlation.statistic.capitalize()} rank correlation in windows of "
-        f"{settings.correlation.window_hours} hours, lags {lags.start} to {lags.stop - 1} hours",
+        f"{settings.correlation.window_hours} hours, lags {lags.start} to {lags.stop - 1} hours".replace(
+            "-", "−"
+        ),
         f"a window needs {settings.correlation.min_coverage:.0%} of the hours that count",
     ]
     if recipe.adjusted_for:

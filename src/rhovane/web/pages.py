@@ -14,6 +14,7 @@ from rhovane.pipeline.looking import alert_sheet, pair_sheet
 from rhovane.report import alert_sections, pair_sections, series_sections
 from rhovane.review import (
     AlertEntry,
+    Morning,
     alert_entries,
     alert_entry,
     log_counts,
@@ -52,13 +53,17 @@ def pages(site: Site) -> dict[str, Page]:
     def morning(request: Request, store: Store, now: dt.datetime) -> Response:
         found = morning_of(site.settings, store, now, as_of=site.as_of)
         site.begin_replay(store, now)  # so that the sheets, opened next, have it
-        return site.page(request, "morning.html", morning=found)
+        return list_page(request, store, found)
 
     def night(request: Request, store: Store, now: dt.datetime) -> Response:
-        found = morning_of(
-            site.settings, store, now, as_of=site.as_of, night=day_of_text(request.path_params["day"])
-        )
-        return site.page(request, "morning.html", morning=found)
+        day = day_of_text(request.path_params["day"])
+        return list_page(request, store, morning_of(site.settings, store, now, as_of=site.as_of, night=day))
+
+    def list_page(request: Request, store: Store, found: Morning) -> Response:
+        last = store.last_finished_night()
+        tracks = None if last is None else site.replayed.of(last.night_id, waiting=False)
+        judged = None if tracks is None or found.night is None else tracks.pairs_by_state(found.night.as_of)
+        return site.page(request, "morning.html", morning=found, judged=judged)
 
     def alert(request: Request, store: Store, now: dt.datetime) -> Response:
         entry = alert_entry(store, request.path_params["number"], now)
@@ -131,11 +136,13 @@ def alert_page(
 ) -> Response:
     """The sheet of one alert with its form; ``given`` are fields to be shown again after a refusal."""
     view = alert_sheet(site.settings, store, entry, site.tracks(store, now))
+    waiting = [e for e in alert_entries(store, now) if e.needs_review and e.alert.id != entry.alert.id]
     return site.page(
         request,
         "alert.html",
         status,
         outcomes=list(Outcome),
+        waiting=waiting,
         refused=refused,
         given=given or {},
         recorded=request.query_params.get("recorded") == "1",

@@ -45,14 +45,14 @@ class ReplayedWatch:
             work = (evidence, self._replay)
         threading.Thread(target=self._work, args=work, name="rhovane-replay", daemon=True).start()
 
-    def of(self, night_id: int) -> WatchTracks | None:
+    def of(self, night_id: int, *, waiting: bool = True) -> WatchTracks | None:
         """The replay of a night; None while it is not there yet, or when its process was ended from outside."""
         with self._lock:
             if self._night != night_id:
                 return None
             replay = self._replay
         try:
-            return replay.result(self._wait_s)
+            return replay.result(self._wait_s if waiting else 0.0)
         except NotYet:
             return None
 
