@@ -8,11 +8,13 @@ from __future__ import annotations
 
 from pathlib import Path
 
+SETTINGS_FILES = ("monitor.toml", "calendar.toml", "site_log.csv")
 
-def settings_text() -> str:
-    """The annotated settings file of the demo network, TOML.
 
-    An installed package carries it beside this module; in a checkout it is ``config/monitor.toml``.
+def settings_text(name: str = "monitor.toml") -> str:
+    """One of the demo network's settings files (``SETTINGS_FILES``), annotated; by default the settings themselves.
+
+    An installed package carries them beside this module; in a checkout they are in ``config/``.
 
     Raises
     ------
@@ -20,7 +22,7 @@ def settings_text() -> str:
         Neither place has the file: the installation is incomplete.
     """
     here = Path(__file__).resolve().parent
-    places = (here / "monitor.toml", here.parent.parent / "config" / "monitor.toml")
+    places = (here / name, here.parent.parent / "config" / name)
     for place in places:
         if place.is_file():
             return place.read_text(encoding="utf-8")

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -74,7 +75,7 @@ def test_alerts_are_listed_for_people_and_for_machines(config: str):
     text = run("alerts", "--config", config)
     assert text.exit_code == ExitCode.WELL
     assert "A.NO2~B.NO2" in text.output
-    assert max(len(line) for line in text.output.splitlines()) <= 100
+    assert max(len(line) for line in text.output.splitlines()) <= 80
     (alert,) = json.loads(run("alerts", "--config", config, "--json").output)
     assert alert["pair_key"] == "A.NO2~B.NO2"
     assert alert["direction"] == "weaker"
@@ -82,12 +83,67 @@ def test_alerts_are_listed_for_people_and_for_machines(config: str):
     assert alert["events"][0]["kind"] == "raised"
 
 
+def test_data_notes_are_listed_for_people_and_for_machines_and_under_the_alerts(tmp_path: Path):
+    (tmp_path / "feed").mkdir()
+    (tmp_path / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
+    x, y = related_series(24 * 40, 0.9, seed=3)
+    text = HEADER + "".join(
+        row(h, "A", x[h]) + (row(h, "B", y[h]) if h < 24 * 30 else "") for h in range(24 * 40)
+    )
+    (tmp_path / "feed" / "a.csv").write_text(text, encoding="utf-8")
+    path = str(tmp_path / "monitor.toml")
+    assert run("nightly", "--as-of", "2025-02-09", "--config", path).exit_code == ExitCode.WELL
+    listed = run("notes", "--config", path)
+    assert listed.exit_code == ExitCode.WELL
+    assert "2025-01-31 00:00  B.NO2: gap: no observation [lasts]" in listed.output
+    assert max(len(line) for line in listed.output.splitlines()) <= 80
+    notes = json.loads(run("notes", "--json", "--config", path).output)
+    assert {(n["subject"], n["kind"], n["end"]) for n in notes} == {
+        ("B.NO2", "gap", None),
+        ("B.NO2", "low coverage", None),
+        ("A.NO2~B.NO2", "not computable", None),
+    }
+    assert "B.NO2: gap: no observation" in run("alerts", "--config", path).output
+    status = run("status", "--as-of", "2025-02-09", "--config", path).output
+    assert "Series without data (no data is not no change): 1 of 2" in status
+    assert "Data notes that last: 3" in status
+
+
 def test_one_alert_shows_what_it_rests_on_and_the_cautions(config: str):
     output = run("alert", "1", "--config", config).output
-    for words in ("before", "after", "evidence", "threshold", "rests on", "settings"):
+    for words in (
+        "before",
+        "after",
+        "change",
+        "evidence",
+        "threshold",
+        "Rests on",
+        "settings",
+        "median",
+        "slope of",
+    ):
         assert words in output
+    assert "feed/all.csv lines" in output
+    assert re.search(r"onset +\S+ \(.*90 %|onset +about .*90 %", output)
     assert "Association is not cause" in " ".join(output.split())
     assert max(len(line) for line in output.splitlines()) <= 80
+
+
+def test_an_alert_for_machines_holds_its_sheet_and_the_origin_of_its_readings(config: str):
+    alert = json.loads(run("alert", "1", "--config", config, "--json").output)
+    assert alert["sheet"]["change"]["high"] < 0
+    assert {o["path"] for o in alert["provenance"]["origins"]} == {"feed/all.csv"}
+    assert len(alert["provenance"]["origins"][0]["sha256"]) == 64
+    now = json.loads(run("alert", "1", "--now", "--config", config, "--json").output)
+    assert now["sheet"] == alert["sheet"]
+    assert "As seen now: nights to 2025-06-19" in run("alert", "1", "--now", "--config", config).output
+
+
+def test_an_alert_is_reproduced_bit_for_bit(config: str):
+    same = run("alert", "1", "--reproduce", "--config", config)
+    assert same.exit_code == ExitCode.WELL, same.output
+    assert "the same in every bit" in " ".join(same.output.split())
+    assert json.loads(run("alert", "1", "--reproduce", "--config", config, "--json").output)["matches"]
 
 
 def test_an_alert_that_does_not_exist_ends_with_a_message(config: str):

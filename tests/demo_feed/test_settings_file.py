@@ -7,13 +7,15 @@ import re
 import shutil
 import subprocess
 import sys
+import tomllib
 from pathlib import Path
 
 import pytest
 from pydantic import BaseModel
 
 import rhovane_demo
-from rhovane.settings import Settings, load_settings
+from rhovane.model import ReadingsUse
+from rhovane.settings import Settings, load_settings, load_site_log
 from rhovane_demo import clocks, layouts
 from rhovane_demo.instruments import FAIL, MISSING, PASS, SUSPECT, UNITS
 
@@ -40,7 +42,7 @@ def test_every_setting_of_the_schema_is_in_the_file():
     looked_for = 0
     for section in sections(Settings):
         for name in set(section.model_fields) - {"origin"}:
-            written = re.search(rf"(^|[\s#{{]){name} = |^\[+(\w+\.)?{name}\]+$", text, re.MULTILINE)
+            written = re.search(rf"(^|[\s#{{]){name} = |^(# )?\[+(\w+\.)?{name}\]+$", text, re.MULTILINE)
             assert written, f"{section.__name__}.{name} is not in {CONFIG.name}"
             looked_for += 1
     assert looked_for > 50
@@ -49,7 +51,7 @@ def test_every_setting_of_the_schema_is_in_the_file():
 def test_every_plain_setting_has_a_comment():
     lines = CONFIG.read_text(encoding="utf-8").split("[[source]]")[0].splitlines()
     settings_lines = [i for i, line in enumerate(lines) if re.match(r"^\w+ = ", line)]
-    assert len(settings_lines) == 21
+    assert len(settings_lines) == 30
     for i in settings_lines:
         assert lines[i - 1].startswith("# "), lines[i]
 
@@ -62,7 +64,7 @@ def test_network_and_calendar_are_those_of_the_world(settings):
         for first, last in clocks.OTHER_DAYS
         for i in range((last - first).days + 1)
     }
-    assert settings.calendar.dates == expected
+    assert settings.other_days(min(expected), max(expected)) == expected
     assert settings.work_folder == (CONFIG.parent / "../rhovane-demo").resolve()
     assert settings.alerts.false_alarms_per_year == 4
 
@@ -124,6 +126,22 @@ def test_sources_are_declared_as_they_are_written(settings):
 
 def test_settings_text_is_the_file_of_the_checkout():
     assert rhovane_demo.settings_text() == CONFIG.read_text(encoding="utf-8")
+    for name in rhovane_demo.SETTINGS_FILES:
+        assert rhovane_demo.settings_text(name) == (CONFIG.parent / name).read_text(encoding="utf-8")
+
+
+def test_all_settings_files_travel_with_the_installed_package():
+    built = tomllib.loads((CONFIG.parents[1] / "pyproject.toml").read_text(encoding="utf-8"))
+    included = built["tool"]["hatch"]["build"]["targets"]["wheel"]["force-include"]
+    assert included == {f"config/{name}": f"rhovane_demo/{name}" for name in rhovane_demo.SETTINGS_FILES}
+
+
+def test_the_shipped_site_log_holds_notes_only(settings):
+    entries = load_site_log(
+        settings.site_log_path, settings.series_by_key(), settings.network.standard_offset
+    )
+    assert len(entries) == 2
+    assert {entry.readings for entry in entries} == {ReadingsUse.AS_USUAL}
 
 
 def run_with_package_at(folder: Path, code: str) -> subprocess.CompletedProcess[str]:

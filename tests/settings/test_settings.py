@@ -174,17 +174,6 @@ def test_the_settings_hash_changes_with_any_setting_but_not_with_the_place():
     assert settings_from(raw, PLACE).settings_hash != base.settings_hash
 
 
-def test_calendar_spans_include_both_ends():
-    raw = plain()
-    raw["calendar"] = {"other_days": ["2024-12-30/2025-01-01", "2025-05-01"]}
-    assert settings_from(raw, PLACE).calendar.dates == {
-        dt.date(2024, 12, 30),
-        dt.date(2024, 12, 31),
-        dt.date(2025, 1, 1),
-        dt.date(2025, 5, 1),
-    }
-
-
 @pytest.mark.parametrize(("text", "minutes"), [("+01:00", 60), ("-05:30", -330), ("+00:00", 0)])
 def test_offsets_are_read_with_their_sign(text: str, minutes: int):
     assert parse_offset(text) == dt.timedelta(minutes=minutes)
@@ -195,7 +184,7 @@ def described_keys(model: type[Any], prefix: str = "") -> set[str]:
     for name, field in model.model_fields.items():
         if name == "origin":
             continue
-        inner = re.findall(r"schema\.(\w+)", str(field.annotation))
+        inner = re.findall(r"(?:schema|data_quality)\.(\w+)", str(field.annotation))
         import rhovane.settings.schema as schema
 
         if inner and hasattr(getattr(schema, inner[0]), "model_fields"):
@@ -216,3 +205,26 @@ def test_the_shipped_settings_file_shows_every_setting():
         and f"[source.{key.split('.')[-1]}]" not in text
     ]
     assert missing == []
+
+
+def with_segments(*segments: tuple[str, str]) -> dict[str, Any]:
+    raw = plain()
+    raw["series"][0]["segments"] = [{"first_day": day, "what": what} for day, what in segments]
+    return raw
+
+
+def test_segments_are_days_in_order_and_move_the_recipe_hash_of_their_pairs_only():
+    raw = with_segments(("2025-03-01", "new analyser"), ("2025-06-01", "moved across the road"))
+    settings = settings_from(raw, PLACE)
+    base = settings_from(plain(), PLACE)
+    assert [s.first_day for s in settings.domain_series()[0].segments] == [
+        dt.date(2025, 3, 1),
+        dt.date(2025, 6, 1),
+    ]
+    assert settings.domain_series()[1].segments == ()
+    assert settings.pair_of(settings.pair[0]).recipe_hash != base.pair_of(base.pair[0]).recipe_hash
+    reworded = settings_from(with_segments(("2025-03-01", "a"), ("2025-06-01", "b")), PLACE)
+    assert reworded.pair_of(reworded.pair[0]).recipe_hash == settings.pair_of(settings.pair[0]).recipe_hash
+    for days in (("2025-06-01", "2025-03-01"), ("2025-03-01", "2025-03-01")):
+        assert "give each day once, in order" in refusal(with_segments(*((day, "x") for day in days)))
+    assert "first_day" in refusal(with_segments(("next spring", "x")))

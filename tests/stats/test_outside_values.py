@@ -16,15 +16,18 @@ from rhovane.stats import (
     rank_correlation_test,
     rolling_rank_correlation,
 )
-from rhovane.stats.constancy import bridge_p_value
+from rhovane.stats.constancy import bridge_p_value, departure
 from rhovane.stats.dependence import (
     Autocorrelation,
     inflation,
+    joint_ranks,
     scaled_products,
     spearman_p_value,
+    tau_of,
     transformed_products,
 )
 from rhovane.stats.exact_null import inversion_shares, squared_difference_counts
+from rhovane.stats.rank_kernels import dense_ranks
 from rhovane.stats.rank_test import independent_interval
 
 GOLDEN = Path(__file__).parents[1] / "golden"
@@ -36,6 +39,10 @@ def plain(x, y, method="spearman"):
     return rank_correlation_test(x, y, method=method, adjust="none")
 
 
+def ranked(x, y):
+    return [dense_ranks(np.asarray(side, dtype=float))[0] for side in (x, y)]
+
+
 def test_tuna_data_of_hollander_and_wolfe():
     value = RANKS["D01"]["value"]
     rho, tau = plain(value["x"], value["y"]), plain(value["x"], value["y"], "kendall")
@@ -44,6 +51,12 @@ def test_tuna_data_of_hollander_and_wolfe():
     assert abs(tau.statistic - value["tau"]) < 1e-12
     assert abs(tau.p_value - value["p_kendall_exact"]) < 1e-12
     assert abs(float(spearman_p_value(rho.statistic, 9)) - value["p_spearman_t"]) < 1e-12
+    # S is the sum of squared rank differences, T the number of concordant pairs.
+    assert (1 - rho.statistic) * (9**3 - 9) / 6 == pytest.approx(value["S"], abs=1e-10)
+    sums = tau_of(*ranked(value["x"], value["y"]))
+    assert (sums.score + 9 * 8 // 2) // 2 == value["T"]
+    normal = math.erfc(abs(sums.score) / math.sqrt(2 * sums.score_variance))
+    assert abs(normal - value["p_kendall_z"]) < 1e-12
 
 
 def test_tau_b_with_ties_and_its_variance():
@@ -51,6 +64,10 @@ def test_tau_b_with_ties_and_its_variance():
     tau, rho = plain(value["x"], value["y"], "kendall"), plain(value["x"], value["y"])
     assert abs(tau.statistic - value["tau_b"]) < 1e-10
     assert abs(tau.p_value - value["p"]) < 1e-10
+    sums = tau_of(*ranked(value["x"], value["y"]))
+    assert sums.score == value["S"]
+    assert abs(sums.score_variance - value["varS"]) < 1e-10
+    assert abs(sums.score / math.sqrt(sums.score_variance) - value["z"]) < 1e-10
     assert abs(rho.statistic - value["rho"]) < 1e-12
     assert abs(rho.p_value - value["p_rho_t"]) < 1e-12
 
@@ -93,6 +110,8 @@ def test_bonett_and_wrights_interval():
     found = plain(value["x"], value["y"])
     assert abs(found.statistic - value["rho"]) < 1e-12
     np.testing.assert_allclose((found.low, found.high), value["ci95"], atol=1e-12)
+    on_the_z_scale = (math.atanh(found.high) - math.atanh(found.low)) / (2 * 1.959963984540054)
+    assert abs(on_the_z_scale * (1 - found.statistic**2) - value["se_rho"]) < 1e-9
 
 
 def test_standard_errors_on_the_fisher_scale():
@@ -262,6 +281,44 @@ def test_the_classical_formula_without_ties():
 def test_quantiles_of_the_brownian_bridge():
     for quantile, level in zip(DEPENDENCE["D14"]["value"], (0.10, 0.05, 0.01), strict=True):
         assert abs(bridge_p_value(quantile) - level) < 2e-6
+
+
+def test_influences_cross_the_boundary_of_endless_watching_as_seldom_as_published():
+    value = DEPENDENCE["D15"]["value"]
+    exact = {float(level): a2 for level, a2 in value["exact_a2"].items()}
+    for level, a2 in exact.items():
+        a = math.sqrt(a2)
+        tail = math.erfc(a / math.sqrt(2)) + 2 * a * math.exp(-a2 / 2) / math.sqrt(2 * math.pi)
+        assert abs(tail - level) < 1e-6
+    # A bridge B on (0, 1) is a Brownian motion (1 + s) B(s / (1 + s)): watching it from s = 1 for ever is
+    # watching the second half of a window whose relationship holds still.
+    rng = np.random.default_rng(15)
+    n, windows = 1000, 1000
+    t = np.arange(n // 2, n) / n
+    s = t / (1 - t)
+    crossed = dict.fromkeys(value["published"], 0)
+    for _ in range(windows):
+        x, noise = rng.normal(size=(2, n))
+        ranks = joint_ranks(*ranked(x, 0.5 * x + math.sqrt(0.75) * noise))
+        walk = (1 + s) * np.abs(departure(ranks, ranks.rho)[0][n // 2 - 1 : -1])
+        for level, a2 in value["published"].items():
+            crossed[level] += (walk > np.sqrt(s * (a2 + np.log(s)))).any()
+    # Steps instead of a continuous path lose about a tenth of the crossings; standard errors .9 % and .7 %.
+    assert 0.06 < crossed[".10"] / windows < 0.12
+    assert 0.025 < crossed[".05"] / windows < 0.07
+
+
+def test_two_years_of_traffic_and_temperature():
+    """Metro Interstate Traffic Volume (UCI, CC BY 4.0; two columns, see the first lines of the file)."""
+    value = RANKS["D21"]["value"]
+    traffic, temperature = np.genfromtxt(
+        GOLDEN / "metro_traffic.csv.gz", delimiter=",", skip_header=4, unpack=True
+    )
+    assert len(traffic) == value["rows"]
+    assert abs(100 * np.isnan(traffic).mean() - value["na_pct"]) < 0.005
+    found = plain(traffic, temperature)
+    assert found.n_pairs == value["n_pairs"]
+    assert abs(found.statistic - value["spearman"]) < 1e-6
 
 
 def test_false_alarm_rates_of_the_unadjusted_test():

@@ -133,15 +133,6 @@ def value_and_flag(content):
 # -- what other processes do -------------------------------------------------------------------------
 
 
-def ingest_one_by_one(path: Path, files, ready) -> None:
-    """Take in files, each in a transaction of its own."""
-    with open_store(path) as store:
-        store.ensure_series(SERIES)
-        ready.set()
-        for file in files:
-            store.append_files([file], now=NOW)
-
-
 def ingest_and_vanish(path: Path, files) -> None:
     """Take in files without a checkpoint and end as a killed process does."""
     store = open_store(path)

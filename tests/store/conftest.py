@@ -2,10 +2,12 @@
 
 import shutil
 
+import numpy as np
 import pytest
 
-from rhovane.store import open_store
-from store.building import SERIES
+from rhovane.model import RejectedRow
+from rhovane.store import NewAlert, NewAlertEvent, open_store
+from store.building import NOW, SERIES, parsed_file, random_files
 
 
 @pytest.fixture(scope="session")
@@ -29,3 +31,14 @@ def store(path, new_store):
     shutil.copyfile(new_store, path)
     with open_store(path) as opened:
         yield opened
+
+
+@pytest.fixture
+def used(store):
+    """A store with readings, revisions, rejected rows and an alert."""
+    store.append_files(random_files(np.random.default_rng(3), 8), now=NOW)
+    store.append_files([parsed_file([], rejected=[RejectedRow(0, "", "", "empty")])], now=NOW)
+    store.begin_night(kind="nightly", as_of=NOW.date(), now=NOW, settings_hash="", program_version="0")
+    store.append_alerts([NewAlert("a~b", NOW.date(), 1)])
+    store.append_alert_events([NewAlertEvent(1, NOW, "raised")])
+    return store

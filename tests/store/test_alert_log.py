@@ -128,3 +128,20 @@ def test_events_that_cannot_be_recorded_leave_nothing(log):
     assert log.append_alert_events([]) == []
     assert log.append_alerts([]) == []
     assert log.verify_alert_chain() is None
+
+
+def test_whether_an_event_of_a_kind_is_there_follows_what_is_added(log):
+    assert log.has_events_of("shelved")
+    assert not log.has_events_of("outcome")
+
+    def undone() -> None:
+        with log.transaction():
+            log.append_alert_events([NewAlertEvent(1, NOW, "outcome")])
+            assert log.has_events_of("outcome")
+            raise InterruptedError
+
+    with pytest.raises(InterruptedError):
+        undone()
+    assert not log.has_events_of("outcome")
+    log.append_alert_events([NewAlertEvent(1, NOW, "outcome")])
+    assert log.has_events_of("outcome")

@@ -89,7 +89,7 @@ def test_failed_export_leaves_the_earlier_file_and_nothing_else(store, tmp_path)
 
 
 def test_place_that_cannot_be_written_is_named_with_a_remedy(store, tmp_path):
-    with pytest.raises(RhovaneError, match=r"ends in \.csv or \.parquet"):
+    with pytest.raises(RhovaneError, match=r"ends in \.csv, \.parquet or \.json"):
         store.export_windows(tmp_path / "w.xlsx")
     (tmp_path / "taken.csv").mkdir()
     with pytest.raises(RhovaneError, match="cannot be replaced"):

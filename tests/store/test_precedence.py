@@ -8,6 +8,7 @@ import pytest
 from reference.naive_store import NaiveStore
 from rhovane.store import open_store
 from rhovane.store.clock import from_seconds
+from rhovane.store.exports import STATES_AS_OF
 from rhovane.store.precedence import READING, group_by_hour, outranks
 from store.building import (
     FIRST_HOUR,
@@ -76,10 +77,83 @@ def test_state_as_of_an_ingest_is_the_state_recorded_after_it(store, seed):
     recorded = {}
     for file in random_files(rng, 15):
         (outcome,) = store.append_files([file], now=NOW, checkpoint=False)
-        recorded[outcome.ingest_id] = seen(store)
+        recorded[outcome.ingest_id] = current(store)
     assert len(recorded) == 15
+    assert store.value("select count(*) from reading_confirmation") > 0
     for ingest_id, content in recorded.items():
-        assert seen(store, ingest_id) == content
+        assert seen(store, ingest_id) == value_and_flag(content)
+        assert states(store, ingest_id) == content, "stage and result time too"
+
+
+def states(store, upto):
+    """(series, hour) -> (value, flag, stage, result time) as after an ingest."""
+    rows = store.rows(
+        f"""
+        select s.key, epoch(r.ts)::bigint, r.value, r.flag, r.stage, epoch(r.result_time)::bigint
+        from ({STATES_AS_OF}) r join series s on s.id = r.series_id
+        """,
+        {"upto": upto},
+    )
+    content = {(key, ts): tuple(rest) for key, ts, *rest in rows}
+    assert len(content) == len(rows), "an hour has two states"
+    return content
+
+
+def one_delivery_an_hour(rng, number):
+    """A file that names no hour twice, with a result time of its own."""
+    hours = [(key, hour) for key in KEYS for hour in range(6)]
+    chosen = rng.choice(len(hours), size=rng.integers(3, 12), replace=False)
+    return [
+        {
+            "series": hours[i][0],
+            "hour": hours[i][1],
+            "value": [None, 0.0, 1.0, 2.0][rng.integers(4)],
+            "flag": int(rng.choice([1, 3])),
+            "stage": int(rng.integers(3)),
+            "result_time": FIRST_HOUR + number,
+        }
+        for i in chosen
+    ]
+
+
+def split(rng, readings, name):
+    """The readings of a file in one to three files, some of them in two of these."""
+    piece = rng.integers(rng.integers(1, 4), size=len(readings))
+    again = rng.random(len(readings)) < 0.2
+    parts = [[r for r, p, a in zip(readings, piece, again, strict=True) if p == i or a] for i in range(3)]
+    return [parsed_file(part, name=f"{name}-{i}.csv") for i, part in enumerate(parts) if part]
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_splitting_overlapping_and_shuffling_files_leaves_readings_and_history_complete(
+    tmp_path, new_store, seed
+):
+    rng = np.random.default_rng(300 + seed)
+    deliveries = [one_delivery_an_hour(rng, number) for number in range(10)]
+    delivered = {
+        (r["series"], FIRST_HOUR + 3600 * r["hour"], r["value"], r["flag"]) for d in deliveries for r in d
+    }
+    contents = []
+    for i in range(3):
+        files = [part for n, d in enumerate(deliveries) for part in split(rng, d, f"feed/{n}")]
+        files = [files[j] for j in rng.permutation(len(files))]
+        with open_store(shutil.copyfile(new_store, tmp_path / f"{i}.duckdb")) as store:
+            for batch in in_batches(rng, files):
+                store.append_files(batch, now=NOW, checkpoint=False)
+            content = current(store)
+            lost = store.rows(
+                """
+                select s.key, epoch(h.ts)::bigint, h.value, h.flag
+                from reading_history h join series s on s.id = h.series_id
+                """
+            )
+            kept = {(*key, value, flag) for key, (value, flag, *_) in content.items()}
+            assert kept | set(lost) == delivered
+            assert store.verify() == []
+        contents.append(content)
+    assert len(contents[0]) > 12
+    assert contents[1] == contents[0]
+    assert contents[2] == contents[0]
 
 
 def deliver(store, value, *, flag=1, stage=1, result_time=0, line=2):

@@ -171,6 +171,8 @@ def test_closing_twice_is_harmless(store):
         ),
         (duckdb.FatalException("database has been invalidated"), StoreDamaged, "ingest the feed again"),
         (duckdb.OutOfMemoryException("failed to allocate"), RhovaneError, "memory_limit_mb"),
+        (duckdb.IOException("could not write: No space left on device"), RhovaneError, "disk is full"),
+        (duckdb.FatalException("invalidated: File too large"), RhovaneError, "what was committed before is"),
         (duckdb.BinderException("no such column"), RhovaneError, "Nothing of this step was kept"),
     ],
 )

@@ -25,7 +25,7 @@ def test_acknowledge_note_outcome_and_shelve_are_added_in_order(browse, own):
     for fields in (
         {"decision": "acknowledge", "note": "seen"},
         {"decision": "note", "note": "belt torn"},
-        {"decision": "outcome", "outcome": "instrument", "note": "replaced"},
+        {"decision": "outcome", "outcome": "instrument", "note": "replaced", "fault_until": ""},
         {"decision": "shelve", "until": "2025-07-01"},
     ):
         response = record(client, **fields)
@@ -34,7 +34,7 @@ def test_acknowledge_note_outcome_and_shelve_are_added_in_order(browse, own):
     assert events_of(own) == [
         ("acknowledged", "ana", "seen", {}),
         ("note", "ana", "belt torn", {}),
-        ("outcome", "ana", "replaced", {"outcome": "instrument"}),
+        ("outcome", "ana", "replaced", {"outcome": "instrument", "acts_from": "2025-06-20"}),
         ("shelved", "ana", "", {"until": "2025-07-01"}),
     ]
     text = client.get("/alert/1?recorded=1").text
@@ -51,6 +51,8 @@ def test_acknowledge_note_outcome_and_shelve_are_added_in_order(browse, own):
         ({"decision": "shelve", "until": "2025-06-20"}, "not in the future"),
         ({"decision": "shelve", "until": "soon"}, "is not a day"),
         ({"decision": "outcome", "outcome": "sabotage"}, "Choose an outcome"),
+        ({"decision": "outcome", "outcome": "instrument", "fault_until": "May"}, "last day at fault"),
+        ({"decision": "outcome", "outcome": "false", "new_baseline": "yes"}, "alert 1:"),
         ({"decision": "note", "note": " "}, "The note is empty"),
         ({"decision": "note", "note": "x" * 8001}, "at most 8000 are kept"),
         ({"decision": "delete"}, "is no decision"),

@@ -79,7 +79,8 @@ def refusal(event: AlertEvent, so_far: Sequence[AlertEvent], now: dt.datetime) -
     """Why an event by a person cannot be added to the log; None when it can.
 
     A person acknowledges once, shelves with an end in the future, and gives an outcome as often as the
-    finding changes (the newest stands; the earlier ones stay in the log).
+    finding changes (the newest stands; the earlier ones stay in the log). An end of the days that are set aside
+    belongs to a fault, a new baseline to a real change that still lasts.
     """
     standing = standing_of(so_far, now)
     if not event.who.strip():
@@ -96,6 +97,17 @@ def refusal(event: AlertEvent, so_far: Sequence[AlertEvent], now: dt.datetime) -
             return "only the night raises alerts"
         case EventKind.OUTCOME if standing.state is AlertState.OUT_OF_SERVICE:
             return "the pair is out of service"
+        case EventKind.OUTCOME if event.payload.get("until") and not _is_fault(event):
+            return "--until says how long readings were at fault; it is for instrument and data-handling"
+        case EventKind.OUTCOME if event.payload.get("new_baseline"):
+            if event.payload["outcome"] != Outcome.REAL_CHANGE:
+                return "--new-baseline takes a new level as normal; it is for real-change"
+            if not standing.changed:
+                return "the change has ended; there is no new level to take as normal"
         case _:
             pass
     return None
+
+
+def _is_fault(event: AlertEvent) -> bool:
+    return event.payload["outcome"] in (Outcome.INSTRUMENT, Outcome.DATA_HANDLING)

@@ -24,7 +24,8 @@ class Found:
     ``pair_key`` is the pair whose evidence crossed the threshold, ``members`` all pairs concerned;
     ``suspect`` names what is likeliest to have changed. ``end_day`` is None while it lasts; ``ending``
     says how it ended: "returned" or "new baseline". ``evidence`` and ``threshold`` are the chart's value
-    and limit on the alarm day.
+    and limit on the alarm day. ``onset_range`` holds the onset with a probability of 90 %; ``lag_steps``
+    says by how many steps the suspect seems late.
     """
 
     pair_key: str
@@ -39,6 +40,8 @@ class Found:
     suspect: str = ""
     evidence: float = float("nan")
     threshold: float = float("nan")
+    onset_range: tuple[dt.date, dt.date] | None = None
+    lag_steps: int = 0
 
 
 @dataclass(frozen=True)
@@ -95,9 +98,7 @@ def reconcile(
         match = matched.get(alert.id)
         if match is None:
             if not standing.superseded and alert.night_as_of < night_as_of:
-                note = (
-                    "the evidence as it stands now (readings revised since, or settings) no longer shows it"
-                )
+                note = "the evidence as it stands now (readings revised or taken out since, or settings) no longer shows it"
                 written.append(AlertEvent(alert.id, EventKind.SUPERSEDED, at, "rhovane", note, last_of_night))
             continue
         if standing.superseded:
@@ -109,13 +110,18 @@ def reconcile(
             written.append(AlertEvent(alert.id, EventKind.CONFIRMED, at, "rhovane", note, last_of_night))
         if match.ending is not None and ended is None:
             payload = {**last_of_night, "day": str(match.end_day)}
-            note = (
-                "evidence is back at its earlier level"
-                if match.ending == "returned"
-                else "the change has lasted; later days are compared with the new level"
-            )
+            note = _how_it_ended(match.ending, events[alert.id])
             written.append(AlertEvent(alert.id, ENDING_EVENT[match.ending], at, "rhovane", note, payload))
     return LogChange(tuple(new), tuple(written), matched)
+
+
+def _how_it_ended(ending: str, events: Sequence[AlertEvent]) -> str:
+    if ending == "returned":
+        return "evidence is back at its earlier level"
+    decided = [e for e in events if e.kind is EventKind.OUTCOME and e.payload.get("new_baseline")]
+    if decided:
+        return f"taken as the new level by decision of {decided[-1].who}; later days are compared with it"
+    return "the change has lasted; later days are compared with the new level"
 
 
 def _same(alert: Alert, episode: Found) -> bool:

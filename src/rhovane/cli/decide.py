@@ -9,8 +9,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from rhovane.cli.alert_wording import state_in_full
 from rhovane.cli.entry import main, utc_now, writes_store
-from rhovane.cli.wording import short_state
 from rhovane.model import EventKind, Outcome
 
 if TYPE_CHECKING:
@@ -30,7 +30,10 @@ def _record(
     from rhovane.review import record_decision
 
     entry = record_decision(store, alert_id, kind, now=utc_now(), who=who, note=note, payload=payload)
-    click.echo(f"Alert {alert_id}: {short_state(entry)}")
+    acts = entry.events[-1].payload.get("acts_from")
+    click.echo(
+        f"Alert {alert_id}: {state_in_full(entry)}" + (f"; acts from the night of {acts}" if acts else "")
+    )
 
 
 @main.command()
@@ -67,10 +70,36 @@ def _outcome(_ctx: click.Context, _param: click.Parameter, text: str) -> str:
 @main.command()
 @by_a_person
 @click.argument("found", metavar="OUTCOME", callback=_outcome)
+@click.option(
+    "--until",
+    type=click.DateTime(formats=["%Y-%m-%d"]),
+    default=None,
+    help="instrument, data-handling: last day at fault, YYYY-MM-DD; default: until the change has ended.",
+)
+@click.option(
+    "--new-baseline",
+    is_flag=True,
+    help="real-change: take the new level as normal now, not only when it has lasted.",
+)
 @writes_store
-def outcome(store: Store, alert_id: int, who: str, note: str, found: str) -> None:
+def outcome(
+    store: Store,
+    alert_id: int,
+    who: str,
+    note: str,
+    found: str,
+    until: dt.datetime | None,
+    new_baseline: bool,
+) -> None:
     """Record what was behind an alert.
 
-    OUTCOME is one of: instrument, data-handling, real-change, weather-or-season, false, undetermined.
+    OUTCOME is one of: instrument, data-handling, real-change, weather-or-season, false, undetermined. Days of an
+    instrument or data-handling fault never enter a reference of the alert's pairs. A decision acts from the next
+    night on; what earlier nights decided stays.
     """
-    _record(store, alert_id, EventKind.OUTCOME, who, note, {"outcome": found})
+    payload: dict[str, Any] = {"outcome": found}
+    if until is not None:
+        payload["until"] = until.date().isoformat()
+    if new_baseline:
+        payload["new_baseline"] = True
+    _record(store, alert_id, EventKind.OUTCOME, who, note, payload)

@@ -9,19 +9,20 @@ import subprocess
 import sys
 import time
 import tomllib
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
-from rhovane.cli.wording import alert_table, caution_lines
-from rhovane.model import RhovaneError
+from rhovane.cli.alert_wording import alert_table
+from rhovane.cli.wording import caution_lines
+from rhovane.model import STEP_KINDS, DataNote, NoteKind, NoteState, RhovaneError
 from rhovane.pipeline import nights_between, walk_nights
-from rhovane.review import AlertEntry, alert_entries
+from rhovane.review import AlertEntry, alert_entries, all_notes
 from rhovane.settings import Settings, load_settings
 from rhovane.store import Store
-from rhovane_demo import settings_text
+from rhovane_demo import SETTINGS_FILES, settings_text
 from rhovane_demo.feed import deliveries, write_files
-from rhovane_demo.planted import BY_ID, TABLE, answers
+from rhovane_demo.planted import BY_ID, TABLE, Planted, answers
 from rhovane_demo.world import make_world
 
 NIGHT_HOUR = dt.time(3, 40)
@@ -55,7 +56,10 @@ class Demonstration:
     def __init__(self, config: Path, *, seed: int, events: bool, fresh: bool) -> None:
         if not config.exists():
             config.parent.mkdir(parents=True, exist_ok=True)
-            config.write_text(settings_text(), encoding="utf-8")
+            for name in SETTINGS_FILES:
+                place = config if name == "monitor.toml" else config.parent / name
+                if not place.exists():
+                    place.write_text(settings_text(name), encoding="utf-8")
         self.config = config
         self.settings: Settings = load_settings(config)
         if self.settings.network.name != tomllib.loads(settings_text())["network"]["name"]:
@@ -165,7 +169,8 @@ class Demonstration:
             answered = {e.alert.id: answer_of(e) for e in entries}
             lines += alert_table(entries, {k: answer_words(v) for k, v in answered.items()})
             lines += ["", "Planted changes and what answers to them:"]
-            lines += planted_lines(entries, answered, last.as_of if last else None)
+            notes = [n for n in all_notes(store) if n.kind is not NoteKind.NOT_COMPUTABLE]
+            lines += planted_lines(entries, answered, last.as_of if last else None, notes)
         else:
             lines += alert_table(entries)
         first = entries[0].alert.id if entries else None
@@ -178,6 +183,7 @@ class Demonstration:
                 f"  rhovane outcome {first} real-change{config}",
             ]
         lines += [
+            f"  rhovane notes --all{config}",
             f"  rhovane status --as-of {last.as_of if last else 'DATE'}{config}",
             f"  rhovane page --as-of {last.as_of if last else 'DATE'}{config}",
             f"  rhovane report{config}",
@@ -215,10 +221,35 @@ def answer_words(ids: list[str]) -> str:
     )
 
 
+NOTES_OF = {  # data notes that may answer to an entry of the table, and days after its first day
+    "T6": (STEP_KINDS, 7),
+    "T7": ((NoteKind.DRY,), 14),
+    "D1": (STEP_KINDS, 3),
+    "D4": ((NoteKind.GAP,), 3),
+    "D6": (STEP_KINDS, 3),
+}
+
+
+def note_answer(event: Planted, notes: Sequence[DataNote]) -> str:
+    """The data note that answers to an entry of the table, in few words; empty when none does."""
+    if event.id not in NOTES_OF:
+        return ""
+    kinds, within = NOTES_OF[event.id]
+    for note in notes:
+        after = (note.begin.date() - event.first).days  # UTC: midnight of standard time is the evening before
+        if note.subject in event.series and note.kind in kinds and -1 <= after <= within:
+            filled = ", filled" if note.state is NoteState.WITHDRAWN else ""
+            return f"note: {note.kind.value}{filled}"
+    return ""
+
+
 def planted_lines(
-    entries: list[AlertEntry], answered: dict[int, list[str]], last_day: dt.date | None
+    entries: list[AlertEntry],
+    answered: dict[int, list[str]],
+    last_day: dt.date | None,
+    notes: Sequence[DataNote] = (),
 ) -> list[str]:
-    """One line for each planted change, decoy and blind spot: the first alert that answers to it."""
+    """One line for each planted change, decoy, blind spot and data note: the alert or note that answers to it."""
     lines = []
     for event in TABLE:
         mine = [e for e in entries if event.id in answered[e.alert.id]]
@@ -231,8 +262,9 @@ def planted_lines(
             told = f"alert {first.alert.id} on day {after}" if wanted else f"alert {first.alert.id}"
             told += f" (+{len(mine) - 1})" if len(mine) > 1 else ""
         else:
-            told = "MISSED" if wanted else "no alert, rightly"
+            told = "MISSED" if wanted else note_answer(event, notes)
+            told = told or ("MISSED" if event.kind == "data note" else "no alert, rightly")
         lines.append(
-            f"  {event.id:<3} {event.kind:<10} {event.first}  {told:<20} {event.what}"[:LONGEST_LINE]
+            f"  {event.id:<3} {event.kind:<10} {event.first}  {told:<20}  {event.what}"[:LONGEST_LINE]
         )
     return lines

@@ -100,12 +100,12 @@ def settings_at(config: Path) -> Settings:
     return load_settings(config)
 
 
-def store_of(settings: Settings, *, read_only: bool) -> Store:
-    """The network's store, opened as its settings say."""
+def store_of(settings: Settings, *, read_only: bool, path: Path | None = None) -> Store:
+    """The network's store, or a copy of it at ``path``, opened as its settings say."""
     from rhovane.store import open_store
 
     return open_store(
-        settings.store_path,
+        path or settings.store_path,
         lock_wait_s=settings.store.lock_wait_s,
         memory_limit_mb=settings.store.memory_limit_mb,
         threads=settings.store.threads,

@@ -31,10 +31,13 @@ MOST_LINES = 40
 @with_settings
 @with_json
 def check(config: Path, as_json: bool) -> None:
-    """Check the settings, and say what reading the feed would do. Writes nothing."""
+    """Check settings, calendar and site log, and say what reading the feed would do. Writes nothing."""
     from rhovane.pipeline.checking import dry_run
+    from rhovane.settings import load_site_log
 
     settings = settings_at(config)
+    path, offset = settings.site_log_path, settings.network.standard_offset
+    log = () if path is None else load_site_log(path, settings.series_by_key(), offset)
     if settings.store_path.exists():
         with store_of(settings, read_only=True) as store:
             found = dry_run(settings, store)
@@ -43,7 +46,10 @@ def check(config: Path, as_json: bool) -> None:
     if as_json:
         print_json([source.as_json() for source in found])
         return
-    click.echo(f"{config}: well ({len(settings.series)} series, {len(settings.pair)} pairs)")
+    click.echo(
+        f"{config}: well ({len(settings.series)} series, {len(settings.pair)} pairs, "
+        f"{len(settings.calendar_entries)} calendar and {len(log)} site log entries)"
+    )
     for source in found:
         click.echo(f"{source.name}: {source.summary()}")
         for line in source.rejections[:MOST_LINES]:

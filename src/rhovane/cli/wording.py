@@ -7,11 +7,13 @@ import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
-from rhovane.model import CAUTION, CorrelationEstimate
+from rhovane.model import CAUTION
 
 if TYPE_CHECKING:
+    from rhovane.model import DataNote
     from rhovane.pipeline import NightReport
-    from rhovane.review import AlertEntry, Status
+    from rhovane.review import LogCounts, Status
+    from rhovane.store import Check, StoredSiteLogEntry
 
 WIDTH = 80
 
@@ -37,91 +39,72 @@ def night_lines(report: NightReport) -> list[str]:
     return lines
 
 
-def rho(estimate: CorrelationEstimate) -> str:
-    """A correlation in few characters."""
-    return "n/a" if estimate.statistic is None else f"{estimate.statistic:+.2f}"
+def span_text(stored: StoredSiteLogEntry, standard_offset: dt.timedelta) -> str:
+    """An entry of the site log in one line."""
+    zone = dt.timezone(standard_offset)
+    one = stored.entry
+    end = "still going on" if one.end is None else f"to {one.end.astimezone(zone):%Y-%m-%d %H:%M}"
+    gone = "" if stored.stands else f"; withdrawn {stored.withdrawn_at:%Y-%m-%d}"
+    return (
+        f"{one.start.astimezone(zone):%Y-%m-%d %H:%M} {end}  {one.subject}: {one.what} "
+        f"(readings {one.readings.value}{gone})"
+    )
 
 
-def rho_in_full(estimate: CorrelationEstimate) -> str:
-    """A correlation with what it rests on."""
-    span = f"{estimate.first_day} to {estimate.last_day}, {estimate.n_pairs} hours"
-    if estimate.statistic is None:
-        return f"not computable ({estimate.reason}); {span}"
-    text = f"{estimate.statistic:+.2f}"
-    if estimate.low is not None and estimate.high is not None:
-        text += f" (95 %: {estimate.low:+.2f} to {estimate.high:+.2f})"
-    if estimate.n_effective is not None:
-        span += f" worth {estimate.n_effective:.0f} independent ones"
-    if estimate.reason:
-        span += f"; interval: {estimate.reason}"
-    return f"{text}; {span}"
+def site_log_lines(entries: Sequence[StoredSiteLogEntry], standard_offset: dt.timedelta) -> list[str]:
+    """The site log, one entry after the other; times are standard time."""
+    lines = []
+    for stored in entries:
+        acts = "" if stored.acts_from is None else f", acts from the night of {stored.acts_from}"
+        text = f"{stored.number:>4}  {span_text(stored, standard_offset)}, {stored.who}{acts}"
+        lines += textwrap.wrap(text, WIDTH, subsequent_indent=" " * 6)
+    return lines or ["No entries in the site log."]
 
 
-def alert_table(entries: Sequence[AlertEntry], answers: dict[int, str] | None = None) -> list[str]:
-    """The alert list, one line an alert; ``answers`` adds a last column."""
-    if not entries:
-        return ["No alerts in the log."]
-    last = "answers to" if answers is not None else "state"
-    head = f"{'id':>4}  {'alarm day':<10}  {'onset':<10}  {'what':<27} {'before':>6} {'after':>6}  {last}"
-    lines = [head, "-" * min(WIDTH, len(head))]
-    for entry in entries:
-        a = entry.alert
-        tail = answers.get(a.id, "-") if answers is not None else short_state(entry)
-        what = what_changed(entry)
-        what = what if len(what) <= 27 else what[:26] + "…"
-        lines.append(
-            f"{a.id:>4}  {a.alarm_day}  {a.onset_day}  {what:<27} {rho(a.before):>6} {rho(a.after):>6}  {tail}"
-        )
+def count_lines(counts: LogCounts) -> list[str]:
+    """Counts over the alert log."""
+    lines = [f"{counts.alerts} alerts in the log", "New alerts by ISO week:"]
+    lines += [f"  {n:>4}  {week}" for week, n in counts.by_week.items()]
+    lines.append("By what was named first to look at:")
+    lines += [f"  {n:>4}  {suspect}" for suspect, n in counts.by_suspect.items()]
+    share = counts.confirmed_share
+    told = "none decided yet" if share is None else f"something was behind {share:.0%} of those decided"
+    lines.append(f"By outcome ({told}):")
+    lines += [f"  {n:>4}  {outcome}" for outcome, n in counts.by_outcome.items()]
+    lines.append(f"Stale, not reviewed for 14 days: {', '.join(map(str, counts.stale)) or 'none'}")
+    lines.append("Chattering, 3 or more alerts within 30 days:" + ("" if counts.chattering else " none"))
+    lines += [f"  {c.alerts:>4}  {c.suspect}, {c.first} to {c.last}" for c in counts.chattering]
     return lines
 
 
-def what_changed(entry: AlertEntry) -> str:
-    """The suspect: a series or station with its number of pairs, or the pair itself."""
-    alert = entry.alert
-    if alert.suspect and not alert.suspect.startswith("pair "):
-        return f"{alert.suspect} ({len(alert.members)} pairs)"
-    return alert.pair_key
+def check_lines(checks: Sequence[Check]) -> list[str]:
+    """What was checked in the store, the first faults, and what to do."""
+    lines = []
+    for check in checks:
+        lines.append(f"  {'FAULTY' if check.faults else 'well':<7}{check.what}: {check.extent}")
+        for fault in check.faults:
+            lines += textwrap.wrap(fault, WIDTH, initial_indent=" " * 9, subsequent_indent=" " * 11)
+    remedies = dict.fromkeys(c.remedy for c in checks if c.remedy)
+    for remedy in remedies:
+        lines += ["", *textwrap.wrap(remedy, WIDTH)]
+    return lines
 
 
-def short_state(entry: AlertEntry) -> str:
-    """State in a word or two, with the outcome where there is one."""
-    state = entry.standing.state.value
-    if entry.standing.superseded:
-        state += ", superseded"
-    if entry.standing.outcome is not None:
-        state += f" ({entry.standing.outcome.value})"
-    return state
+def note_lines(notes: Sequence[DataNote], offset: dt.timedelta, most: int | None = None) -> list[str]:
+    """Data notes, one after the other, days and hours in the network's standard time."""
+    from rhovane.review import note_state, note_words
 
-
-def alert_lines(entry: AlertEntry) -> list[str]:
-    """One alert in full."""
-    a, standing = entry.alert, entry.standing
-    facts = [
-        ("state", short_state(entry) + (", change lasts" if standing.changed else "")),
-        ("pairs", ", ".join(a.members) if len(a.members) > 1 else ""),
-        ("alarm day", f"{a.alarm_day} (night of {a.night_as_of})"),
-        ("onset", f"{a.onset_day} is the likeliest first day"),
-        ("before", rho_in_full(a.before)),
-        ("after", rho_in_full(a.after)),
-        ("evidence", f"{a.evidence:.2f} against a threshold of {a.threshold:.2f} (logarithm of the chart)"),
-        (
-            "rests on",
-            f"readings up to ingest {a.data_version}, settings {a.settings_hash}, recipe {a.recipe_hash}",
-        ),
-        *(("hint", hint) for hint in a.hints),
-    ]
-    lead = "" if a.suspect.startswith("pair ") or not a.suspect else f"{a.suspect}; "
-    timing = ", best lag moved" if a.kind == "timing" else ""
-    lines = [f"Alert {a.id}: {lead}{a.pair_key} became {a.direction}{timing}"]
-    for name, text in facts:
-        if text:
-            lines += textwrap.wrap(text, WIDTH, initial_indent=f"  {name:<11}", subsequent_indent=" " * 13)
-    lines.append("  log")
-    for event in entry.events:
-        extra = ", ".join(f"{k} {v}" for k, v in event.payload.items() if k in ("outcome", "until", "day"))
-        text = f"{event.at:%Y-%m-%d %H:%M} UTC  {event.kind.value}" + (f" ({extra})" if extra else "")
-        text += f", {event.who}" + (f": {event.note}" if event.note else "")
-        lines += textwrap.wrap(text, WIDTH, initial_indent="    ", subsequent_indent=" " * 8)
+    lines: list[str] = []
+    for note in notes[:most]:
+        begin = (note.begin + offset).strftime("%Y-%m-%d %H:%M")
+        state = note_state(note)
+        if state == "over" and note.end is not None:
+            state = f"to {note.end + offset:%Y-%m-%d %H:%M}"
+        text = f"{begin}  {note.subject}: {note.kind.value}: {note_words(note)}"
+        text += f" [{state}]" if state else ""
+        lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 6)
+    if most is not None and len(notes) > most:
+        lines.append(f"  and {len(notes) - most} more: rhovane notes")
     return lines
 
 
@@ -154,11 +137,22 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
         lines.append("Pairs with no correlation that night (no data is not no change):")
         lines += [f"  {p['pair']}: {p['reason']}" for p in status.silent_pairs]
     if status.silent_series:
-        lines.append("Series behind:")
+        lines.append(
+            f"Series without data (no data is not no change): {len(status.silent_series)} of {status.series_watched}"
+        )
         lines += [
             f"  {s['series']}: "
             + ("never seen" if s["last_reading"] is None else f"{s['hours_behind']} h behind")
             for s in status.silent_series
         ]
+    if status.not_judged:
+        lines.append("Pairs not judged that night (set aside, so silence says nothing):")
+        lines += [f"  {pair}: {reason}" for pair, reason in status.not_judged.items()]
+    if status.segments:
+        lines.append(
+            "Series with a new instrument or place (correlations across the border are not comparable):"
+        )
+        lines += [f"  {g['series']} from {g['first_day']}: {g['what']}" for g in status.segments]
+    lines.append(f"Data notes that last: {status.notes_open} (rhovane notes)")
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
-import dataclasses
 import datetime as dt
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from enum import StrEnum
 from typing import Any
+
+from rhovane.model.alert_sheet import AlertSheet, Hint
+from rhovane.model.estimates import CorrelationEstimate
+from rhovane.model.plain import fact_of, plain_of
 
 
 class AlertState(StrEnum):
@@ -60,50 +63,16 @@ class AlertEvent:
 
 
 @dataclass(frozen=True)
-class CorrelationEstimate:
-    """A rank correlation with what it rests on; NaN-free: None where it cannot be assessed, with reason."""
-
-    first_day: dt.date
-    last_day: dt.date
-    statistic: float | None
-    n_pairs: int
-    n_effective: float | None
-    low: float | None
-    high: float | None
-    reason: str | None = None
-
-    def as_json(self) -> dict[str, Any]:
-        """Plain values for the store and for ``--json``."""
-        return {
-            **dataclasses.asdict(self),
-            "first_day": self.first_day.isoformat(),
-            "last_day": self.last_day.isoformat(),
-        }
-
-    @classmethod
-    def from_json(cls, plain: Mapping[str, Any]) -> CorrelationEstimate:
-        """The estimate that :meth:`as_json` wrote."""
-        return cls(
-            **{
-                **plain,
-                "first_day": dt.date.fromisoformat(plain["first_day"]),
-                "last_day": dt.date.fromisoformat(plain["last_day"]),
-            }
-        )
-
-
-DATES = ("alarm_day", "onset_day", "night_as_of")
-
-
-@dataclass(frozen=True)
 class Alert:
     """A recorded change of a relationship, with its evidence; the facts of its raising never change.
 
     ``alarm_day`` is the day whose evidence crossed the threshold, ``onset_day`` the likeliest first day
-    of the change, ``night_as_of`` the night that raised it. ``pair_key`` is the pair whose evidence crossed,
+    of the change, ``night_as_of`` the night that raised it; ``onset_first`` to ``onset_last`` holds the onset with a
+    probability of 90 %. ``pair_key`` is the pair whose evidence crossed,
     ``members`` all pairs concerned, ``suspect`` what is likeliest to have changed. ``before`` and ``after`` are rank correlations
     of the readings on either side of the onset. ``evidence`` and ``threshold`` are the chart's value and
-    limit on the alarm day.
+    limit on the alarm day. ``lag_steps`` says by how many steps the suspect seems late (negative: early).
+    ``sheet`` holds the companion facts; None for alerts of a program that had none.
     """
 
     id: int
@@ -123,29 +92,19 @@ class Alert:
     after: CorrelationEstimate
     members: tuple[str, ...] = ()
     suspect: str = ""
-    hints: tuple[str, ...] = ()
+    hints: tuple[Hint, ...] = ()
+    onset_first: dt.date | None = None
+    onset_last: dt.date | None = None
+    lag_steps: int = 0
+    sheet: AlertSheet | None = None
 
     def as_json(self) -> dict[str, Any]:
         """Plain values for the store and for ``--json``."""
-        return {
-            **dataclasses.asdict(self),
-            **{name: getattr(self, name).isoformat() for name in DATES},
-            "before": self.before.as_json(),
-            "after": self.after.as_json(),
-            "members": list(self.members),
-            "hints": list(self.hints),
-        }
+        plain: dict[str, Any] = plain_of(self)
+        return plain
 
     @classmethod
     def from_json(cls, plain: Mapping[str, Any]) -> Alert:
-        """The alert that :meth:`as_json` wrote."""
-        return cls(
-            **{
-                **plain,
-                **{name: dt.date.fromisoformat(plain[name]) for name in DATES},
-                "before": CorrelationEstimate.from_json(plain["before"]),
-                "after": CorrelationEstimate.from_json(plain["after"]),
-                "members": tuple(plain["members"]),
-                "hints": tuple(plain["hints"]),
-            }
-        )
+        """The alert that :meth:`as_json` wrote; hints of earlier programs were sentences."""
+        hints = [{"text": hint} if isinstance(hint, str) else hint for hint in plain["hints"]]
+        return fact_of(cls, {**plain, "hints": hints})

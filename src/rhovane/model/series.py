@@ -2,10 +2,19 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from dataclasses import dataclass
 from typing import Literal
 
 SeriesKind = Literal["linear", "circular", "accumulated"]
+
+
+@dataclass(frozen=True)
+class Segment:
+    """From ``first_day`` on (standard time) a series was measured with something else, or somewhere else."""
+
+    first_day: dt.date
+    what: str
 
 
 @dataclass(frozen=True)
@@ -14,6 +23,7 @@ class Series:
 
     ``key`` is ``STATION.quantity``; ``step_minutes`` is the regular interval; values of a ``circular``
     series (wind direction) are never ranked; an ``accumulated`` series (rain) holds sums over the step.
+    ``segments`` are its changes of instrument and place, in order of day.
     """
 
     key: str
@@ -21,6 +31,7 @@ class Series:
     kind: SeriesKind = "linear"
     step_minutes: int = 60
     label: str = ""
+    segments: tuple[Segment, ...] = ()
 
     @property
     def station(self) -> str:

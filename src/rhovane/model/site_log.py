@@ -1,11 +1,20 @@
-"""The site log: what happened at a station, and when."""
+"""The site log: what happened at a station, when, and what becomes of the readings of that time."""
 
 from __future__ import annotations
 
 import datetime as dt
 from dataclasses import dataclass
+from enum import StrEnum
 
 WHOLE_NETWORK = "*"
+
+
+class ReadingsUse(StrEnum):
+    """What becomes of the readings of a time in the site log."""
+
+    AS_USUAL = "as usual"
+    NO_REFERENCE = "no reference"
+    NOT_USED = "not used"
 
 
 @dataclass(frozen=True)
@@ -19,6 +28,7 @@ class SiteLogEntry:
     start: dt.datetime
     end: dt.datetime | None
     what: str
+    readings: ReadingsUse = ReadingsUse.NO_REFERENCE
 
     def concerns(self, series_key: str) -> bool:
         """Whether the entry concerns a series."""

@@ -165,7 +165,9 @@ def ingest_now(
     RhovaneError
         A named file belongs to no source (by its pattern), or the named source is not known.
     """
-    store.ensure_series(settings.domain_series())
+    series = settings.domain_series()
+    store.ensure_series(series)
+    store.keep_segments(series, now=now)
     night = Night(settings, store, now.date(), now)
     if not files:
         read_feed(night)

@@ -15,6 +15,8 @@ from numpy.typing import NDArray
 from rhovane.model import IngestOutcome, Pair
 from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
 from rhovane.pipeline.memory import NightMemory
+from rhovane.pipeline.note_changes import KnownNotes
+from rhovane.pipeline.unused import Unused
 from rhovane.prepare import Days, Grid, days_of
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import HISTORY_DAYS
@@ -23,6 +25,7 @@ from rhovane.store import NightRecord, Store
 
 HOUR_S = 3600
 DAY = dt.timedelta(days=1)
+LATEST_STEP_DAYS = 40  # a step in level is noted, or dated anew, at most this many days after it
 
 
 @dataclass(frozen=True)
@@ -73,6 +76,10 @@ class Night:
     file by itself (a whole night does so at its end, where ``checkpoint_night`` says so).
     ``memory`` lets a night go on from the one before in the same process; the result is the same.
     ``arrived`` are the feed files to look at; None: whatever the feed folders hold. ``scored`` is the evidence that this night computed.
+    ``data_version``: use the readings as they were after this ingest; None: as they are. ``unused``: the readings
+    taken out of the statistics; None: those that calendar and site log take out now.
+    ``changed`` is the first new or revised hour of each series, ``notes_from`` the first day whose data notes are not up
+    to date, ``cuts`` where windows of a series are split (seconds since 1970), ``windows`` the correlations of this night.
     """
 
     settings: Settings
@@ -87,6 +94,8 @@ class Night:
     checkpoint_night: bool = True
     memory: NightMemory | None = None
     arrived: Sequence[Path] | None = None
+    data_version: int | None = None
+    unused: Unused | None = None
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
@@ -94,6 +103,11 @@ class Night:
     counts: dict[str, Any] = field(default_factory=dict)
     scored: dict[str, NDArray[np.generic]] = field(default_factory=dict)
     hourly: dict[tuple[str, bool], Future[SeriesScores]] = field(default_factory=dict)
+    changed: dict[str, dt.datetime] = field(default_factory=dict)
+    notes: KnownNotes | None = None
+    notes_from: dt.date | None = None
+    cuts: dict[str, list[int]] = field(default_factory=dict)
+    windows: list[dict[str, NDArray[Any]]] = field(default_factory=list)
     _grid: Grid | None = None
     _arrays: dict[str, PairArrays] = field(default_factory=dict)
 
@@ -103,23 +117,35 @@ class Night:
         return days_of(self.settings.network.standard_offset)
 
     def grid(self) -> Grid:
-        """Observations of all stale pairs, from the earliest reading that any of their results rests on.
+        """Observations from the earliest reading that any result or data note of this night rests on.
 
-        Loaded once a night, for windows and evidence alike.
+        Loaded once a night, for notes, windows and evidence alike.
         """
         if self._grid is None:
             settings = self.settings
             stale = [w for w in self.watched if w.stale_from is not None]
             lags = [abs(lag) for w in self.watched for lag in settings.lags_of(w.recipe)]
-            window_days = (settings.correlation.window_hours + max(lags)) // 24 + 1
-            stale_from = min(w.stale_from for w in stale if w.stale_from)
-            windows_from = min((w.windows_from for w in self.watched if w.windows_from), default=stale_from)
-            first = min(stale_from - HISTORY_DAYS * DAY, windows_from - window_days * DAY)
+            window_days = (settings.correlation.window_hours + max(lags, default=0)) // 24 + 1
+            windows_from = [w.windows_from for w in self.watched if w.windows_from]
+            fresh = [w.stale_from for w in stale if w.stale_from]
+            stale_from = min([*fresh, self.notes_from] if self.notes_from else (fresh or windows_from))
+            reach = max(HISTORY_DAYS, window_days + LATEST_STEP_DAYS)
+            first = min(stale_from - reach * DAY, min(windows_from, default=stale_from) - window_days * DAY)
             if self.memory is not None:
                 self._grid = self.memory.grid(settings, self.store, first, self.as_of, stale_from)
             else:
-                keys = {k for w in stale for k in settings.series_of(w.recipe)}
-                self._grid = load_grid(settings, self.store, keys, first, self.as_of)
+                noted = [s.key for s in settings.series] if self.notes_from else []
+                used = [w for w in self.watched if w.stale_from or w.windows_from]
+                keys = {k for w in used for k in settings.series_of(w.recipe)}.union(noted)
+                self._grid = load_grid(
+                    settings,
+                    self.store,
+                    keys,
+                    first,
+                    self.as_of,
+                    max_ingest_id=self.data_version,
+                    unused=self.unused,
+                )
         return self._grid
 
     def arrays(self, watched: WatchedPair) -> PairArrays:

@@ -75,6 +75,14 @@ def _hourly_scores(values: NDArray[np.float64], days: range, known: SeriesScores
 
 def judge_days(night: Night) -> str:
     """Daily scores of every stale pair and day; written as evidence."""
+    summary = score_days(night)
+    if night.scored:
+        night.store.write_evidence(night.id, night.scored)
+    return summary
+
+
+def score_days(night: Night) -> str:
+    """Daily scores of every stale pair and day, kept in ``night.scored``."""
     stale = [w for w in night.watched if w.stale_from is not None]
     if not stale:
         return "nothing to judge"
@@ -101,7 +109,6 @@ def judge_days(night: Night) -> str:
             columns.setdefault(name, []).append(values)
     if n_days:
         night.scored = {name: np.concatenate(parts) for name, parts in columns.items()}
-        night.store.write_evidence(night.id, night.scored)
     return f"{n_days} days of {len(stale)} pairs, {n_days - n_scored} without enough joint hours"
 
 

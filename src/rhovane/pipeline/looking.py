@@ -12,9 +12,10 @@ from rhovane.model import CorrelationEstimate, NotFound
 from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
 from rhovane.pipeline.context import Night, WatchedPair
 from rhovane.pipeline.memory import Columns
-from rhovane.pipeline.raising import all_evidence, daily_scores, replay
+from rhovane.pipeline.raising import EPOCH, all_evidence, daily_scores, replay
+from rhovane.pipeline.set_aside import Known, what_is_known
 from rhovane.prepare import days_of
-from rhovane.review import AlertEntry, WindowTrack, alert_entries, window_track
+from rhovane.review import AlertEntry, WindowTrack, alert_entries, nearby_entries, provenance_of, window_track
 from rhovane.review.sheets import (
     AlertSheetView,
     EvidenceTrack,
@@ -26,7 +27,7 @@ from rhovane.review.sheets import (
 )
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.watch import DayState, Watch
-from rhovane.store import Store, StoredSiteLogEntry
+from rhovane.store import Store
 
 DAY = dt.timedelta(days=1)
 SHOWN_BEFORE_DAYS = 90  # days before the onset on an alert's charts: the length of the default reference
@@ -34,9 +35,6 @@ SHOWN_AFTER_DAYS = 60  # days after the alarm, or after the end of the change
 RAW_BEFORE_DAYS, RAW_AFTER_DAYS = 14, 14  # days of readings around the onset
 REFERENCE_SHARE = (0.05, 0.95)  # quantiles of the windows before the onset that make the reference band
 NEIGHBOURS_SHOWN = 24
-LOG_DAYS = (
-    14  # days around the onset for site log and calendar: an onset is rarely known better than to a week
-)
 
 
 @dataclass(frozen=True)
@@ -79,6 +77,7 @@ class StoredEvidence:
     as_of: dt.date
     watched: tuple[WatchedPair, ...]
     columns: Columns
+    known: Known
 
     @property
     def size(self) -> int:
@@ -92,7 +91,7 @@ class StoredEvidence:
         if first_day is None:
             return None
         keys = tuple(w.pair.key for w in self.watched)
-        return WatchTracks(self.night_id, keys, first_day, replay(settings, self.watched, scores))
+        return WatchTracks(self.night_id, keys, first_day, replay(settings, self.watched, scores, self.known))
 
 
 def stored_evidence(settings: Settings, store: Store, now: dt.datetime) -> StoredEvidence | None:
@@ -102,7 +101,11 @@ def stored_evidence(settings: Settings, store: Store, now: dt.datetime) -> Store
         return None
     night = Night(settings, store, last.as_of, now, id=last.night_id)
     watched = tuple(WatchedPair(recipe, pair) for recipe, pair in settings.pairs)
-    return StoredEvidence(last.night_id, last.as_of, watched, all_evidence(night, watched))
+    columns = all_evidence(night, watched)
+    days = columns["day"]
+    first_day = EPOCH + (int(days.min()) if len(days) else 0) * DAY
+    known = what_is_known(night, watched, first_day)
+    return StoredEvidence(last.night_id, last.as_of, watched, columns, known)
 
 
 def alert_sheet(
@@ -122,7 +125,9 @@ def alert_sheet(
     night = store.night(alert.night_id)
     recipe = next((p for p in settings.pair if p.key == alert.pair_key), None)
     if recipe is None or last is None:
-        return AlertSheetView(entry, None, None, None, None, (), (), (), night)
+        return AlertSheetView(
+            entry, None, None, None, None, (), nearby_entries(settings, store, alert), night
+        )
     newest = last.as_of if until is None else min(until, last.as_of)
     first, end = _shown(entry, newest)
     windows = window_track(settings, store, recipe.key, alert.onset_day - 2 * SHOWN_BEFORE_DAYS * DAY, end)
@@ -148,9 +153,9 @@ def alert_sheet(
         ),
         readings,
         _neighbours(settings, store, entry, newest),
-        _near_in_log(settings, store, entry),
-        tuple(sorted(d for d in settings.calendar.dates if abs(d - alert.onset_day) <= LOG_DAYS * DAY)),
+        nearby_entries(settings, store, alert),
         night,
+        provenance_of(settings, store, alert),
     )
 
 
@@ -272,20 +277,3 @@ def _apart(
     if before is None or after is None or not np.isfinite([*before, *after]).all():
         return None
     return before[2] < after[1] or after[2] < before[1]
-
-
-def _near_in_log(settings: Settings, store: Store, entry: AlertEntry) -> tuple[StoredSiteLogEntry, ...]:
-    """Entries of the site log that touch the days around the onset and concern a series of the alert."""
-    alert = entry.alert
-    wanted = {alert.pair_key, *alert.members}
-    keys = {key for p in settings.pair if p.key in wanted for key in settings.series_of(p)}
-    days = days_of(settings.network.standard_offset)
-    begin = days.moment(days.start_of(alert.onset_day - LOG_DAYS * DAY))
-    end = days.moment(days.end_of(alert.onset_day + LOG_DAYS * DAY))
-    return tuple(
-        stored
-        for stored in store.site_log()
-        if stored.entry.start < end
-        and (stored.entry.end is None or stored.entry.end > begin)
-        and any(stored.entry.concerns(key) for key in keys)
-    )

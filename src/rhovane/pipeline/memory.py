@@ -14,6 +14,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.pipeline.arrays import load_grid
+from rhovane.pipeline.note_changes import KnownNotes
+from rhovane.pipeline.step_memory import StepMemory
 from rhovane.prepare import Grid, days_of
 from rhovane.settings import Settings
 from rhovane.stats.hourly_scores import SCORED_BEFORE_DAYS, SeriesScores
@@ -29,9 +31,11 @@ SeriesUse = tuple[str, bool]  # key, and whether for pairs with controls
 
 @dataclass
 class NightMemory:
-    """Grid and evidence as the night before left them, and the states of the watch."""
+    """Grid, evidence and data notes as the night before left them, and the states of the watch."""
 
     watch: WatchMemory = field(default_factory=WatchMemory)
+    notes: KnownNotes | None = None
+    steps: StepMemory | None = None
     _grid: Grid | None = None
     _evidence: Columns | None = None
     _recipes: tuple[str, ...] = ()
@@ -82,7 +86,7 @@ class NightMemory:
     def forget(self) -> None:
         """Remember nothing: what a failed night computed was not kept by the store."""
         self.watch = WatchMemory()
-        self._grid = self._evidence = self._findings = None
+        self._grid = self._evidence = self._findings = self.notes = self.steps = None
         self._recipes = ()
         self._scores = {}
 

@@ -20,7 +20,9 @@ from rhovane.pipeline.context import Night, StepOutcome, Trouble
 from rhovane.pipeline.evidence import begin_hourly_scores, judge_days
 from rhovane.pipeline.ingesting import read_feed
 from rhovane.pipeline.memory import NightMemory
+from rhovane.pipeline.noting import note_data, note_pairs
 from rhovane.pipeline.raising import raise_alerts
+from rhovane.pipeline.site_log import take_over_site_log
 from rhovane.pipeline.stale import find_stale
 from rhovane.pipeline.windows import compute_windows
 from rhovane.settings import Settings
@@ -32,9 +34,12 @@ OWN_TRANSACTION = ("ingest",)  # commits by itself; all later steps share one tr
 
 STEPS: tuple[Step, ...] = (
     ("ingest", read_feed),
+    ("site log", take_over_site_log),
     ("stale", find_stale),
+    ("data notes", note_data),
     ("hourly scores", begin_hourly_scores),
     ("windows", compute_windows),
+    ("pair notes", note_pairs),
     ("evidence", judge_days),
     ("alerts", raise_alerts),
 )
@@ -104,7 +109,9 @@ def run_night(
         ``outcome`` is "complete"; "incomplete" when parts failed (they are listed and tried again by the
         next night); or "failed" when a step as a whole did (nothing it would have computed is kept).
     """
-    store.ensure_series(settings.domain_series())
+    series = settings.domain_series()
+    store.ensure_series(series)
+    store.keep_segments(series, now=now)
     night = Night(
         settings,
         store,
@@ -118,6 +125,7 @@ def run_night(
         memory=memory,
         arrived=arrived,
     )
+    store.keep_settings(settings.settings_hash, settings.text)
     night.id = store.begin_night(
         kind=kind,
         as_of=as_of,

@@ -4,24 +4,23 @@ from __future__ import annotations
 
 import dataclasses
 import datetime as dt
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from rhovane import stats
 from rhovane.alerts import Found, hints_for, reconcile
-from rhovane.model import Alert, AlertEvent, CorrelationEstimate, EventKind
-from rhovane.pipeline.arrays import PairArrays, load_grid, pair_arrays
+from rhovane.model import Alert, AlertEvent, EventKind
 from rhovane.pipeline.context import Night, WatchedPair
 from rhovane.pipeline.memory import Columns
+from rhovane.pipeline.set_aside import Known, what_is_known
+from rhovane.pipeline.sheet import Comparison, compare, witnesses_of
 from rhovane.review import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.settings import PairSettings, Settings
 from rhovane.stats.daily_scores import DailyScores
 from rhovane.stats.watch import Incident, Watch, WatchMemory, watch
-from rhovane.store import LATER_COLUMNS, Store
+from rhovane.store import LATER_COLUMNS
 
 STEP = "alerts"
 DAY = dt.timedelta(days=1)
@@ -29,7 +28,9 @@ EPOCH = dt.date(1970, 1, 1)
 SCORES = ("innovation", "innovation_hours", "shape", "shape_hours", "course", "course_hours")
 DAYS_APART = 1_000_000  # more days than any evidence spans; keeps the pairs apart in one number
 PROGRAM = "rhovane"
-FEWEST_PAIRS = 8  # hours; fewest pairs for the correlation after an onset that is only days old
+LONGEST_WITNESS_DAYS = (
+    42  # days from the onset over which other pairs are asked; as far back as onsets are sought
+)
 
 
 def raise_alerts(night: Night) -> str:
@@ -41,11 +42,16 @@ def raise_alerts(night: Night) -> str:
     first_day, scores = daily_scores(judged, all_evidence(night, judged), night.as_of)
     if first_day is None:
         return "no evidence yet"
-    seen = replay(night.settings, judged, scores, None if night.memory is None else night.memory.watch)
-    found = [_found(i, judged, first_day) for i in seen.incidents]
+    known = what_is_known(night, judged, first_day)
+    seen = replay(night.settings, judged, scores, known, None if night.memory is None else night.memory.watch)
+    aside = known.not_judged((night.as_of - first_day).days)
+    night.counts["not judged"] = {judged[i].pair.key: reason for i, reason in sorted(aside.items())}
+    silent = f"; {len(aside)} pairs not judged" if aside else ""
+    replayed = Replayed(judged, first_day, seen)
+    found = replayed.found()
     recipes = {w.pair.key: w.pair.recipe_hash for w in judged}
     if night.memory is not None and night.memory.same_findings((found, recipes)):
-        return "0 new, 0 changes of earlier ones"
+        return f"0 new, 0 changes of earlier ones{silent}"
     alerts, events = logged_alerts(night.store), logged_events(night.store)
     change = reconcile(
         found,
@@ -56,8 +62,7 @@ def raise_alerts(night: Night) -> str:
         judged=recipes,
     )
     next_id = max((a.id for a in alerts), default=0) + 1
-    recipe_of = {w.pair.key: w.recipe for w in judged}
-    new = [_alert(night, next_id + i, f, recipe_of[f.pair_key]) for i, f in enumerate(change.new)]
+    new = [alert_of(night, next_id + i, f, replayed) for i, f in enumerate(change.new)]
     if new:
         log_alerts(night.store, new)
     raised = [AlertEvent(a.id, EventKind.RAISED, night.now, PROGRAM, _headline(a)) for a in new]
@@ -65,7 +70,7 @@ def raise_alerts(night: Night) -> str:
     if raised or change.events or ended:
         log_events(night.store, [*raised, *change.events, *ended])
     night.counts["alerts new"] = len(new)
-    return f"{len(new)} new, {len(change.events) + len(ended)} changes of earlier ones"
+    return f"{len(new)} new, {len(change.events) + len(ended)} changes of earlier ones{silent}"
 
 
 def all_evidence(night: Night, watched: Sequence[WatchedPair]) -> Columns:
@@ -79,9 +84,9 @@ def all_evidence(night: Night, watched: Sequence[WatchedPair]) -> Columns:
     known = None if night.memory is None else night.memory.evidence(recipes)
     if known is None:
         found = night.store.read_evidence(pair_keys=list(place), recipe_hashes=recipes, end=night.as_of + DAY)
-        known = _numbered(found, place)
+        known = numbered(found, place)
     elif night.scored:
-        fresh = _numbered(night.scored, place)
+        fresh = numbered(night.scored, place)
         keep = ~np.isin(_row_numbers(known), _row_numbers(fresh))
         known = {name: np.concatenate((known[name][keep], fresh[name])) for name in known}
     if night.memory is not None:
@@ -89,7 +94,8 @@ def all_evidence(night: Night, watched: Sequence[WatchedPair]) -> Columns:
     return known
 
 
-def _numbered(columns: Columns, place: dict[str, int]) -> Columns:
+def numbered(columns: Columns, place: dict[str, int]) -> Columns:
+    """Evidence as columns of numbers: the place of its pair, the day since 1970, the scores."""
     return {
         "pair": np.array([place[key] for key in columns["pair_key"]], dtype=np.int64),
         "day": columns["day"].astype("datetime64[D]").astype(np.int64),
@@ -130,9 +136,10 @@ def replay(
     settings: Settings,
     watched: Sequence[WatchedPair],
     scores: Sequence[DailyScores],
+    known: Known,
     memory: WatchMemory | None = None,
 ) -> Watch:
-    """The change watch over the daily scores of all pairs, with the network's settings."""
+    """The change watch over the daily scores of all pairs, with the network's settings and what people know."""
     limits = settings.alerts
     return watch(
         scores,
@@ -143,6 +150,8 @@ def replay(
         baseline_days=limits.baseline_days,
         guard_days=limits.guard_days,
         rebaseline_days=limits.rebaseline_days,
+        set_aside=known.set_aside,
+        new_baselines=known.new_baselines,
         memory=memory,
     )
 
@@ -170,12 +179,68 @@ def _found(incident: Incident, watched: Sequence[WatchedPair], first_day: dt.dat
         suspect,
         incident.evidence,
         incident.threshold,
+        (first_day + incident.onset_range[0] * DAY, first_day + incident.onset_range[1] * DAY),
+        incident.lag_steps,
     )
 
 
-def _alert(night: Night, alert_id: int, found: Found, recipe: PairSettings) -> Alert:
-    before, after = before_and_after(night.settings, night.store, recipe, found.onset_day, night.as_of)
-    return Alert(
+@dataclass(frozen=True)
+class Replayed:
+    """The watch over the evidence of some pairs; row 0 of its arrays is ``first_day``."""
+
+    watched: Sequence[WatchedPair]
+    first_day: dt.date
+    seen: Watch
+
+    def found(self) -> list[Found]:
+        """The episodes, in order of their alarm day."""
+        return [_found(i, self.watched, self.first_day) for i in self.seen.incidents]
+
+    def recipe(self, pair_key: str) -> PairSettings:
+        """The recipe of one of the pairs."""
+        return next(w.recipe for w in self.watched if w.pair.key == pair_key)
+
+
+def sheet_of(
+    night: Night,
+    replayed: Replayed,
+    pair_key: str,
+    onset: dt.date,
+    *,
+    members: Sequence[str],
+    suspect: str,
+) -> Comparison:
+    """The pair before and after the onset as this night sees it, and what the other pairs did since."""
+    first = (onset - replayed.first_day).days
+    newest = (night.as_of - replayed.first_day).days
+    last = min(newest, first + LONGEST_WITNESS_DAYS - 1)
+    witnesses = witnesses_of(
+        replayed.watched, replayed.seen, members=members, suspect=suspect, onset=first, last=last
+    )
+    return compare(
+        night.settings,
+        night.store,
+        replayed.recipe(pair_key),
+        onset,
+        as_of=night.as_of,
+        data_version=data_version_of(night),
+        unused=night.unused,
+        witnesses=witnesses,
+    )
+
+
+def data_version_of(night: Night) -> int:
+    """The last ingest whose readings a night rests on."""
+    return night.store.last_ingest_id() if night.data_version is None else night.data_version
+
+
+def alert_of(night: Night, alert_id: int, found: Found, replayed: Replayed) -> Alert:
+    """The alert that a night raises for an episode, with its sheet."""
+    told = sheet_of(
+        night, replayed, found.pair_key, found.onset_day, members=found.members, suspect=found.suspect
+    )
+    first, last = found.onset_range or (None, None)
+    bare = Alert(
         id=alert_id,
         pair_key=found.pair_key,
         recipe_hash=found.recipe_hash,
@@ -185,15 +250,21 @@ def _alert(night: Night, alert_id: int, found: Found, recipe: PairSettings) -> A
         onset_day=found.onset_day,
         night_as_of=night.as_of,
         night_id=night.id,
-        data_version=night.store.last_ingest_id(),
+        data_version=told.sheet.data_version,
         settings_hash=night.settings.settings_hash,
         evidence=found.evidence,
         threshold=found.threshold,
-        before=before,
-        after=after,
+        before=told.before,
+        after=told.after,
         members=found.members,
         suspect=found.suspect,
-        hints=hints_for(recipe.first, recipe.second, found.direction, suspect=found.suspect, kind=found.kind),
+        onset_first=first,
+        onset_last=last,
+        lag_steps=found.lag_steps,
+        sheet=told.sheet,
+    )
+    return dataclasses.replace(
+        bare, hints=hints_for(bare, sector=replayed.recipe(found.pair_key).sector is not None)
     )
 
 
@@ -220,60 +291,3 @@ def _endings(new: Sequence[Alert], found: Sequence[Found], night: Night) -> list
         for alert, episode in zip(new, found, strict=True)
         if episode.ending is not None
     ]
-
-
-def before_and_after(
-    settings: Settings, store: Store, recipe: PairSettings, onset: dt.date, as_of: dt.date
-) -> tuple[CorrelationEstimate, CorrelationEstimate]:
-    """Rank correlations of the readings in the window before the onset, and from the onset to ``as_of``.
-
-    The later stretch is at most a window long.
-    """
-    span = settings.correlation.window_hours // 24
-    first, last = onset - span * DAY, min(as_of, onset + (span - 1) * DAY)
-    grid = load_grid(settings, store, settings.series_of(recipe), first, last)
-    arrays = pair_arrays(settings, recipe, grid)
-    cut = 24 * span
-    method = settings.correlation.statistic
-    return (
-        _estimate(arrays, slice(0, cut), first, onset - DAY, method),
-        _estimate(arrays, slice(cut, None), onset, last, method),
-    )
-
-
-@dataclass(frozen=True)
-class _Estimate:
-    """Lag 0 of a scan."""
-
-    statistic: float
-    n_pairs: int
-    n_effective: float
-    low: float
-    high: float
-    reason: str | None
-
-
-def _estimate(
-    arrays: PairArrays, rows: slice, first: dt.date, last: dt.date, method: str
-) -> CorrelationEstimate:
-    x, y = arrays.x[rows], arrays.y[rows]
-    if arrays.controls is not None:
-        controls = arrays.controls[rows]
-        scan = stats.partial_window(x, y, controls, window=len(x), min_pairs=FEWEST_PAIRS)
-        found = _Estimate(*(getattr(scan, f.name)[0] for f in dataclasses.fields(_Estimate)))
-    else:
-        found = stats.rank_correlation_test(x, y, method=method)
-
-    def known(value: float) -> float | None:
-        return None if math.isnan(value) else float(value)
-
-    return CorrelationEstimate(
-        first,
-        last,
-        known(found.statistic),
-        int(found.n_pairs),
-        known(found.n_effective),
-        known(found.low),
-        known(found.high),
-        found.reason,
-    )

@@ -1,8 +1,8 @@
 """Step "stale": which pairs have results that are not up to date, and since which day.
 
-A pair is stale from the first hour of any of its series that is new or revised since the last finished
-night; from the day after that night; from the day it was left at when it failed then; and from its first
-reading where its recipe has changed since.
+A pair is stale from the first hour of any of its series that is new, revised, or taken out of the
+statistics (or back in) since the last finished night; from the day after that night; from the day it was
+left at when it failed then; and from its first reading where its recipe has changed since.
 """
 
 from __future__ import annotations
@@ -10,6 +10,7 @@ from __future__ import annotations
 import datetime as dt
 
 from rhovane.pipeline.context import Night, WatchedPair
+from rhovane.pipeline.unused import first_differences, unused_now, unused_then
 from rhovane.prepare import Days
 
 DAY = dt.timedelta(days=1)
@@ -23,10 +24,16 @@ def find_stale(night: Night) -> str:
     left = {} if last is None else dict(last.counts.get("left", {}))
     windows_left = {} if last is None else dict(last.counts.get("windows left", {}))
     changed = store.changed_since(0 if last is None else last.data_version)
+    night.changed = changed
     known = {} if last is None else last.counts.get("first_hours", {})
     first_hours = {k: dt.datetime.fromisoformat(v) for k, v in known.items()}
     for key, moment in changed.items():
         first_hours[key] = min(moment, first_hours.get(key, moment))
+    unused = unused_now(settings, store)
+    then = unused_then({} if last is None else last.counts, store)
+    end = days.end_of(night.as_of)
+    for key, moment in first_differences(unused, then, first_hours, end, settings.network.civil_zone).items():
+        changed[key] = min(moment, changed.get(key, moment))
     night.watched = []
     for recipe, pair in settings.pairs:
         keys = settings.series_of(recipe)
@@ -55,6 +62,7 @@ def find_stale(night: Night) -> str:
         )
     stale = [w for w in night.watched if w.stale_from is not None]
     night.counts["first_hours"] = {k: v.isoformat() for k, v in sorted(first_hours.items())}
+    night.counts["not used"] = unused.as_counts()
     night.counts["recipes"] = {w.pair.key: w.pair.recipe_hash for w in night.watched}
     oldest = min((w.stale_from for w in stale if w.stale_from), default=None)
     return f"{len(stale)} of {len(night.watched)} pairs" + (f", from {oldest}" if oldest else "")

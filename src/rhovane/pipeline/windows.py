@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from typing import Any
 
 import numpy as np
@@ -9,12 +10,14 @@ from numpy.typing import NDArray
 
 from rhovane.pipeline.arrays import PairArrays
 from rhovane.pipeline.context import HOUR_S, Night, WatchedPair
+from rhovane.pipeline.noting import split_in
 from rhovane.prepare import Grid
 from rhovane.settings import CorrelationSettings
 from rhovane.stats.pair_windows import WindowTable, window_table
 from rhovane.stats.partial import partial_window
 
 STEP = "windows"
+ROWS_AT_ONCE = 100_000  # correlations that are written together: some 50 MB on their way to the store
 FEWEST_PAIRS = 24  # hours; below one day's worth a window of a masked pair is not computed
 
 
@@ -25,16 +28,35 @@ def compute_windows(night: Night) -> str:
         return "nothing to compute"
     grid = night.grid()
     parts: list[dict[str, NDArray[Any]]] = []
+    n_pairs = n_correlations = waiting = 0
     for watched in stale:
         try:
             parts.append(pair_windows(night, watched, grid))
         except ValueError as error:
             night.pair_failed(STEP, watched, str(error))
-    if not parts:
-        return f"0 correlations in {len(stale)} pairs"
-    columns = {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
-    night.store.write_windows(night.id, columns)
-    return f"{len(columns['lag'])} correlations in {len(parts)} pairs"
+            continue
+        n_pairs += 1
+        night.windows.append(_at_lag_0(parts[-1]))
+        waiting += len(parts[-1]["lag"])
+        n_correlations += len(parts[-1]["lag"])
+        if waiting >= ROWS_AT_ONCE:
+            _write(night, parts)
+            parts, waiting = [], 0
+    if parts:
+        _write(night, parts)
+    return f"{n_correlations} correlations in {n_pairs} pairs"
+
+
+def _at_lag_0(columns: dict[str, NDArray[Any]]) -> dict[str, NDArray[Any]]:
+    """What the notes about pairs ask of a pair's correlations."""
+    rows = columns["lag"] == 0
+    return {name: columns[name][rows] for name in ("pair_key", "lag", "window_end", "statistic", "reason")}
+
+
+def _write(night: Night, parts: list[dict[str, NDArray[Any]]]) -> None:
+    night.store.write_windows(
+        night.id, {name: np.concatenate([part[name] for part in parts]) for name in parts[0]}
+    )
 
 
 def leave_windows(night: Night) -> str:
@@ -60,8 +82,14 @@ def pair_windows(night: Night, watched: WatchedPair, grid: Grid) -> dict[str, ND
     kept = kept_before[end + 1] - kept_before[np.maximum(end + 1 - window, 0)]
     min_pairs = np.clip(np.ceil(correlation.min_coverage * kept).astype(np.int64), FEWEST_PAIRS, window)
     lags = np.array(night.settings.lags_of(watched.recipe))
-    needed = slice(max(0, int(end[0]) + 1 - window - int(np.abs(lags).max())), int(end[-1]) + 1)
-    table = _table(arrays.rows(needed), window, end - needed.start, min_pairs, lags, correlation)
+    reach = window + int(np.abs(lags).max())
+    parts = []
+    for some, cuts in _split(night, watched, grid, end, reach):
+        needed = slice(max(0, int(end[some][0]) + 1 - reach), int(end[some][-1]) + 1)
+        side = after_cuts(arrays, watched, {key: grid.row_of(second) for key, second in cuts.items()})
+        part = _table(side.rows(needed), window, end[some] - needed.start, min_pairs[some], lags, correlation)
+        parts.append(_told_of_split(part, cuts, night))
+    table = _joined(parts)
     n_lags = len(lags)
     with np.errstate(invalid="ignore", divide="ignore"):
         coverage = np.where(kept[:, None] > 0, table.n_pairs / kept[:, None], 0.0)
@@ -74,6 +102,55 @@ def pair_windows(night: Night, watched: WatchedPair, grid: Grid) -> dict[str, ND
     }
     numbers = ("statistic", "n_pairs", "n_effective", "p_value", "low", "high")
     return columns | {name: getattr(table, name).ravel() for name in numbers}
+
+
+def _split(
+    night: Night, watched: WatchedPair, grid: Grid, end: NDArray[np.int64], reach: int
+) -> list[tuple[slice, dict[str, int]]]:
+    """The windows in stretches whose series are split at the same hours, with those hours by series."""
+    if not any(key in night.cuts for key in night.settings.series_of(watched.recipe)):
+        return [(slice(0, len(end)), {})]
+    found: list[tuple[slice, dict[str, int]]] = []
+    for i, row in enumerate(end.tolist()):
+        cuts = split_in(night, watched, grid.start + HOUR_S * row, reach)
+        if found and found[-1][1] == cuts:
+            found[-1] = (slice(found[-1][0].start, i + 1), cuts)
+        else:
+            found.append((slice(i, i + 1), cuts))
+    return found
+
+
+def after_cuts(arrays: PairArrays, watched: WatchedPair, cut_row: dict[str, int]) -> PairArrays:
+    """A pair without the observations of a series before its cut, which are in another unit or on another zero."""
+    if not cut_row:
+        return arrays
+
+    def later(values: NDArray[np.float64], key: str) -> NDArray[np.float64]:
+        return np.where(np.arange(len(values)) >= cut_row.get(key, 0), values, np.nan)
+
+    recipe, controls = watched.recipe, arrays.controls
+    if controls is not None:
+        columns = [later(controls[:, i], key) for i, key in enumerate(recipe.adjusted_for)]
+        controls = np.column_stack(columns)
+    return PairArrays(later(arrays.x, recipe.first), later(arrays.y, recipe.second), controls, arrays.mask)
+
+
+def _told_of_split(table: WindowTable, cuts: dict[str, int], night: Night) -> WindowTable:
+    """The table with the split named in the reason of every correlation that it left without enough pairs."""
+    if not cuts:
+        return table
+    days = ", ".join(f"{key} at {night.days.day_of(second)}" for key, second in sorted(cuts.items()))
+    reason = [[text and f"{text}; split: {days}" for text in row] for row in table.reason]
+    return dataclasses.replace(table, reason=reason)
+
+
+def _joined(parts: list[WindowTable]) -> WindowTable:
+    """The windows of several tables, one after the other."""
+    if len(parts) == 1:
+        return parts[0]
+    names = ("statistic", "n_pairs", "n_effective", "p_value", "low", "high", "end")
+    stacked = {name: np.concatenate([getattr(part, name) for part in parts]) for name in names}
+    return WindowTable(lags=parts[0].lags, reason=[row for part in parts for row in part.reason], **stacked)
 
 
 def _table(

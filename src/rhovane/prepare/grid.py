@@ -40,6 +40,12 @@ class Grid:
         """Observations of one series, shape (n_hours,)."""
         return self.values[:, self.keys.index(key)]
 
+    def of(self, keys: Sequence[str]) -> Grid:
+        """The same hours of some of the series."""
+        if tuple(keys) == self.keys:
+            return self
+        return Grid(self.start, tuple(keys), self.values[:, [self.keys.index(key) for key in keys]])
+
     def row_of(self, second: int) -> int:
         """Row of the hour that begins at a second since 1970 UTC (may lie outside the grid)."""
         return (second - self.start) // HOUR_S

@@ -21,7 +21,7 @@ from rhovane.report.figures import (
     scatter_figure,
 )
 from rhovane.report.small_pictures import change_bar, coverage_figure
-from rhovane.review import SeriesSheet
+from rhovane.review import SeriesSheet, note_state, note_words
 from rhovane.review.sheets import AlertSheetView, PairSheetView
 from rhovane.settings import Settings
 
@@ -68,6 +68,8 @@ def page_environment(
         "estimate": lambda one: words.estimate_words(one, words.statistic_name(settings)),
         "recipe_words": lambda recipe: words.recipe_words(settings, recipe),
         "apart": intervals_apart,
+        "note_words": note_words,
+        "note_state": note_state,
         "cautions": demo_cautions(settings) + CAUTIONS,
         "is_demo": is_demo(settings),
         "series_label": {s.key: s.label for s in settings.series},

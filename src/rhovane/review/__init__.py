@@ -5,15 +5,11 @@ from rhovane.review.exporting import export_table
 from rhovane.review.log import log_alerts, log_events, logged_alerts, logged_events
 from rhovane.review.log_counts import LogCounts, log_counts
 from rhovane.review.morning import Arrival, Morning, Silence, SuspectGroup, morning_of
-from rhovane.review.relations import (
-    PairNow,
-    SeriesSheet,
-    WindowTrack,
-    pairs_now,
-    series_sheet,
-    window_track,
-)
-from rhovane.review.site_log import add_site_log_entry
+from rhovane.review.nearby import Nearby, nearby_entries, site_log_json
+from rhovane.review.notes import all_notes, current_notes, note_state, note_words, notes_as_json
+from rhovane.review.provenance import Provenance, provenance_of
+from rhovane.review.relations import PairNow, SeriesSheet, WindowTrack, pairs_now, series_sheet, window_track
+from rhovane.review.site_log import add_site_log_entry, withdraw_site_log_entry
 from rhovane.review.status import Status, network_status
 
 __all__ = [
@@ -21,7 +17,9 @@ __all__ = [
     "Arrival",
     "LogCounts",
     "Morning",
+    "Nearby",
     "PairNow",
+    "Provenance",
     "SeriesSheet",
     "Silence",
     "Status",
@@ -30,6 +28,8 @@ __all__ = [
     "add_site_log_entry",
     "alert_entries",
     "alert_entry",
+    "all_notes",
+    "current_notes",
     "export_table",
     "log_alerts",
     "log_counts",
@@ -37,9 +37,16 @@ __all__ = [
     "logged_alerts",
     "logged_events",
     "morning_of",
+    "nearby_entries",
     "network_status",
+    "note_state",
+    "note_words",
+    "notes_as_json",
     "pairs_now",
+    "provenance_of",
     "record_decision",
     "series_sheet",
+    "site_log_json",
     "window_track",
+    "withdraw_site_log_entry",
 ]

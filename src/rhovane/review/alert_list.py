@@ -10,7 +10,7 @@ from typing import Any
 from rhovane.alerts import Standing, refusal, standing_of
 from rhovane.model import Alert, AlertEvent, AlertState, EventKind, NotFound, RhovaneError
 from rhovane.review.log import log_events, logged_alerts, logged_events
-from rhovane.store import Store
+from rhovane.store import NightRecord, Store
 
 
 @dataclass(frozen=True)
@@ -61,6 +61,17 @@ def alert_entries(store: Store, now: dt.datetime) -> list[AlertEntry]:
     return sorted(entries, key=lambda e: (e.alert.alarm_day, e.alert.id), reverse=True)
 
 
+def alert_entries_of(store: Store, night: NightRecord) -> list[AlertEntry]:
+    """The alerts as they stood when a night had finished: raised up to it, with the events up to then."""
+    end = night.finished or night.started
+    entries = []
+    for entry in alert_entries(store, end):
+        if entry.alert.night_id <= night.night_id:
+            events = tuple(e for e in entry.events if e.at <= end)
+            entries.append(AlertEntry(entry.alert, events, standing_of(events, end)))
+    return entries
+
+
 def alert_entry(store: Store, alert_id: int, now: dt.datetime) -> AlertEntry:
     """One alert.
 
@@ -89,6 +100,9 @@ def record_decision(
 ) -> AlertEntry:
     """Append what a person decided to the alert log, and return the alert as it stands then.
 
+    An outcome acts on the watch from the first day that no night has judged yet; that day is recorded with it
+    as ``acts_from``.
+
     Raises
     ------
     NotFound
@@ -97,8 +111,15 @@ def record_decision(
         The decision does not fit the alert's state; says why.
     """
     entry = alert_entry(store, alert_id, now)
-    event = AlertEvent(alert_id, kind, now, who, note, payload or {})
+    facts = dict(payload or {})
+    if kind is EventKind.OUTCOME:
+        acts_from = store.next_judged_day() or entry.alert.night_as_of + dt.timedelta(days=1)
+        facts["acts_from"] = acts_from.isoformat()
+    event = AlertEvent(alert_id, kind, now, who, note, facts)
     reason = refusal(event, entry.events, now)
+    until = facts.get("until") if kind is EventKind.OUTCOME else None
+    if reason is None and until and dt.date.fromisoformat(until) < entry.alert.onset_day:
+        reason = f"it began on {entry.alert.onset_day}, after {until}; name a later end"
     if reason is not None:
         raise RhovaneError(f"alert {alert_id}: {reason}. Nothing was written.")
     log_events(store, [event])

@@ -9,9 +9,10 @@ from dataclasses import dataclass
 from typing import Any
 
 from rhovane.alerts import standing_of
-from rhovane.model import AlertEvent, NotFound
+from rhovane.model import AlertEvent, DataNote, NotFound
 from rhovane.prepare import days_of
 from rhovane.review.alert_list import AlertEntry, alert_entries, counts_by_state
+from rhovane.review.notes import current_notes
 from rhovane.review.status import STALE_HOURS
 from rhovane.settings import Settings
 from rhovane.store import NightRecord, Store
@@ -63,7 +64,7 @@ class Morning:
     ``verdict`` is "complete", "incomplete", "failed", "interrupted" (it began and did not end), "missed" (the
     newest night is older than it should be) or "never"; ``missed`` counts the nights that are missing. ``raised``
     are the alerts of this night; ``open_groups`` all earlier ones that last or that nobody has reviewed;
-    ``held`` the pairs whose open change can hide a second one.
+    ``notes`` what is wrong with the data now (only of the newest night); ``held`` the pairs whose open change can hide a second one.
     """
 
     night: NightRecord | None
@@ -81,6 +82,7 @@ class Morning:
     ended: tuple[AlertEntry, ...]
     silent_pairs: tuple[Silence, ...]
     silent_series: tuple[Silence, ...]
+    notes: tuple[DataNote, ...]
     unreviewed: int
     by_state: dict[str, int]
 
@@ -160,6 +162,7 @@ def morning_of(
         ),
         silent_pairs=() if last is None else silent_pairs(settings, store, last.as_of),
         silent_series=silent_series(settings, store, reference),
+        notes=tuple(current_notes(settings, store)) if newest else (),
         unreviewed=sum(e.needs_review for e in entries),
         by_state=counts_by_state(entries),
     )

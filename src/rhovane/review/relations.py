@@ -14,6 +14,7 @@ from rhovane.prepare import days_of
 from rhovane.review.alert_list import AlertEntry
 from rhovane.settings import PairSettings, SeriesSettings, Settings
 from rhovane.store import Revision, Store
+from rhovane.store.segments import StoredSegment
 
 Floats = NDArray[np.float64]
 NO_READING = "no reading"
@@ -174,6 +175,7 @@ class SeriesSheet:
     revisions: tuple[Revision, ...]
     pairs: tuple[PairNow, ...]
     entries: tuple[AlertEntry, ...]
+    segments: tuple[StoredSegment, ...]
 
 
 def series_sheet(
@@ -202,6 +204,7 @@ def series_sheet(
         tuple(store.revisions_of(key)),
         tuple(now[p.key] for p in touching),
         tuple(e for e in entries if keys & {e.alert.pair_key, *e.alert.members}),
+        tuple(s for s in store.segments() if s.key == key),
     )
 
 

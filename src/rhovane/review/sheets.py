@@ -10,9 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.review.alert_list import AlertEntry
+from rhovane.review.nearby import Nearby
+from rhovane.review.provenance import Provenance
 from rhovane.review.relations import WindowTrack
 from rhovane.settings import PairSettings, SeriesSettings
-from rhovane.store import NightRecord, StoredSiteLogEntry
+from rhovane.store import NightRecord
 
 Floats = NDArray[np.float64]
 
@@ -93,10 +95,9 @@ class AlertSheetView:
     after: RankScatter | None
     readings: HourlyReadings | None
     neighbours: tuple[Neighbour, ...]
-    site_log: tuple[StoredSiteLogEntry, ...]
-    other_days: tuple[dt.date, ...]
+    nearby: Nearby
     night: NightRecord | None
-    provenance: Any = None
+    provenance: Provenance | None = None
 
 
 @dataclass(frozen=True)

@@ -1,56 +1,48 @@
-"""Entries of the site log that people write."""
+"""Entries of the site log that people write on the command line."""
 
 from __future__ import annotations
 
 import datetime as dt
 from collections.abc import Mapping
 
-from rhovane.model import RhovaneError, SiteLogEntry
-from rhovane.model.site_log import WHOLE_NETWORK
-from rhovane.settings import Settings
-from rhovane.store import Store
-
-MOMENTS = ("%Y-%m-%d %H:%M", "%Y-%m-%dT%H:%M", "%Y-%m-%d")
+from rhovane.model import RhovaneError
+from rhovane.settings import Settings, site_log_entry
+from rhovane.store import SITE_LOG_FILE, Store
 
 
 def add_site_log_entry(
     settings: Settings, store: Store, cells: Mapping[str, str], *, who: str, now: dt.datetime
 ) -> int:
-    """Record an entry given as its cells (subject, from, to, what; standard time), and return its number.
+    """Record an entry given as its cells (subject, from, to, what, readings), and return its number.
 
     Raises
     ------
     RhovaneError
         The cells hold mistakes; all of them are in the message.
     """
-    offset = settings.network.standard_offset
-    known = {s.key for s in settings.series} | {s.key.partition(".")[0] for s in settings.series}
-    subject, what = cells.get("subject", "").strip(), cells.get("what", "").strip()
-    start, end = _moment(cells.get("from", ""), offset), _moment(cells.get("to", ""), offset)
-    told = []
-    if subject != WHOLE_NETWORK and subject not in known:
-        told.append(f'  subject: {subject!r} is no series or station; "*" means the whole network')
-    if start is None:
-        told.append(f"  from: {cells.get('from', '')!r} is no time; write 2025-04-01 or 2025-04-01 14:00")
-    if cells.get("to", "").strip() and end is None:
-        told.append(f"  to: {cells['to']!r} is no time; write it as from, or leave it empty while it lasts")
-    if start is not None and end is not None and end <= start:
-        told.append("  to: is not after from")
-    if not what:
-        told.append("  what: say what happened")
-    if not who.strip():
-        told.append("  who: give your name")
-    if told or start is None:
+    entry, mistakes = site_log_entry(cells, settings.series_by_key(), settings.network.standard_offset)
+    if entry is None or not who.strip() or who == SITE_LOG_FILE:
+        told = [f"  {column}: {what}" for column, what in mistakes]
+        told += [] if who.strip() and who != SITE_LOG_FILE else ["  who: give your name"]
         raise RhovaneError("The entry has mistakes:\n" + "\n".join(told) + "\nNothing was written.")
-    (number,) = store.add_to_site_log([SiteLogEntry(subject, start, end, what)], who=who.strip(), now=now)
+    (number,) = store.add_to_site_log([entry], who=who, now=now, acts_from=store.next_judged_day())
     return number
 
 
-def _moment(text: str, offset: dt.timedelta) -> dt.datetime | None:
-    """A time of the network's standard clock as an aware moment; None when it is none."""
-    for pattern in MOMENTS:
-        try:
-            return dt.datetime.strptime(text.strip(), pattern).replace(tzinfo=dt.timezone(offset))
-        except ValueError:
-            continue
-    return None
+def withdraw_site_log_entry(store: Store, number: int, *, now: dt.datetime) -> None:
+    """Mark an entry that a person added as withdrawn.
+
+    Raises
+    ------
+    NotFound
+        There is no such entry.
+    RhovaneError
+        It is withdrawn already, or comes from the site log file.
+    """
+    for stored in store.site_log():
+        if stored.number == number and stored.stands and stored.who == SITE_LOG_FILE:
+            raise RhovaneError(
+                f"Entry {number} comes from the site log file; remove its line there, and the next night marks it "
+                "as withdrawn. Nothing was written."
+            )
+    store.withdraw_from_site_log(number, now=now, from_day=store.next_judged_day())

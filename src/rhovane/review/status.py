@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from rhovane.model import ExitCode
-from rhovane.prepare import days_of
+from rhovane.prepare import days_of, segment_start
 from rhovane.review.alert_list import alert_entries, counts_by_state
 from rhovane.settings import Settings
 from rhovane.store import Store
@@ -22,7 +22,9 @@ class Status:
 
     ``last_night`` is the newest entry of the night ledger, whatever its outcome ("interrupted": it began
     and did not end); ``nights_missed`` counts days since the newest night that finished, all of them when
-    none has.
+    none has. ``not_judged`` are the pairs that site log, calendar or an outcome kept from being judged in that
+    night, with the reason. ``segments`` names every series that changed instrument or place, with the segment the newest night
+    is in.
     """
 
     network: str
@@ -32,7 +34,11 @@ class Status:
     unreviewed: int
     silent_series: list[dict[str, Any]]
     silent_pairs: list[dict[str, Any]]
+    not_judged: dict[str, str]
+    series_watched: int
+    notes_open: int
     rejected_rows: int
+    segments: list[dict[str, Any]]
     exit_code: ExitCode
 
     def as_json(self) -> dict[str, Any]:
@@ -45,9 +51,26 @@ class Status:
             "unreviewed": self.unreviewed,
             "silent_series": self.silent_series,
             "silent_pairs": self.silent_pairs,
+            "not_judged": self.not_judged,
+            "series_watched": self.series_watched,
+            "notes_open": self.notes_open,
             "rejected_rows": self.rejected_rows,
+            "segments": self.segments,
             "exit_code": int(self.exit_code),
         }
+
+
+def segments_in_force(settings: Settings, day: dt.date) -> list[dict[str, Any]]:
+    """The segment that a day belongs to, of every series that has begun another than its first."""
+    found = []
+    for series in settings.domain_series():
+        start = segment_start(series, day)
+        found += [
+            {"series": series.key, "first_day": start.isoformat(), "what": one.what}
+            for one in series.segments
+            if start is not None and one.first_day == start
+        ]
+    return found
 
 
 def network_status(
@@ -103,13 +126,21 @@ def network_status(
             "as_of": newest.as_of.isoformat(),
             "outcome": "interrupted" if newest.outcome == "running" else newest.outcome,
             "steps": newest.steps,
-            "counts": {k: v for k, v in newest.counts.items() if k not in ("recipes", "left", "first_hours")},
+            "counts": {
+                k: v
+                for k, v in newest.counts.items()
+                if k not in ("recipes", "left", "first_hours", "not used", "notes")
+            },
         },
         missed,
         counts_by_state(entries),
         sum(e.needs_review for e in entries),
         silent_series,
         silent_pairs,
+        {} if last is None else dict(last.counts.get("not judged", {})),
+        len(settings.series),
+        sum(n.is_open for n in store.data_notes()),
         store.count_rejected(),
+        segments_in_force(settings, reference),
         code,
     )

@@ -1,6 +1,8 @@
 """Configuration: one TOML file → frozen, checked settings."""
 
-from rhovane.settings.load import load_settings, settings_from
+from rhovane.settings.calendar import CalendarEntry
+from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
+from rhovane.settings.load import load_settings, settings_from, settings_of_text
 from rhovane.settings.schema import (
     AlertSettings,
     CorrelationSettings,
@@ -9,18 +11,27 @@ from rhovane.settings.schema import (
     SeriesSettings,
     Settings,
     SourceSettings,
+    hash_of,
     parse_offset,
 )
+from rhovane.settings.site_log import load_site_log, site_log_entry
 
 __all__ = [
     "AlertSettings",
+    "CalendarEntry",
+    "CheckSettings",
     "CorrelationSettings",
+    "DataNoteSettings",
     "PairSettings",
     "SectorMask",
     "SeriesSettings",
     "Settings",
     "SourceSettings",
+    "hash_of",
     "load_settings",
+    "load_site_log",
     "parse_offset",
     "settings_from",
+    "settings_of_text",
+    "site_log_entry",
 ]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import tomllib
 from pathlib import Path
 from typing import Any
@@ -9,16 +10,17 @@ from typing import Any
 from pydantic import BaseModel, ValidationError
 
 from rhovane.model import SettingsError
+from rhovane.settings.calendar import CalendarEntry, load_calendar
 from rhovane.settings.schema import Settings, describe
 
 
 def load_settings(path: Path) -> Settings:
-    """Read the settings file.
+    """Read the settings file and the calendar it names.
 
     Raises
     ------
     SettingsError
-        The file is missing, is not TOML, or holds mistakes; the message lists all of them.
+        A file is missing, is not TOML, or holds mistakes; the message lists all of them.
     """
     try:
         with path.open("rb") as stream:
@@ -33,11 +35,15 @@ def load_settings(path: Path) -> Settings:
         raise SettingsError(
             f"{path}: not valid TOML: {error}. Nothing was run. Edit the file and retry."
         ) from error
-    return settings_from(raw, path)
+    settings = settings_from(raw, path)
+    if settings.calendar.file:
+        place = path.parent / settings.calendar.file
+        settings = settings.with_calendar(load_calendar(place, settings.series_by_key()))
+    return settings
 
 
 def settings_from(raw: dict[str, Any], path: Path) -> Settings:
-    """Settings from a parsed TOML table; ``path`` is where it came from."""
+    """Settings from a parsed TOML table, without calendar entries; ``path`` is where it came from."""
     if "origin" in raw:
         raise _refusal(path, [("origin", "not a setting")])
     try:
@@ -48,6 +54,12 @@ def settings_from(raw: dict[str, Any], path: Path) -> Settings:
     if found:
         raise _refusal(path, found)
     return settings
+
+
+def settings_of_text(text: str, path: Path) -> Settings:
+    """Settings and calendar from the text that ``Settings.text`` made of them."""
+    raw, calendar = json.loads(text)
+    return settings_from(raw, path).with_calendar([CalendarEntry.model_validate(entry) for entry in calendar])
 
 
 def _refusal(path: Path, mistakes: list[tuple[str, str]]) -> SettingsError:

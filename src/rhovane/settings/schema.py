@@ -4,24 +4,23 @@ from __future__ import annotations
 
 import datetime as dt
 import hashlib
+import itertools
 import json
 import re
+from collections.abc import Sequence
 from functools import cached_property
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self
 
-from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+from pydantic import Field, PrivateAttr, field_validator, model_validator
 
-from rhovane.model import Flag, Pair, Series, Stage
+from rhovane.model import Flag, Pair, Segment, Series, Stage
+from rhovane.settings.calendar import CalendarEntry
+from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
+from rhovane.settings.section import Section
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
-
-
-class Section(BaseModel):
-    """A frozen part of the settings; an unknown key is a mistake, never ignored."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, str_strip_whitespace=False)
 
 
 class NetworkSettings(Section):
@@ -64,29 +63,18 @@ class StoreSettings(Section):
 
 
 class CalendarSettings(Section):
-    """Days on which people do not work as usual, besides Saturday and Sunday (civil clock)."""
+    """Where the calendar is."""
 
-    other_days: tuple[str, ...] = Field(
-        (), description='Dates "2024-12-25" or spans "2024-12-23/2025-01-01" (both ends included).'
+    file: str = Field(
+        "",
+        description="Calendar file, relative to the settings file; empty: no days but weekends are special.",
     )
 
-    @field_validator("other_days")
-    @classmethod
-    def _spans(cls, value: tuple[str, ...]) -> tuple[str, ...]:
-        for text in value:
-            first, last = parse_span(text)
-            if last < first:
-                raise ValueError(f"the span {text!r} ends before it begins")
-        return value
 
-    @cached_property
-    def dates(self) -> frozenset[dt.date]:
-        """All other days as dates."""
-        days: set[dt.date] = set()
-        for text in self.other_days:
-            first, last = parse_span(text)
-            days.update(first + dt.timedelta(days=i) for i in range((last - first).days + 1))
-        return frozenset(days)
+class SiteLogSettings(Section):
+    """Where the site log is."""
+
+    file: str = Field("", description="Site log file, relative to the settings file; empty: none is read.")
 
 
 class ColumnSettings(Section):
@@ -200,6 +188,15 @@ class SourceSettings(Section):
         return None if word is None else Stage[word.upper().replace(" ", "_")]
 
 
+class SegmentSettings(Section):
+    """A day from which on a series was measured with something else, or somewhere else."""
+
+    first_day: dt.date = Field(
+        description="First day, standard time; a day with both belongs to the new segment."
+    )
+    what: str = Field(min_length=1, description="What changed: instrument, inlet, place.")
+
+
 class SeriesSettings(Section):
     """One series of the network."""
 
@@ -207,6 +204,18 @@ class SeriesSettings(Section):
     unit: str = Field(min_length=1, description="Unit in which values are kept.")
     kind: Literal["linear", "circular", "accumulated"] = "linear"
     label: str = ""
+    segments: tuple[SegmentSettings, ...] = Field(
+        (), description="Changes of instrument and moves of the station, in order of day."
+    )
+
+    @field_validator("segments")
+    @classmethod
+    def _in_order(cls, value: tuple[SegmentSettings, ...]) -> tuple[SegmentSettings, ...]:
+        days = [s.first_day for s in value]
+        for earlier, later in itertools.pairwise(days):
+            if later <= earlier:
+                raise ValueError(f"{later} comes after {earlier}; give each day once, in order")
+        return value
 
     @property
     def quantity(self) -> str:
@@ -298,6 +307,19 @@ class AlertSettings(Section):
     )
 
 
+class BackupSettings(Section):
+    """Copies of the store."""
+
+    folder: str = Field("backup", min_length=1, description="Folder of the copies; relative to work_folder.")
+    daily: int = Field(7, ge=1, le=366, description="Days of which a copy is kept.")
+    weekly: int = Field(
+        5,
+        ge=0,
+        le=520,
+        description="Weeks of which the last copy and the Parquet archive are kept; 0: no archive.",
+    )
+
+
 class NightSettings(Section):
     """When the night runs."""
 
@@ -309,14 +331,19 @@ class Settings(Section):
 
     network: NetworkSettings
     store: StoreSettings = Field(default_factory=lambda: StoreSettings())
+    backup: BackupSettings = Field(default_factory=lambda: BackupSettings())
     night: NightSettings = Field(default_factory=lambda: NightSettings())
     calendar: CalendarSettings = Field(default_factory=lambda: CalendarSettings())
+    site_log: SiteLogSettings = Field(default_factory=lambda: SiteLogSettings())
     correlation: CorrelationSettings = Field(default_factory=lambda: CorrelationSettings())
     alerts: AlertSettings = Field(default_factory=lambda: AlertSettings())
+    data_notes: DataNoteSettings = Field(default_factory=lambda: DataNoteSettings())
+    check: tuple[CheckSettings, ...] = ()
     source: tuple[SourceSettings, ...] = Field(min_length=1)
     series: tuple[SeriesSettings, ...] = Field(min_length=1)
     pair: tuple[PairSettings, ...] = Field(min_length=1)
     origin: Path = Field(default=Path("settings.toml"), exclude=True)
+    _calendar: tuple[CalendarEntry, ...] = PrivateAttr(default=())
 
     @cached_property
     def work_folder(self) -> Path:
@@ -328,11 +355,44 @@ class Settings(Section):
         """The DuckDB file."""
         return self.work_folder / self.store.file
 
+    @property
+    def backup_folder(self) -> Path:
+        """The folder of the store's copies."""
+        return self.work_folder / self.backup.folder
+
     @cached_property
     def settings_hash(self) -> str:
-        """Changes when any setting does; recorded with every night."""
-        text = json.dumps(self.model_dump(mode="json"), sort_keys=True)
-        return hashlib.sha256(text.encode()).hexdigest()[:16]
+        """Changes when any setting or the calendar does; recorded with every night."""
+        return hash_of(self.text)
+
+    @cached_property
+    def text(self) -> str:
+        """All settings and the calendar as JSON, defaults included; :func:`rhovane.settings.settings_of_text` reads it again."""
+        calendar = [entry.model_dump(mode="json") for entry in self.calendar_entries]
+        return json.dumps([self.model_dump(mode="json"), calendar], sort_keys=True)
+
+    @property
+    def calendar_entries(self) -> tuple[CalendarEntry, ...]:
+        """The entries of the calendar file."""
+        return self._calendar
+
+    def with_calendar(self, entries: Sequence[CalendarEntry]) -> Settings:
+        """The same settings with these entries in the calendar."""
+        other = self.model_copy()
+        other._calendar = tuple(entries)
+        for name in ("settings_hash", "text"):
+            other.__dict__.pop(name, None)
+        return other
+
+    def other_days(self, first: dt.date, last: dt.date) -> frozenset[dt.date]:
+        """Days from ``first`` to ``last`` on which people do not work as usual, besides weekends."""
+        entries = [e for e in self.calendar_entries if e.kind == "other days"]
+        return frozenset(day for entry in entries for day in entry.dates(first, last))
+
+    @property
+    def site_log_path(self) -> Path | None:
+        """The site log file; None when none is named."""
+        return self.origin.parent / self.site_log.file if self.site_log.file else None
 
     def series_by_key(self) -> dict[str, SeriesSettings]:
         """Series settings by key."""
@@ -341,7 +401,17 @@ class Settings(Section):
     def domain_series(self) -> list[Series]:
         """All series as words of the domain, with the step of the source that delivers them."""
         step = {key: source.step_minutes for source in self.source for key in source.series.values()}
-        return [Series(s.key, s.unit, s.kind, step[s.key], s.label) for s in self.series]
+        return [
+            Series(
+                s.key,
+                s.unit,
+                s.kind,
+                step[s.key],
+                s.label,
+                tuple(Segment(one.first_day, one.what) for one in s.segments),
+            )
+            for s in self.series
+        ]
 
     @cached_property
     def pairs(self) -> tuple[tuple[PairSettings, Pair], ...]:
@@ -349,14 +419,29 @@ class Settings(Section):
         return tuple((pair, self.pair_of(pair)) for pair in self.pair)
 
     def pair_of(self, pair: PairSettings) -> Pair:
-        """A pair as a word of the domain; its recipe hash covers every setting that its numbers rest on."""
+        """A pair as a word of the domain; its recipe hash covers every setting that its numbers rest on.
+
+        Of the calendar that is the other days, for a pair of working days. Hours of maintenance take readings
+        away, as a revision does, and make no other recipe.
+        """
+        other_days = [e.model_dump(mode="json") for e in self.calendar_entries if e.kind == "other days"]
         parts = {
             "pair": pair.model_dump(mode="json", exclude={"label"}),
             "lags": list(self.lags_of(pair)),
             "correlation": self.correlation.model_dump(mode="json", exclude={"significance"}),
-            "calendar": self.calendar.model_dump(mode="json"),
+            "other days": other_days if pair.working_days_only else [],
             "clocks": [self.network.standard_time, self.network.civil_zone],
+            "splits": self.data_notes.model_dump(mode="json", include={"split_at", "step_strength"}),
+            "checks": [c.model_dump(mode="json") for k in self.series_of(pair) for c in self.checks_of(k)],
         }
+        keys = set(self.series_of(pair))
+        borders = {
+            s.key: [one.first_day.isoformat() for one in s.segments]
+            for s in self.series
+            if s.key in keys and s.segments
+        }
+        if borders:  # only then, so that recipes without segments keep their hash
+            parts["segments"] = borders
         digest = hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
         return Pair(pair.key, pair.first, pair.second, digest, pair.label)
 
@@ -364,6 +449,23 @@ class Settings(Section):
         """Every series that a pair's numbers rest on: members, controls, wind direction."""
         direction = (pair.sector.direction,) if pair.sector else ()
         return (pair.first, pair.second, *pair.adjusted_for, *direction)
+
+    def checks_of(self, key: str) -> list[CheckSettings]:
+        """Own quality checks that apply to a series."""
+        return [c for c in self.check if c.applies_to in (key, key.partition(".")[2])]
+
+    @cached_property
+    def notes_hash(self) -> str:
+        """Changes when a setting does on which data notes depend."""
+        parts = {
+            "notes": self.data_notes.model_dump(mode="json"),
+            "checks": [c.model_dump(mode="json") for c in self.check],
+            "flags": self.correlation.accepted_flags,
+            "windows": [self.correlation.window_hours, self.correlation.min_coverage],
+            "series": [s.model_dump(mode="json", exclude={"label"}) for s in self.series],
+            "clock": self.network.standard_time,
+        }
+        return hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()[:16]
 
     def lags_of(self, pair: PairSettings) -> range:
         """Lags examined for a pair, in hours."""
@@ -403,6 +505,9 @@ class Settings(Section):
                 )
         for i, pair in enumerate(self.pair):
             found += self._pair_mistakes(f"pair[{i}] ({pair.key})", pair, known)
+        for i, check in enumerate(self.check):
+            where = f"check[{i}] ({check.applies_to})"
+            found += check.mistakes(where, {key: one.quantity for key, one in known.items()})
         return found
 
     def _pair_mistakes(
@@ -457,19 +562,15 @@ def _repeated(section: str, names: list[str]) -> list[tuple[str, str]]:
     ]
 
 
+def hash_of(text: str) -> str:
+    """The hash that settings of this text are known by."""
+    return hashlib.sha256(text.encode()).hexdigest()[:16]
+
+
 def parse_offset(text: str) -> dt.timedelta:
     """A fixed offset ``+HH:MM`` as a time span."""
     sign = -1 if text[0] == "-" else 1
     return sign * dt.timedelta(hours=int(text[1:3]), minutes=int(text[4:6]))
-
-
-def parse_span(text: str) -> tuple[dt.date, dt.date]:
-    """A date, or two dates joined by a slash (ISO 8601), as first and last day."""
-    first, _, last = text.partition("/")
-    try:
-        return dt.date.fromisoformat(first), dt.date.fromisoformat(last or first)
-    except ValueError:
-        raise ValueError(f"{text!r} is not a date 2024-12-25 or a span 2024-12-23/2025-01-01") from None
 
 
 def known_zone(name: str) -> str:

@@ -87,7 +87,9 @@ def constancy_test(x: ArrayLike, y: ArrayLike, *, lag: int = 0) -> ConstancyTest
         reason = PERFECT.replace("interval ", "")
     if reason is not None:
         return ConstancyTest(nan, nan, None, nan, nan, ranks.n_pairs, reason)
-    statistic, row, n_effective = _departure(ranks, rho)
+    path, n_effective = departure(ranks, rho)
+    row = int(np.abs(path).argmax())
+    statistic = abs(float(path[row]))
     reason = too_little_reason(n_effective, MIN_EFFECTIVE)
     before = joint_ranks(ranks_x[: row + 1], ranks_y[: row + 1])
     after = joint_ranks(ranks_x[row + 1 :], ranks_y[row + 1 :])
@@ -107,8 +109,8 @@ def bridge_p_value(statistic: float) -> float:
     return float(kolmogorov(statistic))
 
 
-def _departure(ranks: JointRanks, rho: float) -> tuple[float, int, float]:
-    """Return the largest standardised departure, its row and the effective sample size."""
+def departure(ranks: JointRanks, rho: float) -> tuple[Floats, float]:
+    """Return the influences on ``rho`` added up by row, in units of a Brownian bridge, and the effective sample size."""
     influence: Floats = np.zeros(len(ranks.x))
     fill_influence(ranks.x, ranks.y, ranks.joint, ranks.n_pairs, rho, influence)
     acf = autocorrelation(ranks)
@@ -116,6 +118,5 @@ def _departure(ranks: JointRanks, rho: float) -> tuple[float, int, float]:
     ratio = float(influence @ influence) / ranks.n_pairs / unexplained**2
     n_effective = dependent_widths(rho, ranks.n_pairs, acf, inflation(acf), ratio).n_effective
     long_run = ranks.n_pairs / (n_effective + PAIRS_SPENT)
-    path = np.abs(np.cumsum(influence))
-    row = int(path.argmax())
-    return float(path[row]) / float(np.sqrt(ranks.n_pairs * long_run)) / unexplained, row, n_effective
+    path: Floats = np.cumsum(influence) / (float(np.sqrt(ranks.n_pairs * long_run)) * unexplained)
+    return path, n_effective

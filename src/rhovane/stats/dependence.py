@@ -12,7 +12,6 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.fft import irfft, next_fast_len, rfft
 from scipy.special import stdtr
 
 from rhovane.stats.arguments import LARGEST_WINDOW, Floats
@@ -112,6 +111,8 @@ def transformed_products(
     x: NDArray[Any], y: NDArray[Any], joint: NDArray[Any], own: int, cross: int
 ) -> tuple[NDArray[Any], NDArray[Any], NDArray[Any], NDArray[Any], NDArray[Any]]:
     """Return what :func:`lag_products` returns, by fast Fourier transform: for series beyond a window."""
+    from scipy.fft import irfft, next_fast_len, rfft  # windows do without, and start sooner
+
     length = next_fast_len(len(x) + own + 1, True)
     fx, fy, fj = (rfft(side.astype(np.float64), length) for side in (x, y, joint))
     across = irfft(fx.conj() * fy, length)
@@ -158,9 +159,9 @@ def inflation(acf: Autocorrelation) -> float:
     return max(SMALLEST_INFLATION, 1.0 + 2.0 * float(np.dot(acf.weight, acf.xx * acf.yy)))
 
 
-def effective_pairs(n_pairs: float, factor: float) -> float:
-    """Return the effective sample size, between 3 and the number of pairs."""
-    return min(float(n_pairs), max(SMALLEST_EFFECTIVE, n_pairs / factor))
+def effective_pairs(n_pairs: Any, factor: float) -> Any:
+    """Return the effective sample size, between 3 and the number of pairs; elementwise."""
+    return np.minimum(n_pairs, np.maximum(SMALLEST_EFFECTIVE, n_pairs / factor))
 
 
 def spearman_p_value(rho: Any, n_effective: Any, spent: int = 0) -> Any:

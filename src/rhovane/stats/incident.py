@@ -54,6 +54,8 @@ class Incident:
         Log evidence of the chart that crossed, and its limit.
     end_day : int or None
         Last day of the incident; None while it lasts. ``ending`` is "returned" or "new baseline".
+    onset_range : (int, int)
+        First and last day that the onset may have been, with a probability of 90 %.
     """
 
     alarm_day: int
@@ -67,6 +69,7 @@ class Incident:
     threshold: float
     end_day: int | None
     ending: str | None
+    onset_range: tuple[int, int]
 
     @property
     def pairs(self) -> tuple[int, ...]:
@@ -84,6 +87,11 @@ class Incident:
         return self.judged.suspect
 
     @property
+    def lag_steps(self) -> int:
+        """Steps by which the suspect seemed late on the alarm day; 0 where the best lag had not moved."""
+        return self.judged.lag_steps
+
+    @property
     def kind(self) -> str:
         """ "strength" or "timing", as judged on the alarm day."""
         return self.judged.kind
@@ -98,6 +106,7 @@ class OpenIncident:
     chart: int
     evidence: float
     threshold: float
+    onset_range: tuple[int, int]
     before: float = np.nan
     after: float = np.nan
     pairs: NDArray[np.int64] = field(default_factory=lambda: np.empty(0, np.int64))
@@ -124,6 +133,7 @@ class OpenIncident:
             self.threshold,
             end_day,
             ending,
+            self.onset_range,
         )
 
 

@@ -133,29 +133,29 @@ def window_table(
         joint = joint_ranks(*sides)
         acf = autocorrelation(joint)
         factor = inflation(acf)
-        for column in np.flatnonzero(computed[row]).tolist():
-            n_effective[row, column] = effective_pairs(n_pairs[row, column], factor)
+        n_effective[row, computed[row]] = effective_pairs(n_pairs[row, computed[row]], factor)
         if leads[base] == 0:
             bounds = rank_interval(joint, acf, factor)
             low[row, base], high[row, base] = bounds.low, bounds.high
     assessable = computed & (n_effective >= min_effective)
     p_value = np.full(shape, np.nan)
     p_value[assessable] = spearman_p_value(statistic[assessable], n_effective[assessable])
-    reason = [
-        [
-            describe_reason(int(code[row, column]), int(n_pairs[row, column]), int(fewest[row]))
-            or too_little_reason(float(n_effective[row, column]), min_effective)
-            for column in range(len(leads))
-        ]
-        for row in range(len(ends))
-    ]
+    reason: list[list[str | None]] = [[None] * len(leads) for _ in ends]
+    for row, column in np.argwhere(~assessable).tolist():
+        reason[row][column] = describe_reason(
+            int(code[row, column]), int(n_pairs[row, column]), int(fewest[row])
+        ) or too_little_reason(float(n_effective[row, column]), min_effective)
     return WindowTable(ends, leads, statistic, n_pairs, n_effective, p_value, low, high, reason)
 
 
 def _base_lag(lags: Integers, n_pairs: Integers, computed: NDArray[np.bool_]) -> int:
     """The lag whose autocorrelations serve all: lag 0 where it is computed, else the one with most pairs."""
-    usable = np.flatnonzero(computed).tolist()
-    return int(min(usable, key=lambda i: (lags[i] != 0, -n_pairs[i], abs(lags[i]), lags[i])))
+    usable = np.flatnonzero(computed)
+    at_zero = usable[lags[usable] == 0]
+    if len(at_zero):
+        usable = at_zero
+    order = np.lexsort((lags[usable], np.abs(lags[usable]), -n_pairs[usable]))
+    return int(usable[order[0]])
 
 
 def _aligned(x: Ranks, y: Ranks, end: int, window: int, lag: int) -> tuple[Ranks, Ranks]:

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from rhovane.stats.budget import threshold
 from rhovane.stats.chart import MAX_DEVIATION, MIN_REFERENCE_DAYS, SHIFTS, gather_all, scales, standardised
+from rhovane.stats.decisions import Decisions
 from rhovane.stats.incident import Incident, Judgement, OpenIncident, onset_day, weighted_mean
 from rhovane.stats.network import (
     CLASS_VARIANCE,
@@ -24,6 +25,7 @@ from rhovane.stats.network import (
     references,
     unrest,
 )
+from rhovane.stats.onset import onset_range
 from rhovane.stats.suspect import explain, lag_movement, slipped_node
 
 Floats = NDArray[np.float64]
@@ -55,7 +57,7 @@ RETURN_OVERLAP_DAYS = 3
 """Days before a return is recognised that already belong to the reference again."""
 REBASELINE_SKIP_DAYS = 7
 """Days from the onset on that stay out of the new reference after re-baselining."""
-LEARNING, WATCHED, CHANGED, NOT_SCORED = 0, 1, 2, 3
+LEARNING, WATCHED, CHANGED, NOT_SCORED, NOT_JUDGED = 0, 1, 2, 3, 4
 
 
 @dataclass(frozen=True)
@@ -96,6 +98,7 @@ class Replay:
         structure: Structure,
         spans: Spans,
         false_alarms_per_year: float,
+        decisions: Decisions,
     ) -> None:
         n_pairs, n_days = score.shape
         n_charts = len(structure.hypotheses)
@@ -130,6 +133,7 @@ class Replay:
         self.live = self.is_node.copy()
         self.limit = np.full(n_charts, np.inf)
         self._share_budget()
+        self.known = decisions.known_on(-1, belongs, n_days)
 
     def run(self) -> tuple[Incident, ...]:
         """Judge every day; the incidents in order of their alarm day."""
@@ -139,6 +143,13 @@ class Replay:
 
     def judge(self, day: int) -> None:
         """Judge one day; days must come in order."""
+        decisions = self.known.decisions
+        if decisions.turning(day):
+            self.known = decisions.known_on(day, self.belongs, self.score.shape[1])
+            # What a chart gathered from days that are set aside now is not held against the pair.
+            self.statistic[self.belongs[:, decisions.reaching_back(day)].any(axis=1)] = 0.0
+        for incident in [i for i in self.open if decisions.renewed(i.pairs, day)]:
+            self._close(incident, day, "new baseline")
         night = self._night(day)
         self.means[:, day], self.sds[:, day] = night.mean, night.sd
         if day >= self.first:
@@ -173,7 +184,7 @@ class Replay:
         mean, sd, total, _ = references(
             self.score,
             self.weight,
-            self.usable,
+            self.known.referable(self.usable),
             day,
             spans.guard_days,
             spans.baseline_days,
@@ -185,6 +196,7 @@ class Replay:
         learning = day < self.ready
         mean, sd = np.where(learning, np.nan, mean), np.where(learning, np.nan, sd)
         deviation = (self.score[:, day] - mean) / (sd * np.sqrt(1.0 / self.weight[:, day] + 1.0 / total))
+        deviation[self.known.unjudged[:, day]] = np.nan
         observed = np.isfinite(deviation) & ~self.held
         self.kept[observed, day] = np.clip(deviation[observed], -MAX_KEPT_DEVIATION, MAX_KEPT_DEVIATION)
         empty = np.empty((0, 0))
@@ -196,7 +208,7 @@ class Replay:
         begin, end = max(0, day - guard - HISTORY_DAYS), max(0, day - guard)
         past = (self.score[:, begin:end] - night.mean[:, None]) / night.sd[:, None]
         past *= np.sqrt(self.weight[:, begin:end])
-        known = self.usable[:, begin:end] & np.isfinite(past)
+        known = self.known.referable(self.usable)[:, begin:end] & np.isfinite(past)
         past = np.clip(np.where(known, past, 0.0), -MAX_HISTORY_DEVIATION, MAX_HISTORY_DEVIATION)
         night.direction, movement = directions(
             self.is_node, self.belongs, night.mean, night.sd, self.weight[:, day]
@@ -226,7 +238,7 @@ class Replay:
         raw = standardised(t, n, judged)
         clean = np.clip(raw, -MAX_DEVIATION, MAX_DEVIATION)
         self.counted[:, day] = np.where(self.spoiled[:, day], np.nan, clean)
-        z = raw / scales(self.counted, day, guard)
+        z = raw / scales(self.known.outputs(self.counted), day, guard)
         self.unrest[:, day] = unrest(z[: self.structure.n_pairs], self.touches)
         z /= self._weather(day)
         self.scaled[:, day] = np.clip(z, -MAX_DEVIATION, MAX_DEVIATION)
@@ -258,7 +270,8 @@ class Replay:
                 continue
             onset = onset_day(self.scaled[chart], day, self.first)
             value, limit = float(self.values[chart, day]), float(self.limit[chart])
-            incident = OpenIncident(day, onset, int(chart), value, limit)
+            span = onset_range(self.scaled[chart], day, self.first)
+            incident = OpenIncident(day, onset, int(chart), value, limit, span)
             incident.pairs = pairs
             incident.reach = self.touches[chart].copy()
             self._spoil(pairs, onset, day + SETTLING_DAYS)
@@ -293,7 +306,8 @@ class Replay:
         )
         chart = incident.chart if found is None else found.hypothesis
         lead = int(self.structure.hypotheses[chart].pairs[0]) if found is None else found.lead
-        lagged = self.lagged[:, max(incident.onset_day, night.day - SETTLING_DAYS + 1) : night.day + 1]
+        recent = slice(max(incident.onset_day, night.day - SETTLING_DAYS + 1), night.day + 1)
+        lagged = np.where(self.known.unjudged[:, recent, None], np.nan, self.lagged[:, recent])
         mean = np.nan_to_num(night.mean)
         steps = lag_movement(self.structure, self.structure.hypotheses[chart], lagged, mean)
         if steps and not self.is_node[chart]:
@@ -330,7 +344,9 @@ class Replay:
             incident.back = max(0.0, incident.back + float(np.clip(step, -MAX_RETURN_STEP, MAX_RETURN_STEP)))
         if incident.back > RETURN_EVIDENCE:
             self._close(incident, day, "returned")
-        elif day - incident.alarm_day >= self.spans.rebaseline_days:
+        elif (  # days that are set aside cannot become the new normal
+            day - incident.alarm_day >= self.spans.rebaseline_days and not self.known.barred[pairs, day].any()
+        ):
             self._close(incident, day, "new baseline")
 
     def _settle(self, incident: OpenIncident, night: Night) -> None:
@@ -346,8 +362,8 @@ class Replay:
         pairs = incident.pairs = incident.pairs[moved]
         incident.change = (total / n)[moved]
         before = references(
-            self.score, self.weight, self.usable, max(onset, self.first), self.spans.guard_days,
-            self.spans.baseline_days, MIN_REFERENCE_DAYS,
+            self.score, self.weight, self.known.referable(self.usable), max(onset, self.first),
+            self.spans.guard_days, self.spans.baseline_days, MIN_REFERENCE_DAYS,
         )  # fmt: skip
         free = pairs[~self.held[pairs]]
         self.frozen[:, free] = before[:3, free]
@@ -378,6 +394,7 @@ class Replay:
     def _record_state(self, night: Night) -> None:
         """What each pair was in at the end of the day."""
         state = np.where(np.isfinite(night.deviation), WATCHED, NOT_SCORED)
+        state[self.known.unjudged[:, night.day]] = NOT_JUDGED
         state[night.day < self.ready] = LEARNING
         for incident in self.open:
             state[incident.pairs] = CHANGED

@@ -15,6 +15,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
+from rhovane.stats.decisions import Decisions
 from rhovane.stats.incident import Incident
 from rhovane.stats.network import Structure
 from rhovane.stats.replay import SETTLING_DAYS, Replay, Spans
@@ -41,6 +42,7 @@ class ResumableReplay(Replay):
         structure: Structure,
         spans: Spans,
         false_alarms_per_year: float,
+        decisions: Decisions,
     ) -> None:
         room = ((0, 0), (0, SPARE_DAYS + SETTLING_DAYS))
         super().__init__(
@@ -51,6 +53,7 @@ class ResumableReplay(Replay):
             structure,
             spans,
             false_alarms_per_year,
+            decisions,
         )
         self.n_judged = 0
         self.n_known = score.shape[1]
@@ -115,6 +118,7 @@ class WatchMemory:
         structure: Structure,
         spans: Spans,
         false_alarms_per_year: float,
+        decisions: Decisions,
     ) -> ResumableReplay:
         """A replay of this history, judged as far as a kept state allows, with all its days known."""
         key = (structure.members, tuple(structure.classes.tolist()), spans, false_alarms_per_year)
@@ -127,6 +131,7 @@ class WatchMemory:
                 n <= n_days
                 and state.takes(n_days)
                 and _decided(ready, n) == _decided(state.ready, n)
+                and state.known.decisions.up_to(n) == decisions.up_to(n)
                 and _same(state.score[:, :n], score[:, :n])
                 and _same(state.weight[:, :n], weight[:, :n])
                 and _same(state.lagged[:, :n], lagged[:, :n])
@@ -134,8 +139,11 @@ class WatchMemory:
                 going = state.copied()
                 going.set_ready(ready)
                 going.learn(score, weight, lagged)
+                going.known = decisions.known_on(n - 1, going.belongs, going.score.shape[1])
                 return going
-        return ResumableReplay(score, weight, lagged, ready, structure, spans, false_alarms_per_year)
+        return ResumableReplay(
+            score, weight, lagged, ready, structure, spans, false_alarms_per_year, decisions
+        )
 
     def forget_after(self, n_judged: int) -> None:
         """Keep the states up to a number of judged days; older ones are thinned out."""

@@ -15,12 +15,13 @@ from numpy.typing import NDArray
 
 from rhovane.stats.chart import WEIGHT_OFFSET
 from rhovane.stats.daily_scores import DailyScores
+from rhovane.stats.decisions import SetAside, checked_decisions
 from rhovane.stats.incident import Incident, Judgement
 from rhovane.stats.network import quantity_of, structure_of
 from rhovane.stats.replay import Replay, Spans
 from rhovane.stats.resume import WatchMemory
 
-__all__ = ["DayState", "Incident", "Judgement", "Watch", "WatchMemory", "watch"]
+__all__ = ["DayState", "Incident", "Judgement", "SetAside", "Watch", "WatchMemory", "watch"]
 
 Floats = NDArray[np.float64]
 
@@ -42,6 +43,7 @@ class DayState(IntEnum):
     WATCHED = 1
     CHANGED = 2
     NOT_SCORED = 3
+    NOT_JUDGED = 4
 
 
 @dataclass(frozen=True)
@@ -51,7 +53,7 @@ class Watch:
     ``score`` and ``weight`` are what was judged (NaN, 0: not scored); ``reference_mean`` and
     ``reference_sd`` what it was judged against (atanh of a daily correlation; per unit of weight), NaN
     while learning; ``deviation`` the pair's standardised deviation after network control and ``evidence``
-    its log chart value, both NaN while learning, changed or not scored; ``threshold`` the limit of the
+    its log chart value, both NaN while learning, changed, not scored or not judged; ``threshold`` the limit of the
     evidence; ``state`` a :class:`DayState`. ``recipe`` says for each pair which score was watched:
     "innovation", "day shape" or "day course".
     Charts of series and stations are not among these arrays; an incident they raised carries its own
@@ -81,6 +83,8 @@ def watch(
     baseline_days: int = 90,
     guard_days: int = 14,
     rebaseline_days: int = 110,
+    set_aside: Sequence[SetAside] = (),
+    new_baselines: Sequence[tuple[int, int]] = (),
     memory: WatchMemory | None = None,
 ) -> Watch:
     """Watch the daily scores of all pairs of a network, day by day.
@@ -106,6 +110,11 @@ def watch(
         Days between the reference and the day judged.
     rebaseline_days : int
         Days after an alarm when a change that has lasted becomes the new reference.
+    set_aside : sequence of SetAside, optional
+        Days of pairs that never enter a reference and, where said so, do not alarm, each from the day on
+        which that was known. A change whose days are set aside does not become the new reference by itself.
+    new_baselines : sequence of (pair, day), optional
+        The open change of the pair ends on that day with ending "new baseline", by decision.
     memory : WatchMemory, optional
         Where an earlier call stood: judging goes on from there where it can, with the same result.
 
@@ -117,7 +126,7 @@ def watch(
     Raises
     ------
     ValueError
-        When pairs cover different days, or a number is out of range.
+        When pairs cover different days, a number is out of range, or a decision names no pair of these.
     """
     _check(
         scores, false_alarms_per_year, members, classes, choice, baseline_days, guard_days, rebaseline_days
@@ -142,6 +151,7 @@ def watch(
         structure_of(members or alone, classes, stations=stations),
         Spans(baseline_days, guard_days, rebaseline_days),
         false_alarms_per_year,
+        checked_decisions(set_aside, new_baselines, n_pairs),
     )
     if memory is None:
         replay = Replay(*history)

@@ -1,27 +1,40 @@
 """The only place that knows DuckDB: readings, results, alert log and night ledger in one file."""
 
 from rhovane.store.alert_log import NewAlert, NewAlertEvent, StoredAlert, StoredAlertEvent
+from rhovane.store.copies import BackedUp, archives_in, back_up, copies_in, restore
 from rhovane.store.looking import Revision
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
-from rhovane.store.reading import Readings, read_parquet
+from rhovane.store.reading import Origin, Readings, read_parquet
 from rhovane.store.results import EVIDENCE_COLUMNS, LATER_COLUMNS, WINDOW_COLUMNS
-from rhovane.store.site_log import StoredSiteLogEntry
+from rhovane.store.site_log import SITE_LOG_FILE, StoredSiteLogEntry
 from rhovane.store.store import Store
+from rhovane.store.tidying import Tidied, tidy
+from rhovane.store.upkeep import Check
 
 __all__ = [
     "EVIDENCE_COLUMNS",
     "LATER_COLUMNS",
+    "SITE_LOG_FILE",
     "WINDOW_COLUMNS",
+    "BackedUp",
+    "Check",
     "NewAlert",
     "NewAlertEvent",
     "NightRecord",
+    "Origin",
     "Readings",
     "Revision",
     "Store",
     "StoredAlert",
     "StoredAlertEvent",
     "StoredSiteLogEntry",
+    "Tidied",
+    "archives_in",
+    "back_up",
+    "copies_in",
     "open_store",
     "read_parquet",
+    "restore",
+    "tidy",
 ]

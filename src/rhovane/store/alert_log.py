@@ -20,6 +20,7 @@ from rhovane.store.jsontext import json_text
 from rhovane.store.session import Session
 
 CHAIN_BEGINS = "0" * 64  # the hash before the first event
+_EVENTS_BY_KIND = "select kind, count(*) from alert_event group by kind"
 
 
 @dataclass(frozen=True)
@@ -96,6 +97,7 @@ class AlertLog(Session):
             A mapping has a wrong field, or a payload cannot be written as JSON.
         """
         given = [_event(e) for e in events]
+        self._remembered.pop(_EVENTS_BY_KIND, None)
         with self.transaction():
             facts = self._alert_facts({int(e.alert_id) for e in given})
             last = self.rows("select seq, hash from alert_event order by seq desc limit 1")
@@ -115,6 +117,10 @@ class AlertLog(Session):
                 numbers.append(seq)
                 previous = digest
         return numbers
+
+    def has_events_of(self, kind: str) -> bool:
+        """Whether the log holds any event of a kind; asked once and remembered while the store is open."""
+        return kind in self.remembered(_EVENTS_BY_KIND)
 
     def alerts(self) -> list[StoredAlert]:
         """All recorded alerts in order of their number."""

@@ -2,14 +2,23 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from datetime import datetime
-from typing import NamedTuple
 
 import numpy as np
 
 from rhovane.model import IngestOutcome, ParsedFile, RhovaneError, Series
 from rhovane.store.clock import from_seconds, microseconds, naive_utc, seconds_of, timestamps
+from rhovane.store.deliveries import (
+    Delivery,
+    count_rejected_rows,
+    file_rank,
+    outcome_of,
+    records_of,
+    span_of_file,
+    table_of,
+    text_columns,
+)
 from rhovane.store.precedence import (
     NEW,
     READING,
@@ -23,15 +32,7 @@ from rhovane.store.precedence import (
 from rhovane.store.reading import KNOWN_FILES
 from rhovane.store.session import Session
 
-_COLUMNS = ("series_key", "hour_start", "value", "flag", "stage", "result_time", "line")
 _ROW = "series_id, ts, value, flag, stage, result_time, line, ingest_id, confirmed_by"
-
-
-class _Delivery(NamedTuple):
-    """A file that the ledger does not know yet, with the number that its ledger row gets."""
-
-    file: ParsedFile
-    ingest_id: int
 
 
 _SERIES_IDS = "select key, id from series"
@@ -41,6 +42,10 @@ class ReadingWriter(Session):
     """Writing of series and readings."""
 
     _made_known: Sequence[Series] = ()
+    _contents: dict[tuple[str, str], int] | None = (
+        None  # (source, sha256) → ingest number, of the whole ledger
+    )
+    _appended = False
 
     def ensure_series(self, series: Sequence[Series]) -> dict[str, int]:
         """Make series known and return the number of each by its key; a changed label is taken over.
@@ -127,11 +132,11 @@ class ReadingWriter(Session):
         with self.transaction():
             known = self._known_contents(files)
             next_id = self.value("select coalesce(max(id), 0) + 1 from ingest")
-            fresh: dict[tuple[str, str], _Delivery] = {}
+            fresh: dict[tuple[str, str], Delivery] = {}
             for file in files:
                 content = (file.source, file.sha256)
                 if content not in known and content not in fresh:
-                    fresh[content] = _Delivery(file, next_id + len(fresh))
+                    fresh[content] = Delivery(file, next_id + len(fresh))
             deliveries = list(fresh.values())
             counts = self._settle_and_write(deliveries)
             self._write_ledger(deliveries, counts, naive_utc(now))
@@ -142,26 +147,43 @@ class ReadingWriter(Session):
                 if content in fresh and content not in told:
                     told.add(content)
                     number = fresh[content].ingest_id
-                    outcomes.append(_outcome(file, number, counts[number - next_id]))
+                    outcomes.append(outcome_of(file, number, counts[number - next_id]))
                 else:
                     number = known.get(content) or fresh[content].ingest_id
-                    outcomes.append(_outcome(file, number, (0, 0, len(file.value)), already_known=True))
+                    outcomes.append(outcome_of(file, number, (0, 0, len(file.value)), already_known=True))
+            if self._contents is not None:
+                self._contents.update({content: d.ingest_id for content, d in fresh.items()})
             self._remember_files(files, outcomes, naive_utc(now))
             if checkpoint:
                 self.checkpoint_after_commit()
         return outcomes
 
-    def _known_contents(self, files: Sequence[ParsedFile]) -> dict[tuple[str, str], int]:
-        found = self.rows(
-            "select source, sha256, id from ingest where sha256 in (select unnest(?))",
-            [[f.sha256 for f in files]],
-        )
-        return {(source, sha256): number for source, sha256, number in found}
+    def _known_contents(self, files: Sequence[ParsedFile]) -> Mapping[tuple[str, str], int]:
+        """Ingest number of the contents that the ledger holds: of these files, or of all there are.
 
-    def _settle_and_write(self, deliveries: Sequence[_Delivery]) -> list[tuple[int, int, int]]:
+        The first append asks for these files only; a second one in the same process, as in a walk, reads the
+        whole ledger once, and later ones ask nothing.
+        """
+        if self._contents is None and not self._appended:
+            self._appended = True
+            found = self.rows(
+                "select source, sha256, id from ingest where sha256 in (select unnest(?))",
+                [[f.sha256 for f in files]],
+            )
+            return {(source, sha256): number for source, sha256, number in found}
+        if self._contents is None:
+            found = self.rows("select source, sha256, id from ingest")
+            self._contents = {(source, sha256): number for source, sha256, number in found}
+        return self._contents
+
+    def _forget(self) -> None:
+        super()._forget()
+        self._contents = None
+
+    def _settle_and_write(self, deliveries: Sequence[Delivery]) -> list[tuple[int, int, int]]:
         """Write the readings of all deliveries; (new, revised, unchanged) of each."""
         ids = self.remembered(_SERIES_IDS)
-        parts = [_records(delivery, ids) for delivery in deliveries]
+        parts = [records_of(delivery, ids) for delivery in deliveries]
         if not sum(map(len, parts)):
             return [(0, 0, 0)] * len(parts)
         rows = parts[0] if len(parts) == 1 else np.concatenate(parts)
@@ -207,7 +229,7 @@ class ReadingWriter(Session):
         was_held[held_group] = True
         fresh = result.winner.compress(~was_held)
         if len(fresh):
-            self.execute(f"insert into reading select {_ROW} from staged", staged=_table(fresh))
+            self.execute(f"insert into reading select {_ROW} from staged", staged=table_of(fresh))
         changed = result.changed[held_group]
         if changed.any():
             self.execute(
@@ -216,32 +238,38 @@ class ReadingWriter(Session):
                     result_time = c.result_time, ingest_id = c.ingest_id, confirmed_by = c.confirmed_by
                 from staged c where reading.rowid = c.row_number
                 """,
-                staged=_table(result.winner.take(held_group[changed])) | {"row_number": row_number[changed]},
+                staged=table_of(result.winner.take(held_group[changed]))
+                | {"row_number": row_number[changed]},
             )
         if len(result.history):
             self.execute(
                 f"insert into reading_history select {_ROW}, superseded_by from staged",
-                staged=_table(result.history) | {"superseded_by": result.superseded_by},
+                staged=table_of(result.history) | {"superseded_by": result.superseded_by},
+            )
+        if len(result.confirmed):
+            self.execute(
+                f"insert into reading_confirmation select {_ROW}, replaced_by from staged",
+                staged=table_of(result.confirmed) | {"replaced_by": result.replaced_by},
             )
 
     def _write_ledger(
-        self, deliveries: Sequence[_Delivery], counts: Sequence[tuple[int, int, int]], now: datetime
+        self, deliveries: Sequence[Delivery], counts: Sequence[tuple[int, int, int]], now: datetime
     ) -> None:
         if not deliveries:
             return
-        columns = _text_columns(
+        columns = text_columns(
             sha256=[d.file.sha256 for d in deliveries],
             source=[d.file.source for d in deliveries],
             path=[d.file.path for d in deliveries],
         )
         columns["id"] = np.array([d.ingest_id for d in deliveries])
-        columns["file_rank"] = np.array([_file_rank(d.file) for d in deliveries], np.uint64)
+        columns["file_rank"] = np.array([file_rank(d.file) for d in deliveries], np.uint64)
         columns["size_bytes"] = np.array([d.file.size_bytes for d in deliveries], np.int64)
         columns["rows_read"] = np.array([d.file.rows_read for d in deliveries], np.int64)
         for i, name in enumerate(("rows_new", "rows_revised", "rows_unchanged")):
             columns[name] = np.array([c[i] for c in counts], np.int64)
-        columns["rows_rejected"] = np.array([_rejected_rows(d.file) for d in deliveries], np.int64)
-        spans = [_span(d.file) for d in deliveries]
+        columns["rows_rejected"] = np.array([count_rejected_rows(d.file) for d in deliveries], np.int64)
+        spans = [span_of_file(d.file) for d in deliveries]
         for i, name in enumerate(("first_ts", "last_ts")):
             columns[name] = np.array(["NaT" if s is None else s[i] for s in spans], "datetime64[us]")
         self.execute(
@@ -256,7 +284,7 @@ class ReadingWriter(Session):
         self.expect_after_commit("readings", 0)
         refused = [(d.ingest_id, d.file.path, row) for d in deliveries for row in d.file.rejected]
         if refused:
-            columns = _text_columns(
+            columns = text_columns(
                 path=[path for _, path, _ in refused],
                 column_name=[row.column for *_, row in refused],
                 raw=[row.raw for *_, row in refused],
@@ -275,12 +303,15 @@ class ReadingWriter(Session):
         latest = {f.path: (f, o) for f, o in zip(files, outcomes, strict=True)}
         if not latest:
             return
+        all_new = False
         if KNOWN_FILES in self._remembered:
-            self._remembered[KNOWN_FILES].update(
+            known = self._remembered[KNOWN_FILES]
+            all_new = known.keys().isdisjoint(latest)
+            known.update(
                 {path: (f.size_bytes, microseconds(f.modified) * 1000) for path, (f, _) in latest.items()}
             )
         pairs = list(latest.values())
-        columns = _text_columns(
+        columns = text_columns(
             path=list(latest),
             source=[f.source for f, _ in pairs],
             sha256=[f.sha256 for f, _ in pairs],
@@ -288,6 +319,11 @@ class ReadingWriter(Session):
         columns["size_bytes"] = np.array([f.size_bytes for f, _ in pairs], np.int64)
         columns["mtime_ns"] = np.array([microseconds(f.modified) * 1000 for f, _ in pairs], np.int64)
         columns["ingest_id"] = np.array([o.ingest_id for _, o in pairs])
+        if all_new:  # looking for them again would take as long as writing them
+            self.execute(
+                "insert into feed_file by name select *, ?::timestamp as seen_at from staged", [now], columns
+            )
+            return
         self.execute(
             """
             merge into feed_file using (select *, ?::timestamp as seen_at from staged) s using (path)
@@ -298,83 +334,3 @@ class ReadingWriter(Session):
             [now],
             columns,
         )
-
-
-def _records(delivery: _Delivery, ids: dict[str, int]) -> Records:
-    """The readings of a file as records, in file order."""
-    file = delivery.file
-    n = len(file.value)
-    lengths = {name: len(getattr(file, name)) for name in _COLUMNS}
-    if set(lengths.values()) != {n}:
-        raise RhovaneError(f"{file.path}: its columns have different lengths: {lengths}. Nothing was kept.")
-    if file.rows_read != n + _rejected_rows(file):
-        raise RhovaneError(
-            f"{file.path}: {file.rows_read} rows read, but {n} readings and {_rejected_rows(file)} rejected rows. "
-            "Nothing was kept; every row must be one or the other."
-        )
-    unknown = sorted(set(file.series_key) - ids.keys())
-    if unknown:
-        raise RhovaneError(
-            f"{file.path}: series not known to the store: {', '.join(unknown)}. Define them in the settings first. "
-            "Nothing was kept."
-        )
-    rows = np.empty(n, READING)
-    rows["series_id"] = np.fromiter((ids[key] for key in file.series_key), np.int32, n)
-    rows["ts"] = file.hour_start
-    rows["value"] = file.value
-    rows["flag"] = file.flag
-    rows["stage"] = file.stage
-    rows["result_time"] = file.result_time
-    rows["line"] = file.line
-    rows["file_rank"] = _file_rank(file)
-    rows["ingest_id"] = rows["confirmed_by"] = delivery.ingest_id
-    infinite = np.isinf(rows["value"])
-    if infinite.any():
-        raise RhovaneError(
-            f"{file.path}: the value of line {rows['line'][infinite][0]} is infinite; a reading is a finite number "
-            "or missing (NaN). Nothing was kept."
-        )
-    return rows
-
-
-def _table(rows: Records) -> dict[str, np.ndarray]:
-    columns = {name: rows[name] for name in READING.names or () if name != "file_rank"}
-    return columns | {name: timestamps(rows[name]) for name in ("ts", "result_time")}
-
-
-def _text_columns(**columns: Sequence[str]) -> dict[str, np.ndarray]:
-    return {name: np.array(values, dtype=object) for name, values in columns.items()}
-
-
-def _file_rank(file: ParsedFile) -> int:
-    """The first 64 bits of the content hash: enough to order files by content."""
-    return int(file.sha256[:16], 16)
-
-
-def _rejected_rows(file: ParsedFile) -> int:
-    return sum(row.line > 0 for row in file.rejected)
-
-
-def _span(file: ParsedFile) -> tuple[datetime, datetime] | None:
-    if not len(file.hour_start):
-        return None
-    hours = np.asarray(file.hour_start)
-    return naive_utc(from_seconds(hours.min())), naive_utc(from_seconds(hours.max()))
-
-
-def _outcome(
-    file: ParsedFile, ingest_id: int, counts: tuple[int, int, int], *, already_known: bool = False
-) -> IngestOutcome:
-    span = _span(file)
-    first, last = (None, None) if span is None else (from_seconds(microseconds(t) // 1_000_000) for t in span)
-    return IngestOutcome(
-        ingest_id,
-        file.source,
-        file.path,
-        file.rows_read,
-        *counts,
-        _rejected_rows(file),
-        already_known,
-        first,
-        last,
-    )

@@ -56,16 +56,15 @@ class Manifest:
 
     @classmethod
     def counted(cls, row: Callable[[str], tuple[int, ...]]) -> Manifest:
-        """What a store holds, from the only row of each counting query."""
+        """What a store holds, from the only row of a counting query."""
         return cls().recounted(row, COUNT_NAMES)
 
     def recounted(self, row: Callable[[str], tuple[int, ...]], among: Collection[str]) -> Manifest:
         """The same manifest with the fields ``among`` (and those of the same query) counted anew."""
-        counts: dict[str, int] = {}
-        for names, sql in COUNTS_SQL.items():
-            if not set(names).isdisjoint(among):
-                counts |= zip(names, row(sql), strict=True)
-        return replace(self, **counts)
+        asked = {n: sql for n, sql in COUNTS_SQL.items() if not set(n).isdisjoint(among)}
+        # One statement for all counts: each statement costs more than what it counts.
+        found = row("select * from " + ", ".join(f"({sql})" for sql in asked.values()))
+        return replace(self, **dict(zip((name for n in asked for name in n), found, strict=True)))
 
 
 def manifest_path(store: Path) -> Path:
@@ -94,8 +93,10 @@ def read_manifest(store: Path) -> Manifest | None:
         ) from error
 
 
-def write_manifest(store: Path, manifest: Manifest) -> None:
+def write_manifest(store: Path, manifest: Manifest, *, durable: bool = True) -> None:
     """Replace the manifest of a store in one step; a reader sees the old one or the new one.
+
+    Not ``durable``, it is not forced to the disk: a loss of power may leave the old one, which is harmless.
 
     Raises
     ------
@@ -107,8 +108,9 @@ def write_manifest(store: Path, manifest: Manifest) -> None:
     try:
         with part.open("w", encoding="utf-8") as stream:
             json.dump(asdict(manifest), stream, indent=1)
-            stream.flush()
-            os.fsync(stream.fileno())
+            if durable:
+                stream.flush()
+                os.fsync(stream.fileno())
         part.replace(path)
     except OSError as error:
         raise RhovaneError(

@@ -95,11 +95,57 @@ create table delivery (
 );
 """
 
+_SITE_LOG = """
+alter table site_log add column readings varchar;
+alter table site_log add column acts_from date;
+alter table site_log add column withdrawn_at timestamp;
+alter table site_log add column withdrawn_from date;
+"""
+
+_SETTINGS = """
+create table settings_used (hash varchar, text varchar);
+"""
+
+# Of confirmations before this step only the last is known: its stage and result time stand for the earlier ones.
+_CONFIRMATIONS = """
+create table reading_confirmation (
+    series_id integer, ts timestamp, value double, flag tinyint, stage tinyint, result_time timestamp,
+    line bigint, ingest_id integer, confirmed_by integer, replaced_by integer
+);
+insert into reading_confirmation
+    select series_id, ts, value, flag, stage, result_time, line, ingest_id, ingest_id, confirmed_by
+    from (select * from reading union all by name select * exclude superseded_by from reading_history)
+    where confirmed_by > ingest_id;
+"""
+
+_SEGMENTS = """
+create table segment (
+    series_id integer, first_day date, what varchar, recorded_at timestamp, withdrawn_at timestamp
+);
+"""
+
+_NOTES = """
+create table data_note (
+    id integer, version integer, subject varchar, kind varchar, begins timestamp, ends timestamp, state varchar,
+    facts json, night_id integer
+);
+"""
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
     Migration(3, "alert log, site log and delivery", _ALERTS),
+    Migration(4, "site log: what becomes of the readings, and since when", _SITE_LOG),
+    Migration(5, "settings that nights ran with", _SETTINGS),
+    Migration(6, "readings before their confirmation", _CONFIRMATIONS),
+    Migration(7, "segments of series", _SEGMENTS),
+    Migration(8, "data notes", _NOTES),
 )
+
+
+def latest_known() -> int:
+    """Number of the last step that this program knows."""
+    return MIGRATIONS[-1].number
 
 
 def applied_migrations(connection: duckdb.DuckDBPyConnection) -> list[int]:
@@ -117,8 +163,9 @@ def migrate(
     *,
     read_only: bool,
     steps: tuple[Migration, ...] = MIGRATIONS,
+    upto: int | None = None,
 ) -> None:
-    """Bring the tables up to date, each missing step in its own transaction.
+    """Bring the tables up to date (or to the step ``upto``), each missing step in its own transaction.
 
     Raises
     ------
@@ -135,7 +182,7 @@ def migrate(
             f"knows steps up to {latest}). Nothing was changed. Install the newer version, or restore a backup "
             "made with this one."
         )
-    missing = [step for step in steps if step.number not in had]
+    missing = [step for step in steps if step.number not in had and (upto is None or step.number <= upto)]
     if missing and read_only:
         raise RhovaneError(
             f"{where} has tables of step {had[-1] if had else 0}, but this version needs step {latest}. "

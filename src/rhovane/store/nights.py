@@ -14,6 +14,7 @@ from rhovane.store.jsontext import json_text
 from rhovane.store.session import Session
 
 NightOutcome = Literal["complete", "incomplete", "failed"]
+_SETTINGS = "select hash, text from settings_used"
 _OUTCOMES = ("complete", "incomplete", "failed")
 _COLUMNS = (
     "id, kind, as_of, started, finished, outcome, steps, counts, settings_hash, program_version, data_version"
@@ -117,9 +118,29 @@ class NightLedger(Session):
             if checkpoint:
                 self.checkpoint_after_commit()
 
-    def nights(self, limit: int = 30) -> list[NightRecord]:
-        """The latest nights, newest first."""
-        return [_record(row) for row in self.rows(f"{_SELECT} order by id desc limit ?", [int(limit)])]
+    def keep_settings(self, settings_hash: str, text: str) -> None:
+        """Keep the text of settings under their hash, once."""
+        if settings_hash in self.remembered(_SETTINGS):
+            return
+        with self.transaction():
+            self.execute("insert into settings_used values (?, ?)", [settings_hash, text])
+        self.remembered(_SETTINGS)[settings_hash] = text
+
+    def settings_text(self, settings_hash: str) -> str:
+        """The text of the settings with this hash.
+
+        Raises
+        ------
+        NotFound
+            They were not kept: the night was run by a version of the program that did not.
+        """
+        found: str | None = self.remembered(_SETTINGS).get(settings_hash)
+        if found is None:
+            raise NotFound(
+                f"The store holds no settings {settings_hash}: the night was run by a version of the program that "
+                "did not keep them yet."
+            )
+        return found
 
     def night(self, night_id: int) -> NightRecord:
         """One night of the ledger.
@@ -133,6 +154,10 @@ class NightLedger(Session):
         if not found:
             raise NotFound(f"There is no night {night_id} in the ledger.")
         return _record(found[0])
+
+    def nights(self, limit: int = 30) -> list[NightRecord]:
+        """The latest nights, newest first."""
+        return [_record(row) for row in self.rows(f"{_SELECT} order by id desc limit ?", [int(limit)])]
 
     def nights_of(self, as_of: date) -> list[NightRecord]:
         """The nights that covered days up to a day, newest first."""
@@ -167,6 +192,24 @@ class NightLedger(Session):
             known = self._remembered[_LAST_FINISHED] = {0: _record(found[0]) if found else None}
         last: NightRecord | None = known[0]
         return last
+
+    def night_of(self, as_of: date) -> NightRecord:
+        """The latest night that finished for a day.
+
+        Raises
+        ------
+        NotFound
+            None has.
+        """
+        finished = "outcome in ('complete', 'incomplete')"
+        found = self.rows(f"{_SELECT} where as_of = ? and {finished} order by id desc limit 1", [as_of])
+        if not found:
+            first, last = self.rows(f"select min(as_of), max(as_of) from night where {finished}")[0]
+            known = (
+                f"the ledger's nights reach from {first} to {last}" if first else "the ledger holds none yet"
+            )
+            raise NotFound(f"No night of {as_of} has finished; {known}. Name one that has.")
+        return _record(found[0])
 
 
 def _record(row: tuple[Any, ...]) -> NightRecord:

@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import os
-import re
 import time
 from pathlib import Path
 
 import duckdb
 
 from rhovane.model import NotFound, RhovaneError, StoreDamaged, StoreLocked
+from rhovane.store.holder import holder_of
 from rhovane.store.manifest import manifest_path, read_manifest
 from rhovane.store.migrations import migrate
 from rhovane.store.session import failure
@@ -17,7 +16,6 @@ from rhovane.store.store import Store
 
 RETRY_S = 0.02  # seconds between two attempts; other commands hold the file for about 0.1 s (measured)
 CHECKPOINT_THRESHOLD = "16MB"  # size of the write-ahead log at which DuckDB folds it into the file by itself
-_HOLDER = re.compile(r"held in (?P<program>.*?) \(PID (?P<pid>\d+)\)")
 
 
 def open_store(
@@ -79,8 +77,8 @@ def _require_file(path: Path, *, read_only: bool) -> None:
     expected = read_manifest(path)
     if expected is not None and expected.ingest_rows:
         raise StoreDamaged(
-            f"{path} is missing, but {manifest_path(path)} says that it held {expected.ingest_rows} ingests. Restore "
-            "the store from a backup, or delete the manifest to begin with an empty store."
+            f"{path} is missing, but {manifest_path(path)} says that it held {expected.ingest_rows} ingests. Put "
+            "a backup in its place (`rhovane restore`), or delete the manifest to begin with an empty store."
         )
     if read_only:
         raise NotFound(
@@ -102,26 +100,15 @@ def _connect(
         try:
             return duckdb.connect(str(path), read_only=read_only, config=config)
         except (duckdb.IOException, duckdb.ConnectionException) as error:
-            holder = _holder(str(error))
+            holder = holder_of(str(error))
             if holder is None:
                 raise failure(error, path) from error
             if time.monotonic() >= until:
                 raise StoreLocked(
-                    f"{path} is in use by {holder}; waited {lock_wait_s:g} s. Wait for it to end and run again, or "
-                    "raise store.lock_wait_s. Nothing was changed."
+                    f"{path} is in use by {holder}; waited {lock_wait_s:g} s. Nothing was changed. Wait for it to "
+                    "end and run again, or raise store.lock_wait_s. A process that hangs may be ended (`kill` with its "
+                    "number): the store keeps all that was committed."
                 ) from error
         except duckdb.Error as error:
             raise failure(error, path) from error
         time.sleep(RETRY_S)
-
-
-def _holder(message: str) -> str | None:
-    """Who holds the file, from DuckDB's message; None when the message is about something else."""
-    found = _HOLDER.search(message)
-    if found:
-        return f"process {found['pid']} ({found['program']})"
-    if "Could not set lock" in message:
-        return "another process"
-    if "different configuration" in message:
-        return f"this process ({os.getpid()}), which has opened it in another way"
-    return None

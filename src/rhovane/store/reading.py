@@ -18,9 +18,9 @@ from rhovane.store.session import Session, plain_array
 
 # A history row was current from its own ingest until before the one that superseded it.
 AS_OF_READINGS = """
-    select series_id, ts, value, flag, stage, result_time, ingest_id from reading where ingest_id <= $upto
+    select series_id, ts, value, flag, stage, result_time, line, ingest_id, confirmed_by from reading where ingest_id <= $upto
     union all
-    select series_id, ts, value, flag, stage, result_time, ingest_id from reading_history
+    select series_id, ts, value, flag, stage, result_time, line, ingest_id, confirmed_by from reading_history
     where ingest_id <= $upto and superseded_by > $upto
 """
 
@@ -45,6 +45,24 @@ class Readings:
 
     def __len__(self) -> int:
         return len(self.ts)
+
+
+@dataclass(frozen=True)
+class Origin:
+    """Readings of one series that one file gave: how many, on which lines, for which hours (UTC).
+
+    Lines are None where they are not known any more, because a later file gave all these readings again.
+    """
+
+    series: str
+    source: str
+    path: str
+    sha256: str
+    first_line: int | None
+    last_line: int | None
+    n_readings: int
+    first_hour: datetime
+    last_hour: datetime
 
 
 class ReadingReader(Session):
@@ -92,6 +110,35 @@ class ReadingReader(Session):
             found["value"].astype(float),
             found["flag"],
         )
+
+    def origins(
+        self, keys: Sequence[str], start: datetime, end: datetime, *, max_ingest_id: int
+    ) -> list[Origin]:
+        """Where the readings with ``start <= t < end`` came from, as they were after an ingest.
+
+        In order of series, then of the first hour that a file gave. A reading that several files gave alike counts for
+        the one that decides its precedence; where a file after ``max_ingest_id`` took that over, its line is lost.
+        """
+        found = self.rows(
+            f"""
+            select s.key, i.source, i.path, i.sha256, min(r.line), max(r.line), count(*), min(r.ts), max(r.ts)
+            from (
+                select series_id, ts,
+                    case when coalesce(confirmed_by, ingest_id) <= $upto then line end as line,
+                    case when confirmed_by <= $upto then confirmed_by else ingest_id end as given_by
+                from ({AS_OF_READINGS})
+            ) r join series s on s.id = r.series_id join ingest i on i.id = r.given_by
+            where s.key in (select unnest($keys)) and r.ts >= $start and r.ts < $end
+            group by s.key, i.source, i.path, i.sha256, i.id order by s.key, min(r.ts), i.id
+            """,
+            {
+                "upto": int(max_ingest_id),
+                "keys": list(keys),
+                "start": naive_utc(start),
+                "end": naive_utc(end),
+            },
+        )
+        return [Origin(*row[:7], aware_utc(row[7]), aware_utc(row[8])) for row in found]
 
     def changed_since(self, ingest_id: int) -> dict[str, datetime]:
         """For each series the first hour whose value or flag later ingests brought or revised.

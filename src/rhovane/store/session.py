@@ -22,6 +22,7 @@ from rhovane.store.manifest import Manifest, losses, read_manifest, write_manife
 Parameters = Sequence[Any] | Mapping[str, Any]
 Columns = Mapping[str, np.ndarray]
 
+_DISK_FULL = ("No space left", "File too large", "Disk quota exceeded")  # of errno ENOSPC, EFBIG, EDQUOT
 _DAMAGE_WORDS = ("corrupt", "checksum", "could not read enough bytes", "not a valid duckdb")
 
 
@@ -29,10 +30,15 @@ def failure(error: duckdb.Error, where: Path) -> RhovaneError:
     """What a DuckDB error means for the person, with the remedy."""
     text = str(error)
     damaged = (duckdb.FatalException, duckdb.InternalException, duckdb.SerializationException)
+    if any(words in text for words in _DISK_FULL):
+        return RhovaneError(
+            f"{where}: the disk is full or a file may not grow: {text}\nNothing of this step was kept; what was "
+            "committed before is. Free space beside the store, and run again."
+        )
     if isinstance(error, damaged) or any(word in text.lower() for word in _DAMAGE_WORDS):
         return StoreDamaged(
-            f"{where} is damaged: {text}\nKeep a copy of the file, restore the latest backup in its place and "
-            "ingest the feed again: what is known already is recognised."
+            f"{where} is damaged: {text}\nKeep a copy of the file, restore the latest backup in its place "
+            "(`rhovane restore`) and ingest the feed again: what is known already is recognised."
         )
     if isinstance(error, duckdb.OutOfMemoryException):
         return RhovaneError(
@@ -127,6 +133,17 @@ class Session:
             self._remembered[sql] = dict(self.rows(sql))
         return self._remembered[sql]
 
+    def tables_of(self, database: str | None = None) -> list[str]:
+        """Names of all tables, in order; of the store itself, or of a file attached to it."""
+        found = self.rows(
+            """
+            select table_name from duckdb_tables() where database_name = coalesce(?, current_database())
+            order by table_name
+            """,
+            [database],
+        )
+        return [name for (name,) in found]
+
     # -- transactions ---------------------------------------------------------------------------
 
     @contextlib.contextmanager
@@ -163,17 +180,21 @@ class Session:
             self.execute("commit")
         except BaseException:
             # After a fatal error there is nothing left to roll back; the first error is the one to show.
-            self._remembered.clear()
-            self._counted = None
+            self._forget()
             with contextlib.suppress(duckdb.Error):
                 self._connection.execute("rollback")
             raise
         finally:
             self._depth = 0
         if self._written:
-            write_manifest(self.path, self._read_back())
+            write_manifest(self.path, self._read_back(), durable=self._checkpoint_due)
         if self._checkpoint_due:
             self._checkpoint()
+
+    def _forget(self) -> None:
+        """Forget what was remembered of the tables: a rollback may have taken it back."""
+        self._remembered.clear()
+        self._counted = None
 
     @contextlib.contextmanager
     def _inner(self) -> Iterator[None]:
@@ -244,7 +265,7 @@ class Session:
                 f"{self.path} has lost committed data:\n  "
                 + "\n  ".join(lost)
                 + "\nKeep a copy of the file, "
-                "restore the latest backup together with its manifest, and ingest the feed again: what is known "
+                "restore the latest backup (`rhovane restore`), and ingest the feed again: what is known "
                 "already is recognised."
             )
         if held != expected and not self.read_only:

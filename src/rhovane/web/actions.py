@@ -48,7 +48,7 @@ def actions(site: Site) -> dict[str, Callable[[Request], Response]]:
 
     def log_entry(request: Request) -> Response:
         form: dict[str, str] = request.state.form
-        cells = {name: form.get(name, "") for name in ("subject", "from", "to", "what")}
+        cells = {name: form.get(name, "").strip() for name in ("subject", "from", "to", "what", "readings")}
         try:
             _limited(cells["what"])
             with site.open(read_only=False) as store:
@@ -88,19 +88,18 @@ def decision(form: dict[str, str]) -> tuple[EventKind, dict[str, Any]]:
         case "acknowledge":
             return EventKind.ACKNOWLEDGED, {}
         case "shelve":
-            until = form.get("until", "").strip()
-            try:
-                return EventKind.SHELVED, {"until": dt.date.fromisoformat(until).isoformat()}
-            except ValueError:
-                raise RhovaneError(
-                    f"Shelving needs an end: {until!r} is not a day; choose one, as 2025-04-30. Nothing was written."
-                ) from None
+            return EventKind.SHELVED, {"until": _a_day(form.get("until", ""), "Shelving needs an end:")}
         case "outcome":
             found = form.get("outcome", "")
             known = [o.value for o in Outcome]
             if found not in known:
                 raise RhovaneError(f"Choose an outcome: {', '.join(known)}. Nothing was written.")
-            return EventKind.OUTCOME, {"outcome": found}
+            payload: dict[str, Any] = {"outcome": found}
+            if form.get("fault_until", "").strip():
+                payload["until"] = _a_day(form["fault_until"], "The last day at fault")
+            if form.get("new_baseline") == "yes":
+                payload["new_baseline"] = True
+            return EventKind.OUTCOME, payload
         case "note":
             if not note:
                 raise RhovaneError("The note is empty: write what you saw. Nothing was written.")
@@ -109,6 +108,15 @@ def decision(form: dict[str, str]) -> tuple[EventKind, dict[str, Any]]:
             raise RhovaneError(
                 f"{other!r} is no decision: choose acknowledge, shelve, outcome or note. Nothing was written."
             )
+
+
+def _a_day(text: str, what: str) -> str:
+    try:
+        return dt.date.fromisoformat(text.strip()).isoformat()
+    except ValueError:
+        raise RhovaneError(
+            f"{what} {text.strip()!r} is not a day; choose one, as 2025-04-30. Nothing was written."
+        ) from None
 
 
 def _limited(text: str) -> None:

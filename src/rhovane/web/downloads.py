@@ -20,8 +20,8 @@ from rhovane.web.pages import day_of_text
 from rhovane.web.site import Site
 
 TABLES = {
-    "readings": ("csv", "parquet"),
-    "windows": ("csv", "parquet"),
+    "readings": ("csv", "parquet", "json"),
+    "windows": ("csv", "parquet", "json"),
     "alerts": ("csv", "parquet", "json"),
 }
 

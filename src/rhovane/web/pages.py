@@ -9,7 +9,7 @@ from typing import Any
 from starlette.requests import Request
 from starlette.responses import RedirectResponse, Response
 
-from rhovane.model import NotFound, Outcome, RhovaneError
+from rhovane.model import NotFound, Outcome, ReadingsUse, RhovaneError
 from rhovane.pipeline.looking import alert_sheet, pair_sheet
 from rhovane.report import alert_sections, pair_sections, series_sections
 from rhovane.review import (
@@ -157,6 +157,7 @@ def site_log_context(site: Site, store: Store) -> dict[str, Any]:
     return {
         "log": list(reversed(store.site_log())),
         "subjects": ["*", *sorted({key.partition(".")[0] for key in series}), *series],
+        "uses": [use.value for use in ReadingsUse],
         "refused": "",
         "given": {},
     }

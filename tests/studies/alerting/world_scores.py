@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -12,6 +13,7 @@ from rhovane.prepare.grid import Grid
 from rhovane.settings import Settings, load_settings
 from rhovane.stats.daily_scores import DailyScores, pair_scores
 from rhovane.stats.hourly_scores import series_scores
+from rhovane_demo.clocks import FIRST_DAY, LAST_DAY
 from rhovane_demo.world import make_world
 
 CONFIG = Path(__file__).parents[3] / "config" / "monitor.toml"
@@ -41,12 +43,11 @@ def score_world(seed: int, events: bool, settings: Settings | None = None) -> Wo
     values = np.where(good, world.values, np.nan)[begin:]
     grid = Grid(int(second[begin]), world.keys, values)
     n_days = grid.n_hours // 24
+    other_days = settings.other_days(FIRST_DAY, LAST_DAY + dt.timedelta(days=1))
     shared = {key: series_scores(grid.column(key)) for key in world.keys}
     keys, members, choice, scores = [], [], [], []
     for pair in settings.pair:
-        mask = kept_hours(
-            pair, grid, civil_zone=settings.network.civil_zone, other_days=settings.calendar.dates
-        )
+        mask = kept_hours(pair, grid, civil_zone=settings.network.civil_zone, other_days=other_days)
         keys.append(pair.key)
         members.append((pair.first, pair.second))
         choice.append(pair.score)
