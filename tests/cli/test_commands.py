@@ -266,7 +266,7 @@ def test_help_loads_no_heavy_library():
         "import sys; from rhovane.cli import main\n"
         "try: main(['--help'])\n"
         "except SystemExit: pass\n"
-        "print([m for m in ('numpy', 'pandas', 'scipy', 'numba', 'duckdb', 'pydantic') if m in sys.modules])"
+        "print([m for m in ('numpy', 'pandas', 'scipy', 'numba', 'duckdb', 'pydantic', 'apscheduler') if m in sys.modules])"
     )
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
     assert done.stdout.splitlines()[-1] == "[]"

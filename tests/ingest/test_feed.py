@@ -1,3 +1,4 @@
+import datetime as dt
 import os
 from pathlib import Path
 
@@ -122,3 +123,14 @@ def test_the_same_bytes_parse_to_the_same_readings(parse):
     assert first.sha256 == second.sha256
     assert first.rejected == second.rejected
     np.testing.assert_array_equal(first.value, second.value)
+
+
+def test_the_time_of_change_is_the_same_listed_and_read_to_the_microsecond(tmp_path):
+    path = tmp_path / "feed" / "a.csv"
+    touch(tmp_path, "feed/a.csv")
+    for ns in np.random.default_rng(6).integers(1_500_000_000 * 10**9, 1_900_000_000 * 10**9, 50).tolist():
+        os.utime(path, ns=(ns, ns))
+        read = parse_file(path, long_source(), NETWORK, read_parquet=read_parquet).modified
+        (listed,) = list_files(long_source(), tmp_path)
+        since_1970 = read - dt.datetime(1970, 1, 1, tzinfo=dt.UTC)
+        assert since_1970 // dt.timedelta(microseconds=1) * 1000 == listed.modified_ns, f"mtime {ns} ns"

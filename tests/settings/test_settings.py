@@ -7,9 +7,10 @@ import datetime as dt
 import re
 import tomllib
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import pytest
+from pydantic import BaseModel
 
 import rhovane_demo
 from rhovane.model import ExitCode, Flag, SettingsError
@@ -179,18 +180,14 @@ def test_offsets_are_read_with_their_sign(text: str, minutes: int):
     assert parse_offset(text) == dt.timedelta(minutes=minutes)
 
 
-def described_keys(model: type[Any], prefix: str = "") -> set[str]:
+def described_keys(model: type[BaseModel], prefix: str = "") -> set[str]:
     keys = set()
     for name, field in model.model_fields.items():
         if name == "origin":
             continue
-        inner = re.findall(r"(?:schema|data_quality)\.(\w+)", str(field.annotation))
-        import rhovane.settings.schema as schema
-
-        if inner and hasattr(getattr(schema, inner[0]), "model_fields"):
-            keys |= described_keys(getattr(schema, inner[0]), f"{prefix}{name}.")
-        else:
-            keys.add(f"{prefix}{name}")
+        candidates = (field.annotation, *get_args(field.annotation))
+        inner = [c for c in candidates if isinstance(c, type) and issubclass(c, BaseModel)]
+        keys |= described_keys(inner[0], f"{prefix}{name}.") if inner else {f"{prefix}{name}"}
     return keys
 
 

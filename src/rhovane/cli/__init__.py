@@ -8,7 +8,8 @@ from rhovane.cli import (
     page,
     run,
     site,
+    unattended,
 )  # the commands put themselves into the group
 from rhovane.cli.entry import main
 
-__all__ = ["decide", "feed", "keep", "look", "main", "page", "run", "site"]
+__all__ = ["decide", "feed", "keep", "look", "main", "page", "run", "site", "unattended"]

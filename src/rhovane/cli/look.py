@@ -136,7 +136,8 @@ def _reproduce(settings: Settings, store: Store, entry: AlertEntry, as_json: boo
 def status(settings: Settings, store: Store, as_json: bool, as_of: dt.datetime | None) -> None:
     """Say whether the night ran, what arrived, and what is silent for lack of data.
 
-    Ends with 4 when no night has run, nights were missed, or the last one was incomplete.
+    Ends with 4 when no night has run, nights were missed, or the last one was incomplete; with 7 when the watch
+    itself needs looking after: service, clock, disk, deliveries.
     """
     from rhovane.review import network_status
 

@@ -8,8 +8,8 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from rhovane.cli.entry import Ending, main, store_of, utc_now, with_settings, writes_store
-from rhovane.cli.wording import night_lines
+from rhovane.cli.entry import Ending, main, settings_at, store_of, utc_now, with_settings, writes_store
+from rhovane.cli.wording import night_lines, sent_lines
 from rhovane.model import ExitCode
 
 if TYPE_CHECKING:
@@ -20,26 +20,46 @@ DATE = click.DateTime(formats=["%Y-%m-%d"])
 
 
 @main.command()
-@writes_store
+@with_settings
 @click.option(
     "--as-of",
     type=DATE,
     default=None,
     help="Last day the night covers, YYYY-MM-DD in standard time; default: yesterday.",
 )
-def nightly(settings: Settings, store: Store, as_of: dt.datetime | None) -> None:
-    """Run the night once: ingest, windows, evidence, alerts.
+@click.option(
+    "--send/--no-send", default=True, help="Send what is to be told afterwards, or leave it waiting."
+)
+@click.option(
+    "--catch-up",
+    is_flag=True,
+    help="Run every night that is due, in order, then check and copy the store: what the service does, once.",
+)
+def nightly(config: Path, as_of: dt.datetime | None, send: bool, catch_up: bool) -> None:
+    """Run the night once: ingest, windows, evidence, alerts, delivery.
 
     Ends with 3 when nothing new had arrived, and with 4 when part of the night failed.
     """
-    from rhovane.pipeline import run_night
+    from rhovane.pipeline import run_night, send_waiting
     from rhovane.prepare import days_of
 
+    settings = settings_at(config)
+    if catch_up:
+        if as_of or not send:
+            raise click.UsageError(
+                "--catch-up takes neither --as-of nor --no-send: the ledger says what is due."
+            )
+        from rhovane.cli.unattended import catch_up_once
+
+        raise Ending(catch_up_once(settings))
     now = utc_now()
-    days = days_of(settings.network.standard_offset)
-    day = as_of.date() if as_of else days.last_complete(now)
-    report = run_night(settings, store, as_of=day, now=now)
+    day = as_of.date() if as_of else days_of(settings.network.standard_offset).last_complete(now)
+    with store_of(settings, read_only=False) as store:
+        report = run_night(settings, store, as_of=day, now=now)
     click.echo("\n".join(night_lines(report)))
+    if send and settings.delivery.channels:
+        sent = send_waiting(settings, lambda: store_of(settings, read_only=False), utc_now)
+        click.echo("\n".join(sent_lines(sent)))
     raise Ending(report.exit_code)
 
 

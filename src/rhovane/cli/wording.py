@@ -11,7 +11,7 @@ from rhovane.model import CAUTION
 
 if TYPE_CHECKING:
     from rhovane.model import DataNote
-    from rhovane.pipeline import NightReport
+    from rhovane.pipeline import NightReport, Sent
     from rhovane.review import LogCounts, Status
     from rhovane.store import Check, StoredSiteLogEntry
 
@@ -35,7 +35,19 @@ def night_lines(report: NightReport) -> list[str]:
             subsequent_indent="    ",
         )
     if report.troubles:
-        lines.append("  The rest went on. `rhovane nightly` takes the failed parts up again.")
+        lines.append(
+            f"  Next: rhovane {report.counts['next']}"
+            if "next" in report.counts
+            else "  The rest went on. `rhovane nightly` takes the failed parts up again."
+        )
+    return lines
+
+
+def sent_lines(sent: Sent) -> list[str]:
+    """What was sent, and what still waits for which reason."""
+    lines = [f"Messages: {sent.delivered} delivered, {sent.waiting} waiting"]
+    lines += [f"  {channel} failed: {reason}" for channel, reason in sent.failed.items()]
+    lines += [f"  {remark}" for remark in sent.remarks]
     return lines
 
 
@@ -125,11 +137,30 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
                     initial_indent="  ",
                     subsequent_indent="    ",
                 )
-    if status.nights_missed > 1:
+        if "next" in last["counts"]:
+            lines.append(f"  Next: rhovane {last['counts']['next']}")
+        lines += [
+            f"  failing for {nights} nights running: {part}"
+            for part, nights in last["counts"].get("failing", {}).items()
+            if nights > 1
+        ]
+    if status.nights_missed:
+        nights = "1 NIGHT" if status.nights_missed == 1 else f"{status.nights_missed} NIGHTS"
         lines.append(
-            f"{status.nights_missed} NIGHTS MISSED since then: silence since {last and last['as_of']} "
-            "means no data, not no change."
+            f"{nights} MISSED since then: silence since {last and last['as_of']} means no data, not no change."
         )
+    for concern in status.concerns:
+        lines += textwrap.wrap(
+            f"{concern.kind.upper()}: {concern.found}. {concern.remedy}", WIDTH, subsequent_indent="  "
+        )
+    if status.service is not None:
+        doing = status.service["doing"] or "waits"
+        what = (
+            f"{doing}, next night {status.service['next_night'][:16]} UTC"
+            if status.service["alive"]
+            else "not running"
+        )
+        lines.append(f"Service: {what} (last sign of life {status.service['beat'][:16]} UTC)")
     count = sum(status.alerts_by_state.values())
     lines.append(f"Alerts: {count} in the log, {status.unreviewed} not yet reviewed")
     lines += [f"  {n:>4}  {state}" for state, n in sorted(status.alerts_by_state.items())]
@@ -154,5 +185,8 @@ def status_lines(status: Status, now: dt.datetime) -> list[str]:
         )
         lines += [f"  {g['series']} from {g['first_day']}: {g['what']}" for g in status.segments]
     lines.append(f"Data notes that last: {status.notes_open} (rhovane notes)")
+    if status.falling_coverage:
+        lines.append("Pairs with fewer and fewer readings (coverage a week before → in the newest window):")
+        lines += [f"  {f['pair']}: {f['before']:.0%} → {f['now']:.0%}" for f in status.falling_coverage]
     lines.append(f"Rejected rows in quarantine: {status.rejected_rows}")
     return lines

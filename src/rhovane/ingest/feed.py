@@ -5,7 +5,7 @@ from __future__ import annotations
 import hashlib
 import os
 from collections.abc import Callable, Mapping, Sequence
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
 
@@ -79,7 +79,8 @@ def parse_file(
     except OSError as error:
         reason = f"The file cannot be read ({error.strerror}). Correct its permissions or the disk, then run again."
         return _unreadable(source, shown, "", 0, NEVER, reason)
-    modified = datetime.fromtimestamp(status.st_mtime, UTC)
+    # From whole numbers: as a float the time of change is off by a microsecond now and then, and the file looks changed.
+    modified = NEVER + timedelta(microseconds=status.st_mtime_ns // 1000)
     digest = hashlib.sha256(data).hexdigest()
     try:
         if source.form.endswith("csv"):

@@ -13,6 +13,7 @@ from rhovane.model.errors import (
     StoreLocked,
 )
 from rhovane.model.estimates import CorrelationEstimate
+from rhovane.model.messages import Message, MessageKind
 from rhovane.model.notes import MOMENT_KINDS, STEP_KINDS, DataNote, NoteKind, NoteState
 from rhovane.model.plain import plain_of
 from rhovane.model.readings import Flag, IngestOutcome, ParsedFile, RejectedRow, Stage
@@ -39,6 +40,8 @@ __all__ = [
     "Flag",
     "Hint",
     "IngestOutcome",
+    "Message",
+    "MessageKind",
     "NotFound",
     "NoteKind",
     "NoteState",

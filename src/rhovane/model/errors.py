@@ -23,6 +23,7 @@ class ExitCode(IntEnum):
     NIGHT_INCOMPLETE = 4
     STORE_LOCKED = 5
     STORE_DAMAGED = 6
+    NEEDS_ATTENTION = 7
 
 
 class RhovaneError(Exception):

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import datetime as dt
+import math
+import time
 from collections.abc import Callable, Sequence
 from concurrent.futures import Future
 from dataclasses import dataclass, field
@@ -28,6 +30,20 @@ DAY = dt.timedelta(days=1)
 LATEST_STEP_DAYS = 40  # a step in level is noted, or dated anew, at most this many days after it
 
 
+# What may go wrong with one source, series or pair without stopping the rest.
+PART_ERRORS = (ValueError, ArithmeticError, LookupError)
+OUT_OF_TIME = "not reached within night.step_limit_minutes; the next night goes on with it"
+
+
+def reason_of(error: Exception) -> str:
+    """What went wrong with a part, in words: a refusal speaks for itself, another error is named."""
+    return str(error) if type(error) is ValueError else f"{type(error).__name__}: {error}"
+
+
+class NightStopped(Exception):
+    """The night was asked to stop, and did between two parts of a step; nothing of its results is kept."""
+
+
 @dataclass(frozen=True)
 class WatchedPair:
     """A pair with its recipe and the first days whose evidence and windows are not up to date (None: all are)."""
@@ -49,18 +65,20 @@ class Trouble:
 
 @dataclass(frozen=True)
 class StepOutcome:
-    """What one step of a night did."""
+    """What one step of a night did; ``peak_mb`` is the most memory the process had held by its end."""
 
     name: str
     seconds: float
     summary: str
     troubles: tuple[Trouble, ...] = ()
+    peak_mb: int = 0
 
     def as_json(self) -> dict[str, Any]:
         """For the night ledger."""
         return {
             "step": self.name,
             "seconds": round(self.seconds, 4),
+            "peak_mb": self.peak_mb,
             "summary": self.summary,
             "failed": [{"part": t.part, "reason": t.reason} for t in self.troubles],
         }
@@ -80,6 +98,7 @@ class Night:
     taken out of the statistics; None: those that calendar and site log take out now.
     ``changed`` is the first new or revised hour of each series, ``notes_from`` the first day whose data notes are not up
     to date, ``cuts`` where windows of a series are split (seconds since 1970), ``windows`` the correlations of this night.
+    ``stop`` says whether the night is to stop, ``step_ends`` when the step at work runs out of time (``perf_counter``).
     """
 
     settings: Settings
@@ -96,6 +115,8 @@ class Night:
     arrived: Sequence[Path] | None = None
     data_version: int | None = None
     unused: Unused | None = None
+    stop: Callable[[], bool] = lambda: False
+    step_ends: float = math.inf
     troubles: list[Trouble] = field(default_factory=list)
     ingested: list[IngestOutcome] = field(default_factory=list)
     rejections: list[str] = field(default_factory=list)
@@ -154,6 +175,18 @@ class Night:
         if key not in self._arrays:
             self._arrays[key] = pair_arrays(self.settings, watched.recipe, self.grid())
         return self._arrays[key]
+
+    def may_go_on(self) -> bool:
+        """Whether the step at work has time for another part; asked between parts, where a night may end.
+
+        Raises
+        ------
+        NightStopped
+            The night is to stop.
+        """
+        if self.stop():
+            raise NightStopped
+        return time.perf_counter() < self.step_ends
 
     def failed(self, step: str, part: str, reason: str) -> None:
         """Record that one part of a step failed; the rest goes on."""

@@ -13,7 +13,7 @@ from concurrent.futures import ThreadPoolExecutor
 import numpy as np
 from numpy.typing import NDArray
 
-from rhovane.pipeline.context import Night, WatchedPair
+from rhovane.pipeline.context import OUT_OF_TIME, PART_ERRORS, Night, WatchedPair, reason_of
 from rhovane.stats.compiled import available_threads
 from rhovane.stats.daily_scores import DailyScores, lookback_days, pair_scores
 from rhovane.stats.hourly_scores import SCORED_BEFORE_DAYS, SeriesScores, series_scores
@@ -35,11 +35,7 @@ def begin_hourly_scores(night: Night) -> str:
     first = night.days.day_of(grid.start)
     last = (night.as_of - first).days
     begin = _begin(stale, first)
-    needed = {
-        (key, bool(w.recipe.adjusted_for))
-        for w in stale
-        for key in (w.recipe.first, w.recipe.second, *w.recipe.adjusted_for)
-    }
+    needed = {one for w in stale for one in _series_of(w)}
     order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
     fresh = (min(w.stale_from for w in stale if w.stale_from) - first).days
     workers = ThreadPoolExecutor(max_workers=max(1, available_threads() - 1))
@@ -73,6 +69,26 @@ def _hourly_scores(values: NDArray[np.float64], days: range, known: SeriesScores
     return known.followed_by(series_scores(values, fresh, known=known))
 
 
+def _series_of(watched: WatchedPair) -> list[tuple[str, bool]]:
+    """The series whose hourly scores a pair needs, each with whether the pair has controls."""
+    recipe = watched.recipe
+    return [(key, bool(recipe.adjusted_for)) for key in (recipe.first, recipe.second, *recipe.adjusted_for)]
+
+
+def _collected(
+    night: Night,
+) -> tuple[dict[tuple[str, bool], SeriesScores], dict[tuple[str, bool], str]]:
+    """The hourly scores begun before, and the reason for each series that has none."""
+    shared, spoilt = {}, {}
+    for one, scores in night.hourly.items():
+        night.may_go_on()
+        try:
+            shared[one] = scores.result()
+        except PART_ERRORS as error:
+            spoilt[one] = f"series {one[0]}: {reason_of(error)}"
+    return shared, spoilt
+
+
 def judge_days(night: Night) -> str:
     """Daily scores of every stale pair and day; written as evidence."""
     summary = score_days(night)
@@ -88,7 +104,7 @@ def score_days(night: Night) -> str:
         return "nothing to judge"
     first = night.days.day_of(night.grid().start)
     last = (night.as_of - first).days
-    shared = {one: scores.result() for one, scores in night.hourly.items()}
+    shared, spoilt = _collected(night)
     if night.memory is not None:
         night.memory.remember_scores(first, shared)
         begin = _begin(stale, first)
@@ -98,10 +114,14 @@ def score_days(night: Night) -> str:
     for watched in stale:
         assert watched.stale_from is not None
         days = range((watched.stale_from - first).days, last + 1)
+        bad = [spoilt[one] for one in _series_of(watched) if one in spoilt]
+        if bad or not night.may_go_on():
+            night.pair_failed(STEP, watched, bad[0] if bad else OUT_OF_TIME)
+            continue
         try:
             scores = _pair_days(night, watched, shared, days)
-        except ValueError as error:
-            night.pair_failed(STEP, watched, str(error))
+        except PART_ERRORS as error:
+            night.pair_failed(STEP, watched, reason_of(error))
             continue
         n_days += len(days)
         n_scored += int(np.count_nonzero(scores.innovation_hours + scores.shape_hours))

@@ -7,7 +7,7 @@ from pathlib import Path
 
 from rhovane.ingest import describe_rejections, list_files, parse_file
 from rhovane.model import FeedError, IngestOutcome, ParsedFile, RhovaneError, StoreDamaged
-from rhovane.pipeline.context import Night
+from rhovane.pipeline.context import OUT_OF_TIME, PART_ERRORS, Night, reason_of
 from rhovane.settings import Settings, SourceSettings
 from rhovane.store import Store, read_parquet
 
@@ -19,6 +19,9 @@ def read_feed(night: Night) -> str:
     parsed: list[ParsedFile] = []
     known = night.store.known_files()
     for source, place in _new_files(night, known):
+        if not night.may_go_on():
+            night.failed(STEP, "the rest of the feed", OUT_OF_TIME)
+            break
         one = parse_or_note(night, night.settings.work_folder / place, source, place)
         if one is not None:
             parsed.append(one)
@@ -36,7 +39,7 @@ def _new_files(night: Night, known: dict[str, tuple[int, int]]) -> Iterator[tupl
     for source in night.settings.source:
         try:
             listed = list_files(source, night.settings.work_folder)
-        except FeedError as error:
+        except (FeedError, OSError) as error:
             night.failed(STEP, f"source {source.name}", str(error))
             continue
         for file in listed:
@@ -73,6 +76,9 @@ def parse_or_note(night: Night, path: Path, source: SourceSettings, shown: str) 
         one = parse_feed_file(path, source, night.settings, shown, night.store)
     except FeedError as error:
         night.failed(STEP, shown, str(error))
+        return None
+    except PART_ERRORS as error:
+        night.failed(STEP, shown, reason_of(error))
         return None
     if not one.sha256:  # not even its bytes could be read: it is tried again, not remembered
         night.failed(STEP, shown, " ".join(r.reason for r in one.rejected))

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rhovane.pipeline.arrays import PairArrays
-from rhovane.pipeline.context import HOUR_S, Night, WatchedPair
+from rhovane.pipeline.context import HOUR_S, OUT_OF_TIME, PART_ERRORS, Night, WatchedPair, reason_of
 from rhovane.pipeline.noting import split_in
 from rhovane.prepare import Grid
 from rhovane.settings import CorrelationSettings
@@ -30,10 +30,13 @@ def compute_windows(night: Night) -> str:
     parts: list[dict[str, NDArray[Any]]] = []
     n_pairs = n_correlations = waiting = 0
     for watched in stale:
+        if not night.may_go_on():
+            night.pair_failed(STEP, watched, OUT_OF_TIME)
+            continue
         try:
             parts.append(pair_windows(night, watched, grid))
-        except ValueError as error:
-            night.pair_failed(STEP, watched, str(error))
+        except PART_ERRORS as error:
+            night.pair_failed(STEP, watched, reason_of(error))
             continue
         n_pairs += 1
         night.windows.append(_at_lag_0(parts[-1]))

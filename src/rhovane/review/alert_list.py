@@ -88,6 +88,11 @@ def alert_entry(store: Store, alert_id: int, now: dt.datetime) -> AlertEntry:
     raise NotFound(f"alert {alert_id}: no such alert ({known}). List them with `rhovane alerts`.")
 
 
+def unreviewed(store: Store, now: dt.datetime) -> int:
+    """How many alerts nobody has acknowledged yet."""
+    return sum(entry.needs_review for entry in alert_entries(store, now))
+
+
 def record_decision(
     store: Store,
     alert_id: int,

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import datetime as dt
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -13,7 +12,7 @@ from rhovane.model import AlertEvent, DataNote, NotFound
 from rhovane.prepare import days_of
 from rhovane.review.alert_list import AlertEntry, alert_entries, counts_by_state
 from rhovane.review.notes import current_notes
-from rhovane.review.status import STALE_HOURS
+from rhovane.review.silence import silent_pairs, silent_series
 from rhovane.settings import Settings
 from rhovane.store import NightRecord, Store
 
@@ -140,6 +139,7 @@ def morning_of(
     raised = [e for e in entries if chosen is not None and e.alert.night_id == chosen.night_id]
     others = [e for e in entries if e not in raised and (e.standing.changed or e.needs_review)]
     reference = expected if last is None else min(expected, last.as_of)
+    silent = _silence(settings, store, None if last is None else last.as_of, reference)
     after = 0 if previous is None else previous.data_version
     upto = None if chosen is None or chosen.outcome == "running" else chosen.data_version
     return Morning(
@@ -160,8 +160,8 @@ def morning_of(
             for e in entries
             if last and e.standing.ended and e.standing.ended.payload.get("night") == str(last.as_of)
         ),
-        silent_pairs=() if last is None else silent_pairs(settings, store, last.as_of),
-        silent_series=silent_series(settings, store, reference),
+        silent_pairs=silent[0],
+        silent_series=silent[1],
         notes=tuple(current_notes(settings, store)) if newest else (),
         unreviewed=sum(e.needs_review for e in entries),
         by_state=counts_by_state(entries),
@@ -235,32 +235,21 @@ def _by_suspect(entries: Sequence[AlertEntry]) -> tuple[SuspectGroup, ...]:
     return tuple(sorted(newest_first, key=lambda g: not any(e.standing.changed for e in g.entries)))
 
 
-def silent_pairs(settings: Settings, store: Store, as_of: dt.date) -> tuple[Silence, ...]:
-    """Watched pairs without a correlation in the window that ends with a day, and why."""
-    days = days_of(settings.network.standard_offset)
-    end = days.moment(days.end_of(as_of))
-    found = store.read_windows(start=end - dt.timedelta(hours=1), end=end, lag=0)
-    row_of = {key: i for i, key in enumerate(found["pair_key"])}
-    silent = []
-    for pair in settings.pair:
-        i = row_of.get(pair.key)
-        if i is None:
-            silent.append(Silence(pair.key, "not computed"))
-        elif math.isnan(found["statistic"][i]):
-            silent.append(Silence(pair.key, str(found["reason"][i])))
-    return tuple(silent)
-
-
-def silent_series(settings: Settings, store: Store, day: dt.date) -> tuple[Silence, ...]:
-    """Series of which no reading is stored for the last two days up to a day, and since when."""
-    days = days_of(settings.network.standard_offset)
-    last = store.last_hours(days.moment(days.end_of(day)))
-    silent = []
-    for one in settings.series:
-        if one.key not in last:
-            silent.append(Silence(one.key, "no reading has ever arrived"))
-            continue
-        behind = (days.last_hour_of(day) - int(last[one.key].timestamp())) // 3600
-        if behind > STALE_HOURS:
-            silent.append(Silence(one.key, f"no reading for {behind} hours"))
-    return tuple(silent)
+def _silence(
+    settings: Settings, store: Store, last: dt.date | None, reference: dt.date
+) -> tuple[tuple[Silence, ...], tuple[Silence, ...]]:
+    """Pairs without a correlation after the night of ``last``, and series behind by ``reference``."""
+    pairs = [] if last is None else silent_pairs(settings, store, last)
+    series = silent_series(settings, store, reference)
+    return (
+        tuple(Silence(one.pair, one.reason) for one in pairs),
+        tuple(
+            Silence(
+                one.series,
+                "no reading has ever arrived"
+                if one.hours_behind is None
+                else f"no reading for {one.hours_behind} hours",
+            )
+            for one in series
+        ),
+    )

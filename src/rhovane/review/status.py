@@ -3,17 +3,20 @@
 from __future__ import annotations
 
 import datetime as dt
-import math
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 from typing import Any
 
 from rhovane.model import ExitCode
 from rhovane.prepare import days_of, segment_start
 from rhovane.review.alert_list import alert_entries, counts_by_state
+from rhovane.review.silence import falling_coverage, silent_pairs, silent_series
+from rhovane.review.watch_over import Concern, concerns, service_state
 from rhovane.settings import Settings
 from rhovane.store import Store
 
-STALE_HOURS = 48  # hours a series may be behind the night's last day before it is called silent
+NIGHT_MAY_TAKE = dt.timedelta(
+    hours=1
+)  # time after its planned begin until a night that is not there counts as missed
 
 
 @dataclass(frozen=True)
@@ -21,10 +24,10 @@ class Status:
     """The state of the watch at one moment.
 
     ``last_night`` is the newest entry of the night ledger, whatever its outcome ("interrupted": it began
-    and did not end); ``nights_missed`` counts days since the newest night that finished, all of them when
-    none has. ``not_judged`` are the pairs that site log, calendar or an outcome kept from being judged in that
-    night, with the reason. ``segments`` names every series that changed instrument or place, with the segment the newest night
-    is in.
+    and did not end); ``nights_missed`` counts days since the newest date whose night finished. ``concerns`` are
+    what has to be looked after for the watch to go on, ``service`` the service's last sign of life. ``not_judged`` are
+    the pairs that site log, calendar or an outcome kept from being judged in that night, with the reason. ``segments``
+    names every series that changed instrument or place, with the segment the newest night is in.
     """
 
     network: str
@@ -39,6 +42,9 @@ class Status:
     notes_open: int
     rejected_rows: int
     segments: list[dict[str, Any]]
+    falling_coverage: list[dict[str, Any]]
+    concerns: tuple[Concern, ...]
+    service: dict[str, Any] | None
     exit_code: ExitCode
 
     def as_json(self) -> dict[str, Any]:
@@ -56,6 +62,9 @@ class Status:
             "notes_open": self.notes_open,
             "rejected_rows": self.rejected_rows,
             "segments": self.segments,
+            "falling_coverage": self.falling_coverage,
+            "concerns": [c.as_json() for c in self.concerns],
+            "service": self.service,
             "exit_code": int(self.exit_code),
         }
 
@@ -81,42 +90,22 @@ def network_status(
     Parameters
     ----------
     as_of : date, optional
-        Judge missed nights and silent series as of this day; default: the last complete day.
+        Judge missed nights and silent series as of this day; default: the newest day whose night should be over.
     """
     days = days_of(settings.network.standard_offset)
-    last = store.last_finished_night()
-    expected = as_of or days.last_complete(now)
-    missed = 0 if last is None else max(0, (expected - last.as_of).days)
+    done = store.newest_date()
+    expected = as_of or days.last_complete(now - settings.night.after_midnight - NIGHT_MAY_TAKE)
+    missed = 0 if done is None else max(0, (expected - done).days)
     entries = alert_entries(store, now)
-    reference = expected if last is None else min(expected, last.as_of)
-    spans = store.span_of([s.key for s in settings.series])
-    silent_series = []
-    for one in settings.series:
-        seen = spans[one.key][1] if one.key in spans else None
-        behind = None if seen is None else (days.last_hour_of(reference) - int(seen.timestamp())) // 3600
-        if behind is None or behind > STALE_HOURS:
-            silent_series.append(
-                {
-                    "series": one.key,
-                    "last_reading": None if seen is None else seen.isoformat(),
-                    "hours_behind": behind,
-                }
-            )
-    silent_pairs = []
-    if last is not None:
-        end = days.moment(days.end_of(last.as_of))
-        found = store.read_windows(start=end - dt.timedelta(hours=1), end=end, lag=0)
-        row_of = {key: i for i, key in enumerate(found["pair_key"])}
-        for pair in settings.pair:
-            i = row_of.get(pair.key)
-            if i is None:
-                silent_pairs.append({"pair": pair.key, "reason": "not computed"})
-            elif math.isnan(found["statistic"][i]):
-                silent_pairs.append({"pair": pair.key, "reason": found["reason"][i]})
+    reference = expected if done is None else min(expected, done)
     newest = next(iter(store.nights(1)), None)
+    last = store.last_finished_night()
+    found = concerns(settings, store, now)
     code = ExitCode.WELL
-    if newest is None or last is None or missed > 1 or newest.outcome != "complete":
+    if newest is None or done is None or missed or newest.outcome != "complete":
         code = ExitCode.NIGHT_INCOMPLETE
+    elif found:
+        code = ExitCode.NEEDS_ATTENTION
     return Status(
         settings.network.name,
         None
@@ -135,12 +124,15 @@ def network_status(
         missed,
         counts_by_state(entries),
         sum(e.needs_review for e in entries),
-        silent_series,
-        silent_pairs,
+        [asdict(one) for one in silent_series(settings, store, reference)],
+        [asdict(one) for one in silent_pairs(settings, store, done)] if done is not None else [],
         {} if last is None else dict(last.counts.get("not judged", {})),
         len(settings.series),
         sum(n.is_open for n in store.data_notes()),
         store.count_rejected(),
         segments_in_force(settings, reference),
+        [asdict(one) for one in falling_coverage(settings, store, done)] if done is not None else [],
+        tuple(found),
+        service_state(settings, now),
         code,
     )

@@ -15,6 +15,7 @@ from rhovane.settings.schema import (
     parse_offset,
 )
 from rhovane.settings.site_log import load_site_log, site_log_entry
+from rhovane.settings.unattended import DeliverySettings, HttpDelivery, MailDelivery, ServiceSettings
 
 __all__ = [
     "AlertSettings",
@@ -22,9 +23,13 @@ __all__ = [
     "CheckSettings",
     "CorrelationSettings",
     "DataNoteSettings",
+    "DeliverySettings",
+    "HttpDelivery",
+    "MailDelivery",
     "PairSettings",
     "SectorMask",
     "SeriesSettings",
+    "ServiceSettings",
     "Settings",
     "SourceSettings",
     "hash_of",

@@ -18,6 +18,7 @@ from rhovane.model import Flag, Pair, Segment, Series, Stage
 from rhovane.settings.calendar import CalendarEntry
 from rhovane.settings.data_quality import CheckSettings, DataNoteSettings
 from rhovane.settings.section import Section
+from rhovane.settings.unattended import DeliverySettings, NightSettings, ServiceSettings
 
 FIXED_OFFSET = re.compile(r"^[+-](0\d|1[0-4]):[0-5]\d$")
 STEP = {"1min": 1, "5min": 5, "10min": 10, "15min": 15, "30min": 30, "1h": 60}
@@ -320,12 +321,6 @@ class BackupSettings(Section):
     )
 
 
-class NightSettings(Section):
-    """When the night runs."""
-
-    at: str = Field("03:40", pattern=r"^([01]\d|2[0-3]):[0-5]\d$", description="Standard time, HH:MM.")
-
-
 class Settings(Section):
     """All settings, as read from one TOML file; ``origin`` is that file."""
 
@@ -339,6 +334,8 @@ class Settings(Section):
     alerts: AlertSettings = Field(default_factory=lambda: AlertSettings())
     data_notes: DataNoteSettings = Field(default_factory=lambda: DataNoteSettings())
     check: tuple[CheckSettings, ...] = ()
+    service: ServiceSettings = Field(default_factory=lambda: ServiceSettings())
+    delivery: DeliverySettings = Field(default_factory=lambda: DeliverySettings())
     source: tuple[SourceSettings, ...] = Field(min_length=1)
     series: tuple[SeriesSettings, ...] = Field(min_length=1)
     pair: tuple[PairSettings, ...] = Field(min_length=1)

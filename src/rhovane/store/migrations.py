@@ -131,6 +131,8 @@ create table data_note (
 );
 """
 
+_ATTEMPTS = "alter table delivery add column tried_at timestamp"
+
 MIGRATIONS = (
     Migration(1, "readings and their ledger", _READINGS),
     Migration(2, "nights and their results", _RESULTS),
@@ -140,6 +142,7 @@ MIGRATIONS = (
     Migration(6, "readings before their confirmation", _CONFIRMATIONS),
     Migration(7, "segments of series", _SEGMENTS),
     Migration(8, "data notes", _NOTES),
+    Migration(9, "attempts at delivery", _ATTEMPTS),
 )
 
 

@@ -13,9 +13,9 @@ from rhovane.store.clock import aware_utc, naive_utc
 from rhovane.store.jsontext import json_text
 from rhovane.store.session import Session
 
-NightOutcome = Literal["complete", "incomplete", "failed"]
+NightOutcome = Literal["complete", "incomplete", "failed", "stopped"]
 _SETTINGS = "select hash, text from settings_used"
-_OUTCOMES = ("complete", "incomplete", "failed")
+_OUTCOMES = ("complete", "incomplete", "failed", "stopped")
 _COLUMNS = (
     "id, kind, as_of, started, finished, outcome, steps, counts, settings_hash, program_version, data_version"
 )
@@ -110,7 +110,7 @@ class NightLedger(Session):
             known = self._remembered.get(_LAST_FINISHED)
             if (
                 known is not None
-                and outcome != "failed"
+                and outcome in ("complete", "incomplete")
                 and (known[0] is None or known[0].night_id < night_id)
             ):
                 known[0] = _record(kept[0])
@@ -210,6 +210,32 @@ class NightLedger(Session):
             )
             raise NotFound(f"No night of {as_of} has finished; {known}. Name one that has.")
         return _record(found[0])
+
+    def newest_date(self) -> date | None:
+        """The newest date whose night ended complete or incomplete, whenever it ran; None before the first."""
+        newest: date | None = self.value(
+            "select max(as_of) from night where outcome in ('complete', 'incomplete')"
+        )
+        return newest
+
+    def arrived_since(self, data_version: int) -> tuple[int, int, int]:
+        """Readings new, readings revised and rows rejected in the ingests after a data version."""
+        found: tuple[int, int, int] = self.rows(
+            """
+            select coalesce(sum(rows_new), 0)::bigint, coalesce(sum(rows_revised), 0)::bigint,
+                coalesce(sum(rows_rejected), 0)::bigint
+            from ingest where id > ?
+            """,
+            [int(data_version)],
+        )[0]
+        return found
+
+    def newest_ended_night(self) -> NightRecord | None:
+        """The latest night that ended by itself, whatever its outcome; None before the first."""
+        found = self.rows(
+            f"{_SELECT} where id = (select max(id) from night where outcome not in ('running', 'stopped'))"
+        )
+        return _record(found[0]) if found else None
 
 
 def _record(row: tuple[Any, ...]) -> NightRecord:

@@ -8,6 +8,7 @@ from rhovane.store.ingesting import ReadingWriter
 from rhovane.store.looking import Looking
 from rhovane.store.nights import NightLedger
 from rhovane.store.notes import NoteBook
+from rhovane.store.outbox import Outbox
 from rhovane.store.reading import ReadingReader
 from rhovane.store.results import Results
 from rhovane.store.segments import Segments
@@ -25,6 +26,7 @@ class Store(
     Exports,
     SiteLog,
     Looking,
+    Outbox,
     Copies,
     Upkeep,
 ):
