@@ -5,10 +5,11 @@ from rhovane.cli import (
     feed,
     keep,
     look,
+    page,
     run,
     site,
     unattended,
 )  # the commands put themselves into the group
 from rhovane.cli.entry import main
 
-__all__ = ["decide", "feed", "keep", "look", "main", "run", "site", "unattended"]
+__all__ = ["decide", "feed", "keep", "look", "main", "page", "run", "site", "unattended"]

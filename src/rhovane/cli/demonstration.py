@@ -185,6 +185,8 @@ class Demonstration:
         lines += [
             f"  rhovane notes --all{config}",
             f"  rhovane status --as-of {last.as_of if last else 'DATE'}{config}",
+            f"  rhovane page --as-of {last.as_of if last else 'DATE'}{config}",
+            f"  rhovane report{config}",
             f"  rhovane export windows windows.parquet{config}",
             "",
             *caution_lines(),

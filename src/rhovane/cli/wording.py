@@ -7,6 +7,8 @@ import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
+from rhovane.model import CAUTION
+
 if TYPE_CHECKING:
     from rhovane.model import DataNote
     from rhovane.pipeline import NightReport, Sent
@@ -14,12 +16,6 @@ if TYPE_CHECKING:
     from rhovane.store import Check, StoredSiteLogEntry
 
 WIDTH = 80
-CAUTION = (
-    "rhovane looks for changes in how series move together. It does not measure exposure or judge "
-    "compliance, and it does not warn the public. Association is not cause. A quiet night does not prove "
-    "that instruments are sound: a steady scale change leaves ranks unchanged. Reference methods, the "
-    "network's quality system, local rules and competent judgement come first."
-)
 
 
 def caution_lines() -> list[str]:

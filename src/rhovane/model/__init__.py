@@ -2,6 +2,7 @@
 
 from rhovane.model.alert_sheet import AlertSheet, Bounded, EpisodeDays, Hint, SeriesLevel, Witness
 from rhovane.model.alerts import Alert, AlertEvent, AlertState, EventKind, Outcome
+from rhovane.model.cautions import CAUTION, CAUTIONS, DEMO_CAUTION
 from rhovane.model.errors import (
     ExitCode,
     FeedError,
@@ -20,6 +21,9 @@ from rhovane.model.series import Pair, Segment, Series, SeriesKind
 from rhovane.model.site_log import ReadingsUse, SiteLogEntry
 
 __all__ = [
+    "CAUTION",
+    "CAUTIONS",
+    "DEMO_CAUTION",
     "MOMENT_KINDS",
     "STEP_KINDS",
     "Alert",

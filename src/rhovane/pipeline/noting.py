@@ -160,15 +160,19 @@ def _windows_to_split(night: Night, changed: list[DataNote]) -> None:
             since[note.subject] = min(day, since.get(note.subject, day))
     for i, watched in enumerate(night.watched):
         days = [since[key] for key in night.settings.series_of(watched.recipe) if key in since]
-        if days and watched.windows_from is not None:
+        first = _first_day(night, watched)
+        if days and watched.windows_from is not None and first is not None:
             night.watched[i] = dataclasses.replace(
-                watched, windows_from=max(min([*days, watched.windows_from]), _first_day(night, watched))
+                watched, windows_from=max(min([*days, watched.windows_from]), first)
             )
 
 
-def _first_day(night: Night, watched: WatchedPair) -> dt.date:
-    """The first day with a reading of both members."""
-    first = (night.counts["first_hours"][key] for key in (watched.recipe.first, watched.recipe.second))
+def _first_day(night: Night, watched: WatchedPair) -> dt.date | None:
+    """The first day with a reading of both members; None while one of them has never been seen."""
+    known = night.counts["first_hours"]
+    first = [known[key] for key in (watched.recipe.first, watched.recipe.second) if key in known]
+    if len(first) < 2:
+        return None
     return max(night.days.day_of(int(dt.datetime.fromisoformat(t).timestamp())) for t in first)
 
 
@@ -219,10 +223,11 @@ def _findings_by_start(night: Night) -> dict[int, dict[str, list[Finding]]]:
                 seconds(n.begin) < start and (n.end is None or seconds(n.end) >= start - HOUR_S)
                 for n in covered.get(key, ())
             )
-            if not before and not missing.any():
+            first = _first_day(night, by_key[key])
+            if first is None or (not before and not missing.any()):
                 by_start.setdefault(start, {})[key] = []
                 continue
-            judged = night.days.start_of(_first_day(night, by_key[key]) + window_days * DAY)
+            judged = night.days.start_of(first + window_days * DAY)
             missing &= end_s >= judged
             runs = faults.runs_of(np.concatenate(([before], missing))[:, None])
             by_start.setdefault(start, {})[key] = [

@@ -6,16 +6,10 @@ import datetime as dt
 import json
 from pathlib import Path
 
-from rhovane.model import RhovaneError
+from rhovane.model import CAUTION, RhovaneError
 from rhovane.review.alert_list import alert_entries, alert_entries_of
 from rhovane.settings import Settings
 from rhovane.store import NightRecord, Store
-
-CAUTION = (
-    "rhovane looks for changes in how series move together; it does not measure exposure, judge compliance, forecast or warn "
-    "the public. Association is not cause. Results from unverified readings may change when readings are revised. Reference "
-    "methods, the network's quality system, local rules and competent judgement come first."
-)
 
 
 def export_table(

@@ -3,6 +3,7 @@
 from rhovane.store.alert_log import NewAlert, NewAlertEvent, StoredAlert, StoredAlertEvent
 from rhovane.store.copies import BackedUp, archives_in, back_up, copies_in, restore
 from rhovane.store.liveness import EVENTS_KEPT, Liveness, Noticed, read_liveness, write_liveness
+from rhovane.store.looking import Revision
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
 from rhovane.store.outbox import Attempt, OutboxEntry
@@ -31,6 +32,7 @@ __all__ = [
     "Origin",
     "OutboxEntry",
     "Readings",
+    "Revision",
     "Store",
     "StoredAlert",
     "StoredAlertEvent",

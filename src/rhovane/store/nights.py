@@ -159,6 +159,21 @@ class NightLedger(Session):
         """The latest nights, newest first."""
         return [_record(row) for row in self.rows(f"{_SELECT} order by id desc limit ?", [int(limit)])]
 
+    def nights_of(self, as_of: date) -> list[NightRecord]:
+        """The nights that covered days up to a day, newest first."""
+        return [_record(row) for row in self.rows(f"{_SELECT} where as_of = ? order by id desc", [as_of])]
+
+    def finished_before(self, night_id: int) -> NightRecord | None:
+        """The latest night before another that ended complete or incomplete; None where there is none."""
+        found = self.rows(
+            f"""
+            {_SELECT} where id = (select max(id) from night
+            where outcome in ('complete', 'incomplete') and id < ?)
+            """,
+            [int(night_id)],
+        )
+        return _record(found[0]) if found else None
+
     def last_complete_night(self, kind: str | None = None) -> NightRecord | None:
         """The latest night that ended complete (of one kind, if given); None before the first."""
         found = self.rows(

@@ -5,6 +5,7 @@ from __future__ import annotations
 from rhovane.store.copies import Copies
 from rhovane.store.exports import Exports
 from rhovane.store.ingesting import ReadingWriter
+from rhovane.store.looking import Looking
 from rhovane.store.nights import NightLedger
 from rhovane.store.notes import NoteBook
 from rhovane.store.outbox import Outbox
@@ -24,6 +25,7 @@ class Store(
     Segments,
     Exports,
     SiteLog,
+    Looking,
     Outbox,
     Copies,
     Upkeep,
