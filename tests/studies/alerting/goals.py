@@ -142,7 +142,7 @@ def large_network() -> None:
     """Lines on 300 pairs of 25 stations with independent days."""
     stations = [f"S{i}" for i in range(LARGE)]
     members = [(f"{a}.NO2", f"{b}.NO2") for i, a in enumerate(stations) for b in stations[i + 1 :]]
-    n_days, counts, started = 90 + 365, [], time.perf_counter()
+    n_days, counts, cost = 90 + 365, [], 0.0
     for seed in range(3):
         rng = np.random.default_rng(seed)
         scores = []
@@ -151,15 +151,21 @@ def large_network() -> None:
             empty = np.full(n_days, np.nan)
             lagged = np.zeros((n_days, 5))
             scores.append(DailyScores(np.arange(n_days), score, hours, empty, np.zeros(n_days), lagged))
+        started = time.process_time()
         counts.append(len(watch(scores, false_alarms_per_year=4.0, members=members).incidents))
-    cost = (time.perf_counter() - started) / 3 / len(members)
+        cost += (time.process_time() - started) / 3 / len(members)
     row(
         "300 pairs, 4 a year, independent days: alarms a year",
         f"{np.mean(counts):.1f}",
         "3 to 6",
         "3.5 to 4.5",
     )
-    row("cost of one pair-year of nightly evaluation there", f"{1000 * cost:.1f} ms", "≤ 15 ms", "≤ 5 ms")
+    row(
+        "processor time of one pair-year of nightly evaluation there",
+        f"{1000 * cost:.1f} ms",
+        "≤ 15 ms",
+        "≤ 5 ms",
+    )
 
 
 if __name__ == "__main__":
