@@ -27,15 +27,19 @@ from rhovane_demo.world import make_world
 
 NIGHT_HOUR = dt.time(3, 40)
 LONGEST_LINE = 110
-COMPILED_TOGETHER = (("scores",), ("windows", "watch"))  # about equally long
+COMPILED_TOGETHER = {
+    "hourly scores": ("scores", "windows"),
+    "alerts": ("watch",),
+}  # by the step that waits for it
 LONGEST_EVENT_DAYS = 200  # a turning of the seasons lasts longer than any planted change
-ARCHIVE_DAYS = 90  # days taken in at once at the start, an archive: in its first baseline a pair only learns
+ARCHIVE_DAYS = 60  # days taken in at once at the start, an archive; in its first 90 days a pair only learns
 
 
 @dataclass
 class Walked:
-    """What walking the nights did."""
+    """What walking the nights did; ``night`` is the one at work."""
 
+    night: dt.date
     nights: int = 0
     incomplete: int = 0
     seconds: float = 0.0
@@ -110,13 +114,13 @@ class Demonstration:
     ) -> Walked:
         """Deliver each day's files and run its night, oldest first; goes on where an earlier demo stopped.
 
-        The days of the first baseline, which no night could judge, arrive together as the network's archive.
+        The first days, which no night could judge yet, arrive together as the network's archive.
         """
         started = time.perf_counter()
-        compiling = [
-            subprocess.Popen([sys.executable, "-m", "rhovane.stats.compile_ahead", *parts])
-            for parts in COMPILED_TOGETHER
-        ]
+        compiling = {
+            step: subprocess.Popen([sys.executable, "-m", "rhovane.stats.compile_ahead", *parts])
+            for step, parts in COMPILED_TOGETHER.items()
+        }
         arriving = {d.night: d.files for d in deliveries(make_world(seed=self.seed, events=self.events))}
         first, last = min(arriving), max(arriving)
         if nights is not None:
@@ -126,6 +130,7 @@ class Demonstration:
         zone = dt.timezone(self.settings.network.standard_offset)
 
         def deliver(day: dt.date) -> list[Path]:
+            walked.night = day
             days = nights_between(first, day) if day == archive else [day]
             return [path for one in days for path in write_files(arriving[one], self.folder / "feed")]
 
@@ -134,12 +139,12 @@ class Demonstration:
             return run_at.astimezone(dt.UTC)
 
         def before_step(step: str) -> None:
-            if step != "ingest":  # the first night needs compiled code from here on
-                while compiling:
-                    compiling.pop().wait()
+            learning = walked.night < first + dt.timedelta(days=self.settings.alerts.baseline_days)
+            if step in compiling and not (step == "alerts" and learning):
+                compiling.pop(step).wait()
 
+        walked = Walked(night=archive)
         gc.freeze()  # the feed's thousands of files need not be looked through again and again
-        walked = Walked()
         for report in walk_nights(
             self.settings, store, archive, last, moment_of=moment, arrivals=deliver, progress=before_step
         ):
@@ -149,6 +154,8 @@ class Demonstration:
             walked.revised += report.counts.get("readings revised", 0)
             walked.rejected += report.counts.get("rows rejected", 0)
             tell(report.as_of, (report.as_of - archive).days + 1, total)
+        for one in compiling.values():
+            one.wait()
         walked.seconds = time.perf_counter() - started
         return walked
 

@@ -42,6 +42,9 @@ def raise_alerts(night: Night) -> str:
     first_day, scores = daily_scores(judged, all_evidence(night, judged), night.as_of)
     if first_day is None:
         return "no evidence yet"
+    first_judged = first_day + night.settings.alerts.baseline_days * DAY
+    if night.as_of < first_judged and not logged_alerts(night.store):
+        return f"every pair still learns; the first day judged is {first_judged}"
     known = what_is_known(night, judged, first_day)
     seen = replay(night.settings, judged, scores, known, None if night.memory is None else night.memory.watch)
     aside = known.not_judged((night.as_of - first_day).days)

@@ -7,6 +7,8 @@ Kalman filter, which needs no more of the past than the last two levels in a row
 
 from __future__ import annotations
 
+import math
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -136,8 +138,17 @@ def filtered_sd(level: Floats, a1: float, a2: float) -> float:
     """Standard deviation of the filter's scaled errors; NaN with fewer than two."""
     errors = np.empty(len(level))
     filter_ar2(level, a1, a2, errors)
-    kept = errors[~np.isnan(errors)]
-    return max(float(np.std(kept)), 1e-6) if len(kept) >= 2 else np.nan
+    n, total, squares = 0, 0.0, 0.0
+    for error in errors:
+        if not np.isnan(error):
+            n += 1
+            total += error
+    if n < 2:
+        return np.nan
+    for error in errors:
+        if not np.isnan(error):
+            squares += (error - total / n) ** 2
+    return max(math.sqrt(squares / n), 1e-6)
 
 
 @compiled
