@@ -32,7 +32,7 @@ COMPILED_TOGETHER = {
     "alerts": ("watch",),
 }  # by the step that waits for it
 LONGEST_EVENT_DAYS = 200  # a turning of the seasons lasts longer than any planted change
-ARCHIVE_DAYS = 60  # days taken in at once at the start, an archive; in its first 90 days a pair only learns
+ARCHIVE_DAYS = 215  # days taken in at once at the start, to the end of January: an archive
 
 
 @dataclass

@@ -23,7 +23,7 @@ STEP = "evidence"
 
 
 def begin_hourly_scores(night: Night) -> str:
-    """Begin the hourly scores of every series that a stale pair needs, on all cores but one.
+    """Begin the hourly scores of every series that a stale pair needs, on all cores.
 
     Once a series for the pairs with controls, which look back further, and once for those without; from
     the earliest day that any of them needs.
@@ -38,7 +38,7 @@ def begin_hourly_scores(night: Night) -> str:
     needed = {one for w in stale for one in _series_of(w)}
     order = sorted(needed, key=lambda one: (not one[1], one[0]))  # the long ones first
     fresh = (min(w.stale_from for w in stale if w.stale_from) - first).days
-    workers = ThreadPoolExecutor(max_workers=max(1, available_threads() - 1))
+    workers = ThreadPoolExecutor(max_workers=max(1, available_threads()))
     for one in order:
         days = range(begin[one[1]], last + 1)
         known = None
