@@ -9,6 +9,7 @@ import subprocess
 import sys
 import threading
 import time
+import urllib.request
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -64,7 +65,7 @@ def wait_for(condition, what: str) -> None:
 
 @contextmanager
 def service_of(settings: Settings) -> Iterator[subprocess.Popen[str]]:
-    command = [*COMMAND, "service", "--config", str(settings.origin)]
+    command = [*COMMAND, "service", "--port", "0", "--config", str(settings.origin)]
     process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
     try:
         yield process
@@ -99,7 +100,10 @@ def test_the_service_runs_what_is_due_and_ends_on_sigterm(tmp_path):
         assert status["last_night"]["outcome"] == "complete"
         assert (status["service"]["alive"], status["service"]["pid"]) == (True, process.pid)
         assert status["exit_code"] == ExitCode.WELL
-        second = run(settings, "service")
+        served = next(line["address"] for line in log_of(settings) if line["text"] == "the page is served")
+        with urllib.request.urlopen(str(served), timeout=PATIENCE_S) as answer:
+            assert "Morning list" in answer.read().decode("utf-8")
+        second = run(settings, "service", "--no-page")
         assert second.returncode == ExitCode.STORE_LOCKED
         assert "Another service runs" in second.stderr
         assert ended_after(process) < 3  # 0.1 s on a free machine

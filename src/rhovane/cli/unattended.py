@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import sys
+from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -24,13 +25,20 @@ from rhovane.model import ExitCode, RhovaneError
 
 if TYPE_CHECKING:
     from rhovane.pipeline import NightReport
+    from rhovane.schedule import Log
     from rhovane.settings import Settings
     from rhovane.store import OutboxEntry
 
 
 @main.command()
 @with_settings
-def service(config: Path) -> None:
+@click.option(
+    "--page/--no-page", "with_page", default=True, help="Serve the page as well, on this machine only."
+)
+@click.option(
+    "--port", type=click.IntRange(0, 65535), default=8321, show_default=True, help="Port of the page."
+)
+def service(config: Path, with_page: bool, port: int) -> None:
     """Run the nights by themselves, in the foreground, until SIGTERM: for a service manager.
 
     Missed nights are made up for in order. The log is written as JSON lines.
@@ -39,11 +47,25 @@ def service(config: Path) -> None:
 
     settings = settings_at(config)
     with open_log(settings, also=("apscheduler",)) as log:
-        run_service(Keeper(settings, lambda: store_of(settings, read_only=False), SystemClock(), log))
+        keeper = Keeper(settings, lambda: store_of(settings, read_only=False), SystemClock(), log)
+        run_service(keeper, beside=_page_beside(settings, port, log) if with_page else ())
     # Whatever still computes rests on no commit; waiting for it would keep the service manager waiting.
     sys.stdout.flush()
     sys.stderr.flush()
     os._exit(int(ExitCode.WELL))
+
+
+def _page_beside(settings: Settings, port: int, log: Log) -> list[Callable[[], None]]:
+    """The page, to be run beside the nights; nothing, with a warning in the log, where its port is taken."""
+    from rhovane.web import PageServer
+
+    try:
+        server = PageServer(settings, port=port, token=None, clock=utc_now)
+    except RhovaneError as error:
+        log.warning("the page is not served", reason=str(error))
+        return []
+    log.info("the page is served", address=server.address)
+    return [server.run]
 
 
 def catch_up_once(settings: Settings) -> ExitCode:
