@@ -299,3 +299,38 @@ def test_a_failed_night_of_a_walk_loses_no_alert(
             report = run_night(network, store, as_of=day, now=moment(day), steps=steps, memory=memory)
             assert (report.outcome == "failed") == failing
     assert len(facts(network)) == 1
+
+
+def test_a_night_of_a_walk_that_fails_is_written_down_and_the_next_one_makes_up_for_it(
+    network: Settings, deliver: Callable[[str, str], Path], changing, monkeypatch
+):
+    deliver("all.csv", lines(range(24 * N_DAYS), *changing))
+    broken = FIRST + 130 * DAY
+
+    def fail_once(night):
+        if night.as_of == broken:
+            raise OSError("the disk is away")
+        return do(night)
+
+    steps = tuple((name, do) for name, do in STEPS if name == "evidence")
+    do = steps[0][1]
+    failing = tuple((name, fail_once if name == "evidence" else step) for name, step in STEPS)
+    monkeypatch.setattr("rhovane.pipeline.walk.STEPS", failing)
+    monkeypatch.setattr("rhovane.pipeline.walk.LEAVING_WINDOWS", failing)
+    reports = run(network, FIRST + 133 * DAY, first=FIRST + 128 * DAY)
+    assert [r.outcome for r in reports] == [
+        "complete",
+        "complete",
+        "failed",
+        "complete",
+        "complete",
+        "complete",
+    ]
+    with open_store(network.store_path, read_only=True) as store:
+        ledger = store.nights(10)[::-1]
+        days = store.read_evidence(pair_keys=[PAIR])["day"]
+    assert [n.outcome for n in ledger] == [r.outcome for r in reports]
+    assert "the disk is away" in str(ledger[2].steps)
+    assert np.array_equal(np.unique(np.diff(days)), [np.timedelta64(1, "D")]), (
+        "the day of the failed night is there"
+    )
