@@ -28,6 +28,8 @@ LEAST_AGREEING = 0.6
 """Share of a node's pairs whose freely fitted changes must have the sign of a failure."""
 LEAST_LAG_GAIN = 0.1
 """A best lag away from the usual counts where its mean correlation is higher by more than this."""
+LAG_GAIN_ERRORS = 2.5
+"""and by this many standard errors of a difference of two such correlations over days of 24 unrelated hours."""
 LEAST_LAGGED_RELATION = 0.3
 """Pairs with a smaller daily reference correlation say nothing about timing."""
 LEAST_MOVED_SHARE = 0.4
@@ -169,10 +171,12 @@ def lag_movement(structure: Structure, one: Hypothesis, lagged: Floats, mean: Fl
     strong = [p for p in one.pairs if abs(np.tanh(mean[p])) > LEAST_LAGGED_RELATION] or list(one.pairs)
     profiles = []
     usual = []
+    n_days = 0
     for p in strong:
         seen = lagged[p][np.isfinite(lagged[p]).all(axis=1)]
         if not len(seen):
             continue
+        n_days += len(seen)
         profile = seen.mean(axis=0) * (-1.0 if mean[p] < 0.0 else 1.0)
         first = structure.members[p][0]
         suspect_first = one.kind != "pair" and one.name in (first, first.partition(".")[0])
@@ -182,5 +186,6 @@ def lag_movement(structure: Structure, one: Hypothesis, lagged: Floats, mean: Fl
         return 0
     mixed = np.mean(profiles, axis=0)
     middle = len(mixed) // 2
-    moved = mixed.max() - mixed[middle] > LEAST_LAG_GAIN and mixed.max() > LEAST_MOVED_SHARE * np.mean(usual)
+    least_gain = max(LEAST_LAG_GAIN, LAG_GAIN_ERRORS * np.sqrt(2.0 / (24 * n_days)))
+    moved = mixed.max() - mixed[middle] > least_gain and mixed.max() > LEAST_MOVED_SHARE * np.mean(usual)
     return int(mixed.argmax()) - middle if moved else 0
