@@ -42,6 +42,14 @@ def changing() -> tuple[np.ndarray, np.ndarray]:
     return x, y
 
 
+def network_of(folder: Path, changing: tuple[np.ndarray, np.ndarray]) -> Settings:
+    """A network in a folder of its own, all its readings delivered."""
+    (folder / "feed").mkdir(parents=True)
+    (folder / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
+    (folder / "feed" / "all.csv").write_text(lines(range(24 * N_DAYS), *changing), encoding="utf-8")
+    return load_settings(folder / "monitor.toml")
+
+
 def run(settings: Settings, last: dt.date, first: dt.date | None = None):
     with open_store(settings.store_path) as store:
         if first is None:
@@ -77,14 +85,7 @@ def test_a_change_is_raised_once_with_onset_before_and_after(
 
 
 def test_walking_night_by_night_raises_what_one_night_over_the_history_raises(tmp_path: Path, changing):
-    settings = []
-    for name in ("walked", "at_once"):
-        folder = tmp_path / name
-        (folder / "feed").mkdir(parents=True)
-        (folder / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
-        (folder / "feed" / "all.csv").write_text(lines(range(24 * N_DAYS), *changing), encoding="utf-8")
-        settings.append(load_settings(folder / "monitor.toml"))
-    walked, at_once = settings
+    walked, at_once = (network_of(tmp_path / name, changing) for name in ("walked", "at_once"))
     last = FIRST + (N_DAYS - 1) * DAY
     reports = run(walked, last, first=FIRST + 120 * DAY)
     run(at_once, last)
@@ -105,14 +106,7 @@ def test_walking_night_by_night_raises_what_one_night_over_the_history_raises(tm
 
 
 def test_windows_that_an_interrupted_walk_had_left_are_computed_by_the_next_night(tmp_path: Path, changing):
-    settings = []
-    for name in ("interrupted", "at_once"):
-        folder = tmp_path / name
-        (folder / "feed").mkdir(parents=True)
-        (folder / "monitor.toml").write_text(SETTINGS, encoding="utf-8")
-        (folder / "feed" / "all.csv").write_text(lines(range(24 * N_DAYS), *changing), encoding="utf-8")
-        settings.append(load_settings(folder / "monitor.toml"))
-    interrupted, at_once = settings
+    interrupted, at_once = (network_of(tmp_path / name, changing) for name in ("interrupted", "at_once"))
     first = next(FIRST + d * DAY for d in range(60, 67) if (FIRST + d * DAY).toordinal() % 7 == 1)
     with open_store(interrupted.store_path) as store:
         walk = walk_nights(interrupted, store, first, first + 20 * DAY, moment_of=moment)
@@ -120,7 +114,7 @@ def test_windows_that_an_interrupted_walk_had_left_are_computed_by_the_next_nigh
             assert next(s.summary for s in report.steps if s.name == "windows").startswith("left to")
         walk.close()
         assert len(store.read_windows()["lag"]) == 0
-    for each in settings:
+    for each in (interrupted, at_once):
         run(each, first + 4 * DAY)
     with open_store(interrupted.store_path) as one, open_store(at_once.store_path) as other:
         found = [store.read_windows() for store in (one, other)]
@@ -307,13 +301,13 @@ def test_a_night_of_a_walk_that_fails_is_written_down_and_the_next_one_makes_up_
     deliver("all.csv", lines(range(24 * N_DAYS), *changing))
     broken = FIRST + 130 * DAY
 
+    do = dict(STEPS)["evidence"]
+
     def fail_once(night):
         if night.as_of == broken:
             raise OSError("the disk is away")
         return do(night)
 
-    steps = tuple((name, do) for name, do in STEPS if name == "evidence")
-    do = steps[0][1]
     failing = tuple((name, fail_once if name == "evidence" else step) for name, step in STEPS)
     monkeypatch.setattr("rhovane.pipeline.walk.STEPS", failing)
     monkeypatch.setattr("rhovane.pipeline.walk.LEAVING_WINDOWS", failing)

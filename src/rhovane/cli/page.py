@@ -53,10 +53,10 @@ def page(
     as_of: dt.datetime | None,
 ) -> None:
     """Serve the morning list, alert sheets and log as a local page; Ctrl-C ends it."""
-    from rhovane.web import serve
+    from rhovane.web import PageServer
 
     token = None if token_file is None else token_file.read_text("utf-8").strip()
-    serve(
+    server = PageServer(
         settings_at(config),
         host=host,
         port=port,
@@ -64,8 +64,9 @@ def page(
         clock=utc_now,
         names=names,
         as_of=as_of.date() if as_of else None,
-        started=lambda address: click.echo(f"The page is at {address}  (Ctrl-C ends it)"),
     )
+    click.echo(f"The page is at {server.address}  (Ctrl-C ends it)")
+    server.run()
 
 
 @main.command()

@@ -5,8 +5,7 @@ from __future__ import annotations
 import datetime as dt
 
 from rhovane.settings import Settings
-from rhovane.store import Store, back_up, copies_in
-from rhovane.store.manifest import read_manifest
+from rhovane.store import Store, back_up, copies_in, read_manifest
 
 
 def copy_due(settings: Settings, store: Store, day: dt.date) -> bool:

@@ -4,6 +4,7 @@ from rhovane.store.alert_log import NewAlert, NewAlertEvent, StoredAlert, Stored
 from rhovane.store.copies import BackedUp, archives_in, back_up, copies_in, restore
 from rhovane.store.liveness import EVENTS_KEPT, Liveness, Noticed, read_liveness, write_liveness
 from rhovane.store.looking import Revision
+from rhovane.store.manifest import read_manifest
 from rhovane.store.nights import NightRecord
 from rhovane.store.opening import open_store
 from rhovane.store.outbox import Attempt, OutboxEntry
@@ -45,6 +46,7 @@ __all__ = [
     "parquet_reader",
     "preview_files",
     "read_liveness",
+    "read_manifest",
     "read_parquet",
     "restore",
     "tidy",

@@ -77,23 +77,6 @@ class PageServer:
         self._socket.close()
 
 
-def serve(
-    settings: Settings,
-    *,
-    host: str = "127.0.0.1",
-    port: int = 8321,
-    token: str | None,
-    clock: Callable[[], dt.datetime],
-    names: tuple[str, ...] = (),
-    as_of: dt.date | None = None,
-    started: Callable[[str], None] = lambda _address: None,
-) -> None:
-    """Serve the page until the process is told to end; ``started`` is called with its address."""
-    server = PageServer(settings, host=host, port=port, token=token, clock=clock, names=names, as_of=as_of)
-    started(server.address)
-    server.run()
-
-
 def is_loopback(host: str) -> bool:
     """Whether an address can be reached from this machine only."""
     if host == "localhost":
